@@ -1,0 +1,226 @@
+package report
+
+import (
+	"encoding/json"
+	"io"
+)
+
+// Run is the result of one chain on one track. Its JSON is report.json.
+type Run struct {
+	Tool      Tool      `json:"tool"`
+	Chain     Chain     `json:"chain"`
+	Track     Track     `json:"track"`
+	Internal  Internal  `json:"internal"`
+	Overload  Overload  `json:"overload"` // of the whole chain: time counted once however many stages overload at it
+	Stages    []Stage   `json:"stages"`   // in the order of the chain
+	Converter Converter `json:"converter"`
+	Layers    []Layer   `json:"layers"` // in the order they are to be shown; rest aside
+	// Events are the overloads in order of time: all, or the largest where there are too many to
+	// keep (Overload.Events counts them all).
+	Events      []Event   `json:"events"`
+	Limits      []Limit   `json:"limits"`
+	Findings    []Finding `json:"findings"` // the weightiest first
+	Assumptions []string  `json:"assumptions"`
+}
+
+// Tool names the program that made the result.
+type Tool struct {
+	Name    string `json:"name"`
+	Version string `json:"version"`
+}
+
+// Chain names the chain file.
+type Chain struct {
+	File  string `json:"file"`
+	Title string `json:"title"` // may be empty
+}
+
+// Track is the recording that was run through the chain.
+type Track struct {
+	File     string `json:"file"`
+	RateHz   Number `json:"rate_hz"`
+	Channels int    `json:"channels"`
+	Seconds  Number `json:"seconds"`
+	PeakDBFS Number `json:"peak_dbfs"`
+	RMSDBFS  Number `json:"rms_dbfs"`
+}
+
+// Internal tells how finely the chain was stepped in time, and what that costs.
+type Internal struct {
+	RateHz Number `json:"rate_hz"`
+	// LargestErrorDB is the largest difference, from 0 Hz to ToHz, between the response as stepped
+	// and the exact response of the circuit.
+	LargestErrorDB Number `json:"largest_error_db"`
+	ToHz           Number `json:"to_hz"`
+}
+
+// Stage is what one stage did on the track. Voltages are at its output, DC included.
+type Stage struct {
+	Name       string   `json:"name"`
+	Kind       string   `json:"kind"`
+	RestV      Number   `json:"rest_v"`
+	LowestV    Number   `json:"lowest_v"`
+	HighestV   Number   `json:"highest_v"`
+	LimitLowV  Number   `json:"limit_low_v"`  // not there for a stage without a limit of its own
+	LimitHighV Number   `json:"limit_high_v"` // not there for a stage without a limit of its own
+	RoomDB     Number   `json:"room_db"`      // left (+) or missing (−) between what the linear chain asks for and the nearer limit
+	Overload   Overload `json:"overload"`
+}
+
+// Overload is the time spent at a limit.
+type Overload struct {
+	Seconds  Number `json:"seconds"`
+	Fraction Number `json:"fraction"` // of the track's time, 0 to 1
+	Events   int    `json:"events"`
+	High     int    `json:"high"`  // events at the upper limit
+	Low      int    `json:"low"`   // events at the lower limit
+	Slew     int    `json:"slew"`  // events at the slew rate
+	Worst    *Worst `json:"worst"` // nil: none
+}
+
+// Worst is the largest overload.
+type Worst struct {
+	AtS     Number `json:"at_s"`
+	Seconds Number `json:"seconds"`
+	OverDB  Number `json:"over_db"`
+}
+
+// Converter is what the converter took.
+type Converter struct {
+	RateHz    Number `json:"rate_hz"`
+	Bits      int    `json:"bits"`
+	LowV      Number `json:"low_v"`
+	HighV     Number `json:"high_v"`
+	Samples   int64  `json:"samples"`
+	Saturated int64  `json:"saturated"` // samples at the first or the last code because the voltage was beyond it
+	Rest      Number `json:"rest"`      // in full scale, −1 to 1
+	PeakDBFS  Number `json:"peak_dbfs"`
+	RMSDBFS   Number `json:"rms_dbfs"`
+}
+
+// Names of the layers, which sum (with the converter's rest) to what is heard.
+const (
+	Wanted       = "wanted"
+	FoldBack     = "fold-back"
+	Interference = "interference"
+	Overloaded   = "overload"
+	Noise        = "noise"
+	Rounding     = "rounding"
+	Heard        = "heard" // the sum; in the level plot and among the layers where the caller gives it
+)
+
+// Layer is one part of what is heard, at the converter.
+type Layer struct {
+	Name           string  `json:"name"`
+	RMSDBFS        Number  `json:"rms_dbfs"`
+	RMSDBFSA       Number  `json:"rms_dbfs_a"` // A-weighted
+	Worst125msDBFS Number  `json:"worst_125ms_dbfs"`
+	BelowWantedDB  Number  `json:"below_wanted_db"`
+	Thirds         []Third `json:"thirds"`
+}
+
+// Third is the level in one third octave.
+type Third struct {
+	Hz   Number `json:"hz"` // nominal mid-band frequency
+	DBFS Number `json:"dbfs"`
+}
+
+// Event is one overload.
+type Event struct {
+	Stage  string `json:"stage"`
+	Kind   string `json:"kind"` // "high", "low", "slew", …
+	FromS  Number `json:"from_s"`
+	ToS    Number `json:"to_s"`
+	OverDB Number `json:"over_db"` // how far beyond the limit the linear chain asks
+}
+
+// Limit is one of the owner's limits. Its unit goes with its name, as in the chain file:
+// overload_time is a fraction; fold_back, interference and noise are dBFS; fold_back_below_wanted,
+// room and droop are dB; settling is seconds.
+type Limit struct {
+	Name  string `json:"name"`
+	Limit Number `json:"limit"`
+	Value Number `json:"value"`
+	Holds bool   `json:"holds"`
+}
+
+// Severities of a finding.
+const (
+	Stop    = "stop"
+	Caution = "caution"
+	Note    = "note"
+)
+
+// Finding is one thing that the owner should know, and what to change.
+type Finding struct {
+	Severity string `json:"severity"` // Stop, Caution or Note
+	About    string `json:"about"`    // the stage, layer, input or limit that it is about
+	Text     string `json:"text"`
+}
+
+// Pictures are what the plots of the page are drawn from. None of it is in the JSON. A plot
+// without data is left out of the page. Values that are NaN or infinite are gaps in the line.
+type Pictures struct {
+	Responses []Response // from each input to the converter
+	HalfRate  float64    // Hz, half the converter rate; drawn as a mark
+	Spectrum  Spectrum
+	Levels    []Level
+	Spans     []Span  // overloads, in any order
+	Duration  float64 // s, of the track
+}
+
+// Response is the gain from one input to the converter.
+type Response struct {
+	Input     string
+	Frequency []float64 // Hz, ascending, > 0
+	Gain      []float64 // dB, one for each frequency: a full-scale sine in the track reads this many dBFS at the converter
+}
+
+// Spectrum is the spectrum of each layer at the converter.
+type Spectrum struct {
+	Per    string // what each level is in, said on the axis: "third octave", "hertz"
+	Layers []Line
+}
+
+// Line is one layer's spectrum.
+type Line struct {
+	Layer     string
+	Frequency []float64 // Hz, ascending, > 0
+	Level     []float64 // dBFS per Spectrum.Per, one for each frequency
+}
+
+// Level is one layer's level along time.
+type Level struct {
+	Layer string
+	Time  []float64 // s, ascending
+	RMS   []float64 // dBFS, one for each time
+	Peak  []float64 // dBFS, one for each time; nil: not drawn
+}
+
+// Span is a stretch of time in which a stage is overloaded.
+type Span struct {
+	Stage    string
+	From, To float64 // s
+}
+
+// WriteJSON writes the run as one indented JSON object that ends with a newline. Lists that are
+// nil are written as empty lists. It returns the error of w, or of encoding/json.
+func WriteJSON(w io.Writer, run *Run) error {
+	r := *run
+	r.Stages = filled(r.Stages)
+	r.Layers = filled(r.Layers)
+	r.Events = filled(r.Events)
+	r.Limits = filled(r.Limits)
+	r.Findings = filled(r.Findings)
+	r.Assumptions = filled(r.Assumptions)
+	for i := range r.Layers {
+		r.Layers[i].Thirds = filled(r.Layers[i].Thirds)
+	}
+	e := json.NewEncoder(w)
+	e.SetEscapeHTML(false)
+	e.SetIndent("", "  ")
+	return e.Encode(&r)
+}
+
+// filled returns a copy of list that is not nil.
+func filled[T any](list []T) []T { return append([]T{}, list...) }
