@@ -185,10 +185,10 @@ func times(n int) string {
 	return count(int64(n)) + " times"
 }
 
-// between returns a range of voltage.
+// between returns a range of voltage, both ends in volts unless both are small.
 func between(low, high Number) string {
-	_, isLow := low.Value()
-	_, isHigh := high.Value()
+	a, isLow := low.Value()
+	b, isHigh := high.Value()
 	switch {
 	case !isLow && !isHigh:
 		return absent
@@ -197,7 +197,10 @@ func between(low, high Number) string {
 	case !isHigh:
 		return "from " + volts(low)
 	}
-	return volts(low) + " to " + volts(high)
+	if math.Max(math.Abs(a), math.Abs(b)) < 0.09995 {
+		return volts(low) + " to " + volts(high)
+	}
+	return fixed(a, 2) + " to " + fixed(b, 2) + " V"
 }
 
 // limitForm is how a limit of the chain file is told.
@@ -238,9 +241,11 @@ func limitValue(l Limit) string { return formOf(l.Name).say(l.Value) }
 
 // verdict is the answer in words.
 type verdict struct {
-	Good      bool
-	Headline  string
-	Sentences []string
+	Good     bool
+	Headline string
+	Limits   []string // sentences about the limits that are broken
+	Overload []string // sentences about overload, or the room left
+	Layers   []string // sentences about fold-back and noise
 }
 
 // judge puts the run in words; every figure in them is one of the run's.
@@ -277,30 +282,31 @@ func judge(run *Run) verdict {
 		}
 	}
 	if len(broken) > 0 {
-		v.say("%s.", strings.Join(broken, "; "))
+		v.Limits = append(v.Limits, sentence("%s.", strings.Join(broken, "; ")))
 	}
 	if run.Overload.Events > 0 {
-		v.say("Overloads %s, %s in all (%s of the track)%s.", times(run.Overload.Events),
-			seconds(run.Overload.Seconds), percent(run.Overload.Fraction), worstOf(run))
+		v.Overload = append(v.Overload, sentence("overloads %s for %s (%s of the track)%s.", times(run.Overload.Events),
+			seconds(run.Overload.Seconds), percent(run.Overload.Fraction), worstOf(run)))
 	} else if name, room, there := leastRoom(run); there {
-		v.say("The least room is %s, at %s.", decibels(room), name)
+		v.Overload = append(v.Overload, sentence("the least room is %s, at %s.", decibels(room), name))
 	}
 	if run.Converter.Saturated > 0 {
-		v.say("%s of %s samples are beyond the converter's span.", count(run.Converter.Saturated), count(run.Converter.Samples))
+		v.Overload = append(v.Overload, sentence("%s of %s samples saturate the converter.",
+			count(run.Converter.Saturated), count(run.Converter.Samples)))
 	}
 	for _, l := range run.Layers {
 		if l.Name == FoldBack || l.Name == Noise {
-			v.say("%s", layerSentence(l))
+			v.Layers = append(v.Layers, sentence("%s", layerWords(l)))
 		}
 	}
 	return v
 }
 
-// say adds a sentence, the first letter made a capital.
-func (v *verdict) say(format string, args ...any) {
+// sentence formats as fmt.Sprintf does and makes the first letter a capital.
+func sentence(format string, args ...any) string {
 	r := []rune(fmt.Sprintf(format, args...))
 	r[0] = unicode.ToUpper(r[0])
-	v.Sentences = append(v.Sentences, string(r))
+	return string(r)
 }
 
 // plural returns "1 limit", "3 limits".
@@ -320,7 +326,7 @@ func worstOf(run *Run) string {
 	s := "; the worst "
 	for _, stage := range run.Stages {
 		if o := stage.Overload.Worst; o != nil && *o == *w {
-			s += "at " + clean(stage.Name) + ", "
+			s += "at " + short(clean(stage.Name), 24) + ", "
 			break
 		}
 	}
@@ -335,13 +341,14 @@ func leastRoom(run *Run) (name string, room Number, there bool) {
 	least := math.Inf(1)
 	for _, s := range run.Stages {
 		if x, ok := s.RoomDB.Value(); ok && x < least {
-			least, name, room, there = x, clean(s.Name), s.RoomDB, true
+			least, name, room, there = x, short(clean(s.Name), 24), s.RoomDB, true
 		}
 	}
 	return name, room, there
 }
 
-func layerSentence(l Layer) string {
+// layerWords tells how loud a layer is.
+func layerWords(l Layer) string {
 	if _, there := l.RMSDBFS.Value(); !there {
 		return "no " + clean(l.Name) + "."
 	}
@@ -367,17 +374,17 @@ func worstEvents(events []Event, n int) []Event {
 		if a != b {
 			return a > b
 		}
-		return length(sorted[i]) > length(sorted[j])
+		return lengthOf(sorted[i]).value > lengthOf(sorted[j]).value
 	})
 	return sorted[:min(n, len(sorted))]
 }
 
-// length returns how long an event is, in seconds; 0 where its ends are not there.
-func length(e Event) float64 {
+// lengthOf returns how long an event is, in seconds; not there where its ends are not.
+func lengthOf(e Event) Number {
 	from, a := e.FromS.Value()
 	to, b := e.ToS.Value()
 	if !a || !b {
-		return 0
+		return Number{}
 	}
-	return to - from
+	return Of(to - from)
 }

@@ -214,7 +214,7 @@ func (f figure) sized(width, height float64, class string) template.HTML {
 	}
 	for i, line := range key {
 		for _, k := range line {
-			y := top + height + foot + rowStep*float64(i)
+			y := top + height + foot + rowStep*float64(i+1) - 6
 			p.put(`<path class="curve %s" d="M%s %sh22"/>`+"\n", k.class, px(k.x), px(y-4))
 			p.words(k.x+28, y, "t-"+k.class, "start", k.label)
 		}
@@ -273,7 +273,7 @@ func (f figure) notes(p *pen, left, top, across, height float64) {
 		}
 		// A label that its stretch is too narrow for ends where the stretch does.
 		if wide := letter*float64(len([]rune(b.label))) + 12; b.upright && wide > w {
-			p.words(x+w-6, y+height-8, "note", "end", b.label)
+			p.words(x+w-6, y+14, "note", "end", b.label)
 		} else {
 			p.words(x+6, y+14, "note", "start", b.label)
 		}
@@ -287,9 +287,9 @@ func (f figure) notes(p *pen, left, top, across, height float64) {
 		p.put(`<path class="mark" d="M%s %sv%s"/>`+"\n", px(x), px(top), px(height))
 		wide := letter*float64(len([]rune(m.label))) + 12
 		if x-wide > left {
-			p.words(x-6, top+14, "note", "end", m.label)
+			p.words(x-6, top+height-8, "note", "end", m.label)
 		} else {
-			p.words(x+6, top+14, "note", "start", m.label)
+			p.words(x+6, top+height-8, "note", "start", m.label)
 		}
 	}
 }
