@@ -19,6 +19,13 @@ import (
 
 var update = flag.Bool("update", false, "write the golden files anew")
 
+// The columns of the summary follow the width that the reader's locale gives to ambiguous letters
+// such as "–" (Unicode Standard Annex 11); the golden files are for the narrow one.
+func TestMain(m *testing.M) {
+	text.OverrideRuneWidthEastAsianWidth(false)
+	os.Exit(m.Run())
+}
+
 // example returns a made-up result: two stages, one of them overloading, two limits broken.
 func example() *Run {
 	n := Of
