@@ -1,0 +1,297 @@
+package bilinear
+
+import "math"
+
+// law is what one element asks of its source e and its sense s = v+ − v− (or the drain's, or the diode's voltage) at
+// one instant. All elements are of one form: on each piece either e is fixed, or  den·e − slope·s = num.
+type law struct {
+	kind            elementKind
+	num, den        float64 // the linear piece: den·e − s = num; slope is 1 for amplifiers, 0 for capsules
+	low, high       float64 // amplifier: limits of e
+	down, up        float64 // amplifier: e at the slew rate
+	least           float64 // capsule: e where no current flows
+	floor           float64 // capsule: s at the lowest drain voltage
+	forward, resist float64 // diode: s where it begins to conduct, less what it drops at rest; Ω
+	off             float64 // diode: e where it does not conduct
+	conducts        bool    // diode: whether it conducts at rest
+}
+
+type elementKind uint8
+
+const (
+	amplifierElement elementKind = iota
+	capsuleElement
+	diodeElement
+)
+
+// row writes the piece's equation  a·e + b·s = c.
+func (l *law) row(p Piece) (a, b, c float64) {
+	switch p {
+	case High:
+		return 1, 0, l.high
+	case Low:
+		return 1, 0, l.low
+	case SlewUp:
+		return 1, 0, l.up
+	case SlewDown:
+		return 1, 0, l.down
+	case CutOff:
+		return 1, 0, l.least
+	case Saturated:
+		return 0, 1, l.floor
+	case Off:
+		return 1, 0, l.off
+	case On:
+		return -l.resist, 1, l.forward
+	}
+	switch l.kind {
+	case capsuleElement:
+		return 1, 0, l.num
+	case diodeElement:
+		if l.conducts {
+			return l.row(On)
+		}
+		return l.row(Off)
+	}
+	return l.den, -1, l.num
+}
+
+// slack is by how much, relative to the quantities compared, a bound may be passed in rounding.
+const slack = 1e-13
+
+// proper returns the piece that the element belongs on, being on piece p with source e and sense s; p itself where
+// it may stay.
+func (l *law) proper(p Piece, e, s float64) Piece {
+	switch l.kind {
+	case capsuleElement:
+		switch p {
+		case Linear:
+			if e < l.least {
+				return CutOff
+			}
+			if s < l.floor-slack*(1+math.Abs(l.floor)) {
+				return Saturated
+			}
+		case CutOff: // it belongs here while it asks for no more than nothing
+			if l.num > l.least {
+				return Linear
+			}
+		case Saturated: // while it asks for more than the drain can give
+			if e > l.num {
+				return l.proper(Linear, l.num, math.Inf(1))
+			}
+			if e < l.least {
+				return CutOff
+			}
+		}
+		return p
+	case diodeElement:
+		on := p == On || p == Linear && l.conducts
+		switch {
+		case on && e < l.off-slack*math.Abs(l.off):
+			on = false
+		case !on && s > l.forward+l.resist*l.off+slack*(1+math.Abs(l.forward)):
+			on = true
+		}
+		switch {
+		case on == l.conducts:
+			return Linear
+		case on:
+			return On
+		}
+		return Off
+	}
+	target := e
+	if p != Linear { // where would it go with the sense as it is?
+		target = s + l.num
+		if l.den > 0 {
+			target /= l.den
+		} else if math.Abs(target) > slack*(math.Abs(s)+math.Abs(l.num)) {
+			target = math.Copysign(math.Inf(1), target)
+		} else {
+			target = e
+		}
+	}
+	// A bound is passed only by more than rounding, whichever side it is looked at from.
+	beyond := func(bound float64, on Piece, sign float64) bool {
+		by := slack * (1 + math.Abs(bound))
+		if p == on {
+			by = -by
+		}
+		return sign*(target-bound) > by
+	}
+	q, held := Linear, target
+	if beyond(l.up, SlewUp, 1) {
+		q, held = SlewUp, l.up
+	} else if beyond(l.down, SlewDown, -1) {
+		q, held = SlewDown, l.down
+	}
+	switch {
+	case q == Linear && beyond(l.high, High, 1), q != Linear && held > l.high:
+		return High
+	case q == Linear && beyond(l.low, Low, -1), q != Linear && held < l.low:
+		return Low
+	}
+	return q
+}
+
+// solver finds the pieces and sources of all elements: s = s0 + B·e with each element on its proper piece.
+type solver struct {
+	k      int
+	b      []float64 // B, row by row
+	matrix []float64 // scratch
+	rhs    []float64
+	sense  []float64
+	trial  []Piece
+}
+
+func newSolver(k int, b []float64) solver {
+	return solver{k: k, b: b, matrix: make([]float64, k*k), rhs: make([]float64, k), sense: make([]float64, k), trial: make([]Piece, k)}
+}
+
+const (
+	// policyTries is how often all elements are put on their proper pieces before the search turns to one at a time.
+	policyTries = 24
+	// mostTrials bounds the search over all combinations of pieces.
+	mostTrials = 200000
+)
+
+// solve starts from pieces and leaves the solution in pieces and e. It reports false where it found none.
+func (v *solver) solve(laws []law, s0 []float64, pieces []Piece, e []float64) bool {
+	for range policyTries {
+		if !v.linear(laws, s0, pieces, e) {
+			break
+		}
+		if !v.settle(laws, pieces, e, v.k) {
+			return true
+		}
+	}
+	// One element at a time, the first that is out of place: this cannot swing between two states of several.
+	copy(v.trial, pieces)
+	for range 16 * v.k {
+		if !v.linear(laws, s0, pieces, e) {
+			break
+		}
+		if !v.settle(laws, pieces, e, 1) {
+			return true
+		}
+	}
+	return v.search(laws, s0, pieces, e)
+}
+
+// settle moves up to most elements to their proper pieces and reports whether it moved any.
+func (v *solver) settle(laws []law, pieces []Piece, e []float64, most int) bool {
+	moved := 0
+	for i := range laws {
+		if p := laws[i].proper(pieces[i], e[i], v.sense[i]); p != pieces[i] {
+			pieces[i] = p
+			if moved++; moved == most {
+				break
+			}
+		}
+	}
+	return moved > 0
+}
+
+// search tries every combination of pieces.
+func (v *solver) search(laws []law, s0 []float64, pieces []Piece, e []float64) bool {
+	choices := [...][]Piece{
+		amplifierElement: {Linear, High, Low, SlewUp, SlewDown},
+		capsuleElement:   {Linear, CutOff, Saturated},
+		diodeElement:     {Linear, Off, On},
+	}
+	digits := make([]int, v.k)
+	for range mostTrials {
+		for i, d := range digits {
+			pieces[i] = choices[laws[i].kind][d]
+		}
+		if v.linear(laws, s0, pieces, e) && !v.settle(laws, v.copyOf(pieces), e, 1) {
+			return true
+		}
+		i := 0
+		for ; i < v.k; i++ {
+			if digits[i]++; digits[i] < len(choices[laws[i].kind]) {
+				break
+			}
+			digits[i] = 0
+		}
+		if i == v.k {
+			break
+		}
+	}
+	return false
+}
+
+func (v *solver) copyOf(p []Piece) []Piece {
+	copy(v.trial, p)
+	return v.trial
+}
+
+// linear solves for e with every element on its piece, and leaves the senses. It reports false where the equations
+// are singular.
+func (v *solver) linear(laws []law, s0 []float64, pieces []Piece, e []float64) bool {
+	k := v.k
+	for i := range k {
+		a, b, c := laws[i].row(pieces[i])
+		row := v.matrix[i*k : (i+1)*k]
+		for j := range row {
+			row[j] = b * v.b[i*k+j]
+		}
+		row[i] += a
+		v.rhs[i] = c - b*s0[i]
+	}
+	if !gauss(v.matrix, v.rhs, k) {
+		return false
+	}
+	copy(e, v.rhs)
+	for i := range k {
+		sum := s0[i]
+		for j, x := range e {
+			sum += v.b[i*k+j] * x
+		}
+		v.sense[i] = sum
+	}
+	return true
+}
+
+// gauss solves m·x = b in place, b becoming x; false where m is singular or the result is not finite.
+func gauss(m, b []float64, k int) bool {
+	for c := range k {
+		at, best := -1, 0.
+		for r := c; r < k; r++ {
+			if a := math.Abs(m[r*k+c]); a > best {
+				at, best = r, a
+			}
+		}
+		if at < 0 {
+			return false
+		}
+		if at != c {
+			for j := c; j < k; j++ {
+				m[c*k+j], m[at*k+j] = m[at*k+j], m[c*k+j]
+			}
+			b[c], b[at] = b[at], b[c]
+		}
+		for r := c + 1; r < k; r++ {
+			f := m[r*k+c] / m[c*k+c]
+			if f == 0 {
+				continue
+			}
+			for j := c + 1; j < k; j++ {
+				m[r*k+j] -= f * m[c*k+j]
+			}
+			b[r] -= f * b[c]
+		}
+	}
+	for c := k - 1; c >= 0; c-- {
+		sum := b[c]
+		for j := c + 1; j < k; j++ {
+			sum -= m[c*k+j] * b[j]
+		}
+		b[c] = sum / m[c*k+c]
+		if math.IsNaN(b[c]) || math.IsInf(b[c], 0) {
+			return false
+		}
+	}
+	return true
+}

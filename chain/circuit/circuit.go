@@ -1,0 +1,221 @@
+package circuit
+
+import (
+	"errors"
+	"fmt"
+	"slices"
+	"strings"
+
+	"midrail/bilinear"
+	"midrail/chain"
+	"midrail/chain/amplifier"
+)
+
+// Ground is the node that every voltage is told against.
+const Ground = 0
+
+// Network is a whole chain as one circuit. It is not changed once built and may be shared by goroutines.
+type Network struct {
+	Chain      *chain.Chain
+	Nodes      []string    // names; node 0 is ground
+	Resistors  []Component // ohms
+	Capacitors []Component // farads
+	Amplifiers []Amplifier
+	Inputs     []Input // in the order of the chain's inputs
+	Supply     int     // node of the supply
+	Output     int     // node that the converter samples
+	stages     []int   // output node of each of the chain's stages
+	biases     []int   // node of each of the chain's biases
+}
+
+// Component is a resistor or a capacitor between two nodes.
+type Component struct {
+	Part chain.Part // Value is above 0 and finite
+	A, B int        // nodes
+}
+
+// Amplifier is an amplifier between its nodes.
+type Amplifier struct {
+	Name             string // the stage, or the bias it buffers
+	Stage            int    // index of the stage; -1 for a bias buffer
+	Model            amplifier.Model
+	Plus, Minus, Out int     // nodes
+	Low, High        float64 // V, limits of the internal source at the nominal supply
+}
+
+// Input is where one of the chain's inputs feeds the network.
+type Input struct {
+	Node int // where the stages take it from: behind the source resistance, or the capsule's drain
+	// Drive is the node whose voltage the sound sets. For an electret it stands alone, and its "voltage" is the
+	// current in A that the sound adds to the drain's.
+	Drive int
+	Scale float64 // what a sample of 1.0 is at Drive: V, or A for an electret (negative: pressure raises the drain)
+	Clip  float64 // V at Drive, the largest peak that a microphone passes; +Inf: no limit
+}
+
+// Drives are the inputs u of the network in their order: the supply, then each of the chain's inputs.
+// u[SupplyInput] is in V; u[SoundInput(i)] in V, or in A for an electret.
+const SupplyInput = 0
+
+// SoundInput returns the index in u of the chain's i-th input.
+func SoundInput(i int) int { return 1 + i }
+
+// New builds the network of a chain, which is one that [chain.Read] returned.
+func New(c *chain.Chain) *Network {
+	w := &wiring{
+		Network: &Network{Chain: c, Nodes: []string{"ground"}},
+		named:   map[string]int{},
+	}
+	w.Supply = w.node("supply")
+	w.wireBiases()
+	w.wireInputs()
+	w.wireStages()
+	w.Output = w.named[c.Converter.From]
+	if cp := c.Converter.PinCapacitor; cp > 0 {
+		w.capacitor(chain.Part{Name: "converter.pin_capacitor", Key: "pin_capacitor", Unit: chain.Farad, Value: cp, Pos: c.Converter.Pos}, w.Output, Ground)
+	}
+	return w.Network
+}
+
+// StageNode returns the output node of the chain's i-th stage.
+func (n *Network) StageNode(i int) int { return n.stages[i] }
+
+// BiasNode returns the node of the chain's i-th bias.
+func (n *Network) BiasNode(i int) int { return n.biases[i] }
+
+// NodeOf returns the node that carries the given input, stage or bias, or the supply, and whether there is one.
+func (n *Network) NodeOf(name string) (int, bool) {
+	if name == "supply" {
+		return n.Supply, true
+	}
+	for i := range n.Chain.Stages {
+		if n.Chain.Stages[i].Name == name {
+			return n.stages[i], true
+		}
+	}
+	for i := range n.Chain.Inputs {
+		if n.Chain.Inputs[i].Name == name {
+			return n.Inputs[i].Node, true
+		}
+	}
+	for i := range n.Chain.Biases {
+		if n.Chain.Biases[i].Name == name {
+			return n.biases[i], true
+		}
+	}
+	return 0, false
+}
+
+// Description returns the network for [bilinear.Compile]. Its inputs are those that [SupplyInput] and
+// [SoundInput] number.
+func (n *Network) Description() bilinear.Network {
+	d := bilinear.Network{Nodes: len(n.Nodes), Drives: []int{n.Supply}}
+	for _, r := range n.Resistors {
+		d.Resistors = append(d.Resistors, bilinear.Branch{A: r.A, B: r.B, Value: r.Part.Value})
+	}
+	for _, c := range n.Capacitors {
+		d.Capacitors = append(d.Capacitors, bilinear.Branch{A: c.A, B: c.B, Value: c.Part.Value})
+	}
+	for i, in := range n.Inputs {
+		d.Drives = append(d.Drives, in.Drive)
+		if ch := &n.Chain.Inputs[i]; ch.Kind == chain.Electret {
+			d.Capsules = append(d.Capsules, bilinear.Capsule{Drain: in.Node, Minimum: ch.MinimumVoltage, Current: ch.Current, Signal: SoundInput(i)})
+		}
+	}
+	for _, a := range n.Amplifiers {
+		m := a.Model
+		d.Amplifiers = append(d.Amplifiers, bilinear.Amplifier{
+			Plus: a.Plus, Minus: a.Minus, Out: a.Out,
+			GainBandwidth: m.GainBandwidth, OpenLoopGain: m.OpenLoopGain,
+			OutputResistance: m.OutputResistance, SlewRate: m.SlewRate,
+			HighRail: n.Supply, LowRail: Ground,
+			HighMargin: n.Chain.Supply.Voltage - a.High, LowMargin: a.Low,
+			Offset: m.Offset,
+		})
+	}
+	return d
+}
+
+// RestInputs returns u with the supply at its voltage and every input silent.
+func (n *Network) RestInputs() []float64 {
+	u := make([]float64, 1+len(n.Inputs))
+	u[SupplyInput] = n.Chain.Supply.Voltage
+	for i := range n.Chain.Inputs {
+		if n.Chain.Inputs[i].Kind == chain.Microphone {
+			u[SoundInput(i)] = n.Chain.Inputs[i].Rest
+		}
+	}
+	return u
+}
+
+// Rest returns the operating point: every node's voltage with the capacitors open and the inputs silent, within
+// the limits of amplifiers and capsules, offsets and bias currents included.
+// The error is of type [chain.Faults] where the network has none: a node without a DC path.
+func (n *Network) Rest() (bilinear.Operating, error) {
+	d := n.Description()
+	u := n.RestInputs()
+	for _, a := range n.Amplifiers {
+		if a.Model.BiasCurrent == 0 {
+			continue
+		}
+		for _, pin := range [...]int{a.Plus, a.Minus} {
+			d.Currents = append(d.Currents, bilinear.Current{From: pin, To: Ground})
+			u = append(u, a.Model.BiasCurrent)
+		}
+	}
+	at, err := bilinear.SolveRest(d, u)
+	if err != nil {
+		return bilinear.Operating{}, n.fault(err)
+	}
+	return at, nil
+}
+
+// fault turns what package bilinear says of a network into faults that name the owner's nodes.
+func (n *Network) fault(err error) error {
+	var path *bilinear.NoPathError
+	if !errors.As(err, &path) {
+		return chain.Faults{{File: n.Chain.File, Text: fmt.Sprintf("the circuit has no rest point: %v", err),
+			Remedy: "look for parts whose values differ by more than a resistor and a wire do"}}
+	}
+	names := make([]string, len(path.Nodes))
+	var at chain.Pos
+	for i, node := range path.Nodes {
+		names[i] = "“" + n.Nodes[node] + "”"
+		if at.Line == 0 {
+			at = n.posOf(node)
+		}
+	}
+	text := "node " + names[0] + " has no DC path"
+	if len(names) > 1 {
+		text = "nodes " + strings.Join(names, ", ") + " have no DC path"
+	}
+	return chain.Faults{{File: n.Chain.File, Pos: at, Text: text, Remedy: "add a resistor to ground or to a bias"}}
+}
+
+// posOf returns the place in the chain file of a part that touches the node.
+func (n *Network) posOf(node int) chain.Pos {
+	for _, list := range [...][]Component{n.Capacitors, n.Resistors} {
+		for _, c := range list {
+			if c.A == node || c.B == node {
+				return c.Part.Pos
+			}
+		}
+	}
+	return chain.Pos{}
+}
+
+// With returns a copy of the network in which the named part has another value in ohms or farads, and whether there
+// is such a part.
+func (n *Network) With(part string, value float64) (*Network, bool) {
+	other := *n
+	for _, list := range [...]*[]Component{&other.Resistors, &other.Capacitors} {
+		for i := range *list {
+			if (*list)[i].Part.Name == part {
+				*list = slices.Clone(*list)
+				(*list)[i].Part.Value = value
+				return &other, true
+			}
+		}
+	}
+	return nil, false
+}

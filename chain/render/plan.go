@@ -1,0 +1,79 @@
+package render
+
+import (
+	"math"
+	"math/cmplx"
+
+	"midrail/chain/circuit"
+)
+
+// Plan is how finely a run steps the circuit.
+type Plan struct {
+	Steps        int     // internal steps for each conversion, M
+	Rate         float64 // Hz, fi = M·fc
+	LargestError float64 // dB, the largest difference between stepped and exact response up to To
+	To           float64 // Hz, the highest frequency that the tracks hold
+}
+
+const (
+	// accuracy is the largest error of the stepped response that a run accepts, in dB.
+	accuracy = 0.05
+	// unheard is how far below its peak a response may lie before its error no longer counts.
+	unheard = 1e-7
+	// perInterferer is how many steps the shortest period of an interferer gets at least.
+	perInterferer = 16
+	// gridPoints is the number of frequencies at which the error is looked at.
+	gridPoints = 96
+)
+
+// NewPlan chooses the internal rate for tracks that hold frequencies up to the given one in Hz.
+//
+// The bilinear transform of the whole circuit is exact but for its warped frequency axis: at f it has the
+// circuit's response at (fi/π)·tan(πf/fi). For n poles the error is about n·8.69·(πf/fi)²/3 dB.
+func NewPlan(n *circuit.Network, to float64) Plan {
+	fc := n.Chain.Converter.Rate
+	least := 4 * to
+	for _, x := range n.Chain.Interferers {
+		least = math.Max(least, perInterferer*(x.Frequency+x.Bandwidth))
+	}
+	p := Plan{Steps: max(1, int(math.Ceil(least/fc))), To: to}
+	for {
+		p.Rate = float64(p.Steps) * fc
+		p.LargestError = warpError(n, p.Rate, to)
+		if p.LargestError <= accuracy {
+			return p
+		}
+		// The error falls as 1/fi².
+		grow := math.Sqrt(p.LargestError / accuracy)
+		p.Steps = max(p.Steps+1, int(math.Ceil(float64(p.Steps)*math.Min(grow, 4))))
+	}
+}
+
+// warpError returns the largest difference in dB, up to the given frequency, between the circuit stepped at the
+// rate and the circuit itself, over all its inputs.
+func warpError(n *circuit.Network, rate, to float64) float64 {
+	type pair struct{ exact, stepped float64 }
+	worst := 0.
+	at := make([][]pair, len(n.Inputs))
+	for i := range gridPoints {
+		f := to * math.Pow(10, -3*float64(i)/(gridPoints-1))
+		exact := n.At(f).Into(n.Output)
+		stepped := n.At(rate / math.Pi * math.Tan(math.Pi*f/rate)).Into(n.Output)
+		for in := range n.Inputs {
+			u := circuit.SoundInput(in)
+			at[in] = append(at[in], pair{cmplx.Abs(exact.Input(u)), cmplx.Abs(stepped.Input(u))})
+		}
+	}
+	for _, pairs := range at {
+		peak := 0.
+		for _, p := range pairs {
+			peak = math.Max(peak, p.exact)
+		}
+		for _, p := range pairs {
+			if p.exact > unheard*peak {
+				worst = math.Max(worst, math.Abs(20*math.Log10(p.stepped/p.exact)))
+			}
+		}
+	}
+	return worst
+}

@@ -1,0 +1,48 @@
+package command
+
+import (
+	"errors"
+	"fmt"
+	"io/fs"
+	"os"
+
+	"github.com/spf13/cobra"
+
+	"midrail/chain"
+)
+
+func newNew(s streams) *cobra.Command {
+	return &cobra.Command{
+		Use:   "new FILE",
+		Short: "Write a commented starter chain file",
+		Long: `new writes a chain file to start from: a line input on one 5 V supply, every table explained. It does not
+overwrite a file.`,
+		Example: "  midrail new front-end.toml",
+		Args:    exactly(1),
+		RunE: func(_ *cobra.Command, args []string) error {
+			f, err := os.OpenFile(args[0], os.O_WRONLY|os.O_CREATE|os.O_EXCL, 0o666)
+			if errors.Is(err, fs.ErrExist) {
+				return usageError{fmt.Errorf("%s is there already; name another file, or move it away", args[0])}
+			}
+			if err != nil {
+				return err
+			}
+			_, err = f.WriteString(chain.Starter())
+			if err := errors.Join(err, f.Close()); err != nil {
+				return errors.Join(err, os.Remove(args[0]))
+			}
+			fmt.Fprintf(s.out, "wrote %s; next: midrail run %[1]s RECORDING.wav\n", args[0])
+			return nil
+		},
+	}
+}
+
+// exactly is cobra.ExactArgs with an error that is told as one of usage.
+func exactly(n int) cobra.PositionalArgs {
+	return func(cmd *cobra.Command, args []string) error {
+		if err := cobra.ExactArgs(n)(cmd, args); err != nil {
+			return usageError{fmt.Errorf("%s: %w", cmd.CommandPath(), err)}
+		}
+		return nil
+	}
+}

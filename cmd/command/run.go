@@ -1,0 +1,192 @@
+package command
+
+import (
+	"context"
+	_ "embed"
+	"errors"
+	"fmt"
+	"io"
+	"os"
+	"path/filepath"
+	"strings"
+
+	"github.com/spf13/cobra"
+
+	"midrail/chain"
+	"midrail/signals"
+	"midrail/signals/tone"
+	"midrail/signals/wav"
+)
+
+// demoName is the name of the embedded chain.
+const demoName = "brood-box.toml"
+
+//go:embed demo/brood-box.toml
+var demoChain []byte
+
+// runFlags are what the command line of run says.
+type runFlags struct {
+	set    []string
+	tracks []string // INPUT=FILE
+	out    string
+	json   bool
+	seed   uint64
+}
+
+func newRun(s streams) *cobra.Command {
+	var f runFlags
+	cmd := &cobra.Command{
+		Use:   "run [CHAIN [TRACK...]]",
+		Short: "Run recordings through a chain and hear what the converter hears",
+		Long: `run takes each recording through the chain and writes a folder with what the converter hears (heard.wav), the
+layers that sum to it (wanted, fold-back, interference, overload, noise, rounding), report.html and report.json.
+Without arguments it runs the demo. Several tracks get a folder each within one.
+
+Exit status: 0 done, 1 a limit of the chain file is broken, 2 the input is wrong, 3 the machine failed.
+Caution: the layers can be loud; start with the volume low.`,
+		Example: `  midrail run
+  midrail run front-end.toml song.wav
+  midrail run front-end.toml song.wav --set "mic amp.r_f=82k" --out louder
+  midrail run mixer.toml --track voice=a.wav --track music=b.wav`,
+		RunE: func(cmd *cobra.Command, args []string) error {
+			return run(cmd.Context(), s, f, args)
+		},
+	}
+	cmd.Flags().StringArrayVar(&f.set, "set", nil, `change a value for this run: "NAME.key=value"; repeatable`)
+	cmd.Flags().StringArrayVar(&f.tracks, "track", nil, `feed one input: "INPUT=FILE"; repeatable`)
+	cmd.Flags().StringVarP(&f.out, "out", "o", "", "output `folder` (default: named after chain and track, in this one)")
+	cmd.Flags().BoolVar(&f.json, "json", false, "print the result as JSON and nothing else")
+	cmd.Flags().Uint64Var(&f.seed, "seed", 1, "seed of all that is drawn by chance")
+	return cmd
+}
+
+// recording is a track of the user's, or the demo's.
+type recording struct {
+	name string                          // as told to people
+	open func() (signals.Track, error)
+	demo bool
+}
+
+func fileRecording(path string) recording {
+	return recording{name: path, open: func() (signals.Track, error) { return wav.Open(path) }}
+}
+
+func demoRecording() recording {
+	return recording{name: "demo", open: func() (signals.Track, error) { return tone.Demo(), nil }, demo: true}
+}
+
+func run(ctx context.Context, s streams, f runFlags, args []string) error {
+	name, data := demoName, demoChain
+	if len(args) > 0 {
+		var err error
+		if name, data, err = readChain(args[0]); err != nil {
+			return err
+		}
+	}
+	c, err := chain.Read(name, data, f.set)
+	if err != nil {
+		return err
+	}
+	jobs, err := jobsOf(c, f, args)
+	if err != nil {
+		return err
+	}
+	_ = jobs
+	return nil
+}
+
+// mostChain is the largest chain file that is read.
+const mostChain = 1 << 20
+
+// readChain reads a chain file, of which no more than mostChain+1 bytes are taken.
+func readChain(path string) (string, []byte, error) {
+	file, err := os.Open(path)
+	if err != nil {
+		return "", nil, err
+	}
+	defer file.Close()
+	data, err := io.ReadAll(io.LimitReader(file, mostChain+1))
+	return path, data, err
+}
+
+// job is one run: a recording for each of the chain's inputs, and the folder it goes to.
+type job struct {
+	label  string
+	tracks []recording // for each of the chain's inputs; open is nil for a silent one
+	folder string
+}
+
+func jobsOf(c *chain.Chain, f runFlags, args []string) ([]job, error) {
+	base := baseName(c.File)
+	if len(f.tracks) > 0 {
+		if len(args) > 1 {
+			return nil, usageError{errors.New("give tracks either as arguments or with --track, not both")}
+		}
+		j := job{tracks: make([]recording, len(c.Inputs))}
+		var labels []string
+		for _, t := range f.tracks {
+			input, path, ok := strings.Cut(t, "=")
+			i := inputIndex(c, input)
+			if !ok || i < 0 {
+				return nil, usageError{fmt.Errorf("--track %q: want INPUT=FILE, with an input of the chain: %s", t, strings.Join(inputNames(c), ", "))}
+			}
+			j.tracks[i] = fileRecording(path)
+			labels = append(labels, baseName(path))
+		}
+		j.label = strings.Join(labels, "+")
+		j.folder = f.out
+		if j.folder == "" {
+			j.folder = base + "-" + j.label
+		}
+		return []job{j}, nil
+	}
+	recordings := []recording{demoRecording()}
+	if len(args) > 1 {
+		recordings = nil
+		for _, path := range args[1:] {
+			recordings = append(recordings, fileRecording(path))
+		}
+	} else if len(args) == 1 {
+		return nil, usageError{fmt.Errorf("no track: midrail run %s RECORDING.wav", args[0])}
+	}
+	var jobs []job
+	for _, r := range recordings {
+		j := job{label: baseName(r.name), tracks: make([]recording, len(c.Inputs))}
+		for i := range j.tracks {
+			j.tracks[i] = r
+		}
+		jobs = append(jobs, j)
+	}
+	switch {
+	case len(jobs) == 1 && f.out != "":
+		jobs[0].folder = f.out
+	case len(jobs) == 1:
+		jobs[0].folder = base + "-" + jobs[0].label
+	default:
+		top := f.out
+		if top == "" {
+			top = base
+		}
+		for i := range jobs {
+			jobs[i].folder = filepath.Join(top, jobs[i].label)
+		}
+	}
+	return jobs, nil
+}
+
+func inputIndex(c *chain.Chain, name string) int {
+	for i := range c.Inputs {
+		if c.Inputs[i].Name == name {
+			return i
+		}
+	}
+	return -1
+}
+
+func inputNames(c *chain.Chain) []string {
+	var names []string
+	for i := range c.Inputs {
+		names = append(names, c.Inputs[i].Name)
+	}
+	return names
+}
