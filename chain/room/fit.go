@@ -36,7 +36,7 @@ func Fit(n *circuit.Network, r *render.Result, k int) (chain.Part, float64, bool
 	}
 	series := preferred.DefaultResistors
 	if part.Series != "" {
-		series, _ = preferred.ParseSeries(part.Series)
+		series, _ = preferred.Parse(part.Series)
 	}
 	out := n.Amplifiers[k].Out
 	before := loudest(n, out)

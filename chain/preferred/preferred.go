@@ -1,0 +1,121 @@
+// Package preferred holds the preferred numbers that parts are bought in: the series E3 to E192 of IEC 60063:2015.
+package preferred
+
+import (
+	"fmt"
+	"math"
+	"strconv"
+)
+
+// Series is one of the series; its number is how many values a decade has.
+type Series int
+
+// The series.
+const (
+	E3   Series = 3
+	E6   Series = 6
+	E12  Series = 12
+	E24  Series = 24
+	E48  Series = 48
+	E96  Series = 96
+	E192 Series = 192
+)
+
+// What parts come in where nothing is said: common practice, no source.
+const (
+	DefaultResistors  = E24
+	DefaultCapacitors = E12
+)
+
+// e24 are the two-figure values, of which E3 to E12 are every eighth, fourth and second. They are older than the rule
+// and differ from it in eight places.
+var e24 = [...]int{10, 11, 12, 13, 15, 16, 18, 20, 22, 24, 27, 30, 33, 36, 39, 43, 47, 51, 56, 62, 68, 75, 82, 91}
+
+// All returns the series from the coarsest to the finest.
+func All() []Series { return []Series{E3, E6, E12, E24, E48, E96, E192} }
+
+// Parse returns the series of a name such as "E24".
+func Parse(name string) (Series, error) {
+	for _, s := range All() {
+		if s.String() == name {
+			return s, nil
+		}
+	}
+	return 0, fmt.Errorf("%q is no series of preferred values: E3, E6, E12, E24, E48, E96, E192", name)
+}
+
+// String returns the series' name.
+func (s Series) String() string { return "E" + strconv.Itoa(int(s)) }
+
+// Decade returns the series' values from 1 to below 10, as numbers of three figures from 100 on.
+func (s Series) Decade() []int {
+	n := int(s)
+	values := make([]int, n)
+	for i := range values {
+		switch {
+		case n <= 24:
+			values[i] = 10 * e24[i*24/n]
+		case n == 192 && i == 185:
+			values[i] = 920 // the one exception to the rule, which gives 919
+		default:
+			values[i] = int(math.Round(100 * math.Pow(10, float64(i)/float64(n))))
+		}
+	}
+	return values
+}
+
+// value returns the k-th value of the series, the 0th being 1, as the number nearest to its decimal figures.
+func (s Series) value(decade []int, k int) float64 {
+	n := len(decade)
+	power, i := k/n, k%n
+	if i < 0 {
+		power, i = power-1, i+n
+	}
+	x, _ := strconv.ParseFloat(fmt.Sprintf("%de%d", decade[i], power-2), 64)
+	return x
+}
+
+// same is how near a value must lie to a preferred one to count as it.
+const same = 1e-6
+
+// at returns the largest k whose value is not above x but for rounding.
+func (s Series) at(decade []int, x float64) int {
+	if !(x > 1e-30 && x < 1e30) {
+		panic("preferred: value out of range")
+	}
+	k := int(math.Floor(math.Log10(x) * float64(len(decade))))
+	for s.value(decade, k) > x*(1+same) {
+		k--
+	}
+	for s.value(decade, k+1) <= x*(1+same) {
+		k++
+	}
+	return k
+}
+
+// Down returns the next value below x, which may itself be one of the series. It panics for x outside 1e-30 to 1e30.
+func (s Series) Down(x float64) float64 {
+	d := s.Decade()
+	k := s.at(d, x)
+	if v := s.value(d, k); v < x*(1-same) {
+		return v
+	}
+	return s.value(d, k-1)
+}
+
+// Up returns the next value above x, which may itself be one of the series. It panics for x outside 1e-30 to 1e30.
+func (s Series) Up(x float64) float64 {
+	d := s.Decade()
+	return s.value(d, s.at(d, x)+1)
+}
+
+// Nearest returns the value nearest to x by ratio. It panics for x outside 1e-30 to 1e30.
+func (s Series) Nearest(x float64) float64 {
+	d := s.Decade()
+	k := s.at(d, x)
+	low, high := s.value(d, k), s.value(d, k+1)
+	if x/low <= high/x {
+		return low
+	}
+	return high
+}
