@@ -64,7 +64,7 @@ func newSettling(n *circuit.Network) settling {
 		return s
 	}
 	cs, cp := c.SamplingCapacitor, c.PinCapacitor
-	z := n.At(1 / (2 * math.Pi * c.Acquisition)).Into(n.Output).Current(circuit.Ground, n.Output)
+	z := n.At(1/(2*math.Pi*c.Acquisition)).Into(n.Output).Current(circuit.Ground, n.Output)
 	rs := cmplx.Abs(1 / (1/z - complex(0, cp/c.Acquisition))) // without the pin capacitor, at ω = 1/acquisition
 	if cp > 0 {
 		s.short = cs / (cs + cp) * math.Exp(-c.Acquisition/(rs*(cs+cp)))

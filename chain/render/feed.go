@@ -112,12 +112,12 @@ func (s *teeSide) Read(dst []float64) (int, error) {
 // chunk is a block of the internal rate: for each of the network's inputs u the deviations that the layers' sources
 // make, in volts or amperes. A nil slice is silence.
 type chunk struct {
-	first      int64 // step of the internal rate, counted from the tracks' first sample
-	wanted     [][]float64
-	folded     [][]float64
-	inBand     [][]float64 // interference below half the converter's rate
-	outOfBand  [][]float64 // and above
-	end        int64       // conversions in the whole run, once known; else -1
+	first     int64 // step of the internal rate, counted from the tracks' first sample
+	wanted    [][]float64
+	folded    [][]float64
+	inBand    [][]float64 // interference below half the converter's rate
+	outOfBand [][]float64 // and above
+	end       int64       // conversions in the whole run, once known; else -1
 }
 
 // feeder fills chunks.

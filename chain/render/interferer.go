@@ -24,7 +24,9 @@ type interferer struct {
 }
 
 // generator adds its signal at the steps first, first+1, … of the internal rate to dst.
-type generator interface{ add(dst []float64, first int64) }
+type generator interface {
+	add(dst []float64, first int64)
+}
 
 // newInterference prepares the chain's interferers, with noise drawn from the seed.
 func newInterference(n *circuit.Network, rate float64, seed uint64) *interference {

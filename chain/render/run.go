@@ -41,26 +41,26 @@ type Block struct {
 
 // Options are what a run leaves to its caller.
 type Options struct {
-	Seed     uint64            // of all that is drawn by chance
-	Noise    *noise.Budget     // of the network; nil runs without noise
+	Seed     uint64                  // of all that is drawn by chance
+	Noise    *noise.Budget           // of the network; nil runs without noise
 	Progress func(conversions int64) // called now and then, from one goroutine; may be nil
 }
 
 // Result is what a run found beside the sound.
 type Result struct {
-	Plan       Plan
-	At         bilinear.Operating
-	Span       Span
-	Rest       float64 // full scale, what the converter rests at
+	Plan        Plan
+	At          bilinear.Operating
+	Span        Span
+	Rest        float64 // full scale, what the converter rests at
 	Conversions int64
-	Saturated  int64   // conversions at which the voltage was beyond the span
-	Seconds    float64 // of the longest track
-	Overloaded float64 // s at which any limit held, the converter's span included
-	Stages     []StageRange
-	Amplifiers []AmplifierRange
-	Overloads  []Overload // for each owner and kind that saw any
-	Events     []Event    // the largest, in the order of time
-	EventCount int64
+	Saturated   int64   // conversions at which the voltage was beyond the span
+	Seconds     float64 // of the longest track
+	Overloaded  float64 // s at which any limit held, the converter's span included
+	Stages      []StageRange
+	Amplifiers  []AmplifierRange
+	Overloads   []Overload // for each owner and kind that saw any
+	Events      []Event    // the largest, in the order of time
+	EventCount  int64
 }
 
 // StageRange is where a stage's output went.

@@ -59,12 +59,12 @@ type layerRun struct {
 // conversions is what the circuit gives at the converter's instants over a chunk, in volts from rest. Each layer
 // has a row for each of the simulator's ports.
 type conversions struct {
-	first                                int64
-	wanted, folded, inBand, outOfBand    [][]float64
-	overload                             [][]float64
-	slope                                []float64 // V/s of the limited run at the output
-	supply                               []float64 // V from nominal
-	end                                  int64     // as chunk.end
+	first                             int64
+	wanted, folded, inBand, outOfBand [][]float64
+	overload                          [][]float64
+	slope                             []float64 // V/s of the limited run at the output
+	supply                            []float64 // V from nominal
+	end                               int64     // as chunk.end
 }
 
 func newSimulator(n *circuit.Network, at bilinear.Operating, plan Plan, settle settling) (*simulator, error) {
@@ -261,7 +261,9 @@ type capsuleWatch struct {
 
 func newWatchers(n *circuit.Network, at bilinear.Operating, indexOf map[int]int, dt float64, list *eventList) watchers {
 	var w watchers
-	one := func(owner string, kind EventKind) *watcher { return &watcher{owner: owner, kind: kind, list: list, dt: dt} }
+	one := func(owner string, kind EventKind) *watcher {
+		return &watcher{owner: owner, kind: kind, list: list, dt: dt}
+	}
 	for k, a := range n.Amplifiers {
 		m := a.Model
 		supply := n.Chain.Supply.Voltage
