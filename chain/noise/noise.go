@@ -12,7 +12,8 @@
 //
 //	Sfold(f) = S(f) + Σ S(k·fc − f) + S(k·fc + f),   k = 1, 2, …,   0 ≤ f ≤ fc/2
 //
-// summed to where it has died. Nothing is counted below the chain's lowest noise frequency.
+// summed to where it has died, or to a hundred times the amplifiers' gain-bandwidth where a flat floor is left.
+// Nothing is counted below the chain's lowest noise frequency.
 package noise
 
 import (
@@ -29,8 +30,12 @@ import (
 const Boltzmann = 1.380649e-23
 
 const (
-	perDecade = 100  // points of the frequency grid; a resonance of Q 10 is wider than three of them
-	highest   = 1e10 // Hz, where the grid ends at the latest
+	perDecade = 100 // points of the frequency grid; a resonance of Q 10 is wider than three of them
+	// beyond is how many times the widest amplifier's gain-bandwidth the grid reaches at the most: no real circuit
+	// keeps a flat floor further than its parts' own strays let it.
+	beyond = 100
+	// highest is where the grid ends, in Hz, for amplifiers without limit.
+	highest = 1e9
 	// died is the share of the power that the spectrum beyond the grid may still hold, taken as 1/f².
 	died = 1e-6
 	// bins of the folded spectrum from 0 to half the converter's rate.
@@ -68,7 +73,7 @@ type Budget struct {
 	Power       float64   // V², all sources
 	Folded      []float64 // V²/Hz, all sources, at i·Step
 	Step        float64   // Hz, between the points of Folded; the last is at half the converter's rate
-	Ends        bool      // whether the spectrum has died below 10 GHz; if not, more noise than is told folds in
+	Highest     float64   // Hz, up to which the spectrum was followed
 }
 
 // At computes the noise budget of a network.
@@ -81,6 +86,11 @@ func At(n *circuit.Network) *Budget {
 		b.Sources[i] = Source{Name: s.name, Kind: s.kind}
 	}
 	ratio := math.Pow(10, 1./perDecade)
+	widest := 0.
+	for _, a := range n.Amplifiers {
+		widest = math.Max(widest, a.Model.GainBandwidth)
+	}
+	top := math.Min(highest, math.Max(beyond*widest, 1000*c.Converter.Rate))
 	f, power := c.Conditions.NoiseFrom, 0.
 	for i := 0; ; i++ {
 		into := n.At(f).Into(n.Output)
@@ -95,11 +105,7 @@ func At(n *circuit.Network) *Budget {
 		if i > 0 {
 			power += area(b.Frequencies[i-1], f, b.Density[i-1], total)
 		}
-		if f > 2*c.Converter.Rate && f > 1e6 && total*f <= died*power {
-			b.Ends = true
-			break
-		}
-		if f >= highest {
+		if f >= top || f > 2*c.Converter.Rate && f > 1e6 && total*f <= died*power {
 			break
 		}
 		f = c.Conditions.NoiseFrom * math.Pow(ratio, float64(i+1))
@@ -107,6 +113,7 @@ func At(n *circuit.Network) *Budget {
 	for i := range b.Sources {
 		b.Sources[i].Power = integral(b.Frequencies, b.Sources[i].Density)
 	}
+	b.Highest = b.Frequencies[len(b.Frequencies)-1]
 	b.Folded = b.fold(c.Converter.Rate)
 	for _, s := range converterSources(c) {
 		b.Sources = append(b.Sources, s)

@@ -1,0 +1,65 @@
+package wav
+
+import (
+	"errors"
+	"io"
+	"math"
+	"os"
+	"path/filepath"
+	"testing"
+)
+
+func TestWrittenFilesReadBack(t *testing.T) {
+	dir := t.TempDir()
+	codes := []int32{0, 1, -1, 32767, -32768, 12345, 7}
+	for _, bits := range []int{16, 24} {
+		path := filepath.Join(dir, "codes.wav")
+		f, err := os.Create(path)
+		if err != nil {
+			t.Fatal(err)
+		}
+		w := NewIntegerWriter(f, 9615.38, 1, bits)
+		if err := errors.Join(w.Write(codes[:3]), w.Write(codes[3:]), w.Close(), f.Close()); err != nil {
+			t.Fatal(err)
+		}
+		got := readAll(t, path, 9615)
+		for i, c := range codes {
+			if want := float64(c) / math.Exp2(float64(bits-1)); got[i] != want {
+				t.Errorf("%d bits: sample %d is %g, want %g", bits, i, got[i], want)
+			}
+		}
+	}
+	path := filepath.Join(dir, "float.wav")
+	f, err := os.Create(path)
+	if err != nil {
+		t.Fatal(err)
+	}
+	samples := []float64{0, 0.5, -2.25, 1e-3}
+	w, err := NewFloatWriter(f, 48000)
+	if err := errors.Join(err, w.Write(samples), w.Close(), f.Close()); err != nil {
+		t.Fatal(err)
+	}
+	for i, got := range readAll(t, path, 48000) {
+		if want := float64(float32(samples[i])); got != want {
+			t.Errorf("float: sample %d is %g, want %g", i, got, want)
+		}
+	}
+}
+
+func readAll(t *testing.T, path string, rate float64) []float64 {
+	t.Helper()
+	f, err := Open(path)
+	if err != nil {
+		t.Fatal(err)
+	}
+	defer f.Close()
+	if f.Rate() != rate || f.Note() != "" {
+		t.Errorf("rate %g, note %q", f.Rate(), f.Note())
+	}
+	got := make([]float64, f.Frames()+1)
+	n, err := f.ReadFrames(got)
+	if err != io.EOF || int64(n) != f.Frames() {
+		t.Fatalf("%d frames of %d, %v", n, f.Frames(), err)
+	}
+	return got[:n]
+}
