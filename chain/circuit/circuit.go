@@ -148,12 +148,10 @@ func (n *Network) RestInputs() []float64 {
 	return u
 }
 
-// Rest returns the operating point: every node's voltage with the capacitors open and the inputs silent, within
-// the limits of amplifiers and capsules, offsets and bias currents included.
-// The error is of type [chain.Faults] where the network has none: a node without a DC path.
-func (n *Network) Rest() (bilinear.Operating, error) {
-	d := n.Description()
-	u := n.RestInputs()
+// Powered returns the network for its rest point: beside the inputs of [Network.Description] it has the amplifiers'
+// bias currents, and u holds what all of them are with the supply at its voltage and every sound silent.
+func (n *Network) Powered() (d bilinear.Network, u []float64) {
+	d, u = n.Description(), n.RestInputs()
 	for _, a := range n.Amplifiers {
 		if a.Model.BiasCurrent == 0 {
 			continue
@@ -163,7 +161,14 @@ func (n *Network) Rest() (bilinear.Operating, error) {
 			u = append(u, a.Model.BiasCurrent)
 		}
 	}
-	at, err := bilinear.SolveRest(d, u)
+	return d, u
+}
+
+// Rest returns the operating point: every node's voltage with the capacitors open and the inputs silent, within
+// the limits of amplifiers and capsules, offsets and bias currents included.
+// The error is of type [chain.Faults] where the network has none: a node without a DC path.
+func (n *Network) Rest() (bilinear.Operating, error) {
+	at, err := bilinear.SolveRest(n.Powered())
 	if err != nil {
 		return bilinear.Operating{}, n.fault(err)
 	}

@@ -22,6 +22,9 @@ const (
 	ConverterRange EventKind = "range"       // the converter's span
 )
 
+// Limits tells whether the kind changes the sound, and is not only watched.
+func (k EventKind) Limits() bool { return k != CommonMode && k != OutputCurrent }
+
 // Event is one stretch of overload.
 type Event struct {
 	Owner    string // stage, bias, input or "converter"

@@ -24,15 +24,14 @@ type simulator struct {
 	y, yLinear              []float64 // watched nodes
 	lastOut                 float64   // y at the output one step before
 
-	watch     []int       // watched nodes
-	indexOf   map[int]int // node → index in watch
-	ports     []int       // nodes at the converter: the output and, if another, the one it shares with
-	layers    []*layerRun
-	stages    []excursion // of each stage's output, limited run
-	asked     []excursion // of each amplifier's internal source, linear run
-	watchers  watchers
-	list      eventList
-	supplyDev []bool // unused inputs are skipped: which inputs of u carry a signal
+	watch    []int       // watched nodes
+	indexOf  map[int]int // node → index in watch
+	ports    []int       // nodes at the converter: the output and, if another, the one it shares with
+	layers   []*layerRun
+	stages   []excursion // of each stage's output, limited run
+	asked    []excursion // of each amplifier's internal source, linear run
+	watchers watchers
+	list     eventList
 }
 
 // excursion is how far a voltage went from rest.
@@ -53,6 +52,7 @@ type layerRun struct {
 	input int
 	lift  *bilinear.Lifted
 	state []float64
+	after []float64 // room for the next state
 	y     []float64
 }
 
@@ -105,6 +105,15 @@ func newSimulator(n *circuit.Network, at bilinear.Operating, plan Plan, settle s
 	return s, nil
 }
 
+// portIndices returns where the ports stand among the watched nodes.
+func (s *simulator) portIndices() []int {
+	var at []int
+	for _, node := range s.ports {
+		at = append(at, s.indexOf[node])
+	}
+	return at
+}
+
 // newLayers prepares the linear way of every input that carries a signal, for each layer.
 func (s *simulator) newLayers() {
 	supplied := make([]bool, 1+len(s.n.Inputs)) // inputs with an interferer
@@ -118,8 +127,8 @@ func (s *simulator) newLayers() {
 		supplied[in] = true
 	}
 	add := func(input int, pick func(*chunk) [][]float64, into func(*conversions) [][]float64) {
-		l := s.circuit.Lift(s.plan.Steps, input, s.ports)
-		s.layers = append(s.layers, &layerRun{pick: pick, into: into, input: input, lift: l, state: make([]float64, l.States()), y: make([]float64, len(s.ports))})
+		l := s.circuit.Lift(s.plan.Steps, input, s.portIndices())
+		s.layers = append(s.layers, &layerRun{pick: pick, into: into, input: input, lift: l, state: make([]float64, l.States()), after: make([]float64, l.States()), y: make([]float64, len(s.ports))})
 	}
 	for u, interfered := range supplied {
 		if u != circuit.SupplyInput {
@@ -168,7 +177,7 @@ func (s *simulator) runLayers(c *chunk, o *conversions) {
 		}
 		into := l.into(o)
 		for k := range o.slope {
-			l.lift.Step(l.state, sound[k*steps:(k+1)*steps], l.y)
+			l.lift.Step(l.state, sound[k*steps:(k+1)*steps], l.y, l.after)
 			for p, v := range l.y {
 				into[p][k] += v
 			}

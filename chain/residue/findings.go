@@ -227,8 +227,8 @@ type Limit struct {
 	Holds        bool
 }
 
-// Limits holds the chain's limits against a run. Settling is not looked at here.
-func Limits(n *circuit.Network, r *render.Result, res *Residue) []Limit {
+// Limits holds the chain's limits against a run; settling is the time in s that the chain takes to 1 % of its rest.
+func Limits(n *circuit.Network, r *render.Result, res *Residue, settling float64) []Limit {
 	l := &n.Chain.Limits
 	var list []Limit
 	most := func(name string, limit *float64, value float64) {
@@ -243,7 +243,11 @@ func Limits(n *circuit.Network, r *render.Result, res *Residue) []Limit {
 	}
 	most("overload_time", l.OverloadTime, r.Overloaded/r.Seconds)
 	most("fold_back", l.FoldBack, res.Layers[render.FoldBack].RMS)
-	least("fold_back_below_wanted", l.FoldBackBelowWanted, res.Layers[render.Wanted].RMS-res.Layers[render.FoldBack].RMS)
+	below := res.BelowWanted(render.FoldBack)
+	if math.IsInf(res.Layers[render.FoldBack].RMS, -1) {
+		below = math.Inf(1)
+	}
+	least("fold_back_below_wanted", l.FoldBackBelowWanted, below)
 	most("interference", l.Interference, res.Layers[render.Interference].RMS)
 	most("noise", l.Noise, res.Layers[render.Noise].RMS)
 	nearest := math.Inf(1)
@@ -254,6 +258,7 @@ func Limits(n *circuit.Network, r *render.Result, res *Residue) []Limit {
 	if d := l.Droop; d != nil {
 		most("droop", &d.Max, droop(n, d.At))
 	}
+	most("settling", l.Settling, settling)
 	return list
 }
 

@@ -20,16 +20,9 @@ overwrite a file.`,
 		Example: "  midrail new front-end.toml",
 		Args:    exactly(1),
 		RunE: func(_ *cobra.Command, args []string) error {
-			f, err := os.OpenFile(args[0], os.O_WRONLY|os.O_CREATE|os.O_EXCL, 0o666)
-			if errors.Is(err, fs.ErrExist) {
-				return usageError{fmt.Errorf("%s is there already; name another file, or move it away", args[0])}
-			}
-			if err != nil {
+			write := func(f *os.File) error { _, err := f.WriteString(chain.Starter()); return err }
+			if err := writeNew(args[0], write); err != nil {
 				return err
-			}
-			_, err = f.WriteString(chain.Starter())
-			if err := errors.Join(err, f.Close()); err != nil {
-				return errors.Join(err, os.Remove(args[0]))
 			}
 			fmt.Fprintf(s.out, "wrote %s; next: midrail run %[1]s RECORDING.wav\n", args[0])
 			return nil
@@ -45,4 +38,19 @@ func exactly(n int) cobra.PositionalArgs {
 		}
 		return nil
 	}
+}
+
+// writeNew writes a file that must not exist yet. Where writing fails, nothing is left.
+func writeNew(path string, write func(*os.File) error) error {
+	f, err := os.OpenFile(path, os.O_WRONLY|os.O_CREATE|os.O_EXCL, 0o666)
+	if errors.Is(err, fs.ErrExist) {
+		return usageError{fmt.Errorf("%s is there already; name another file, or move it away", path)}
+	}
+	if err != nil {
+		return err
+	}
+	if err := errors.Join(write(f), f.Close()); err != nil {
+		return errors.Join(err, os.Remove(path))
+	}
+	return nil
 }

@@ -13,6 +13,8 @@ import (
 	"github.com/spf13/cobra"
 
 	"midrail/chain"
+	"midrail/chain/circuit"
+	"midrail/cmd/report"
 	"midrail/signals"
 	"midrail/signals/tone"
 	"midrail/signals/wav"
@@ -62,7 +64,7 @@ Caution: the layers can be loud; start with the volume low.`,
 
 // recording is a track of the user's, or the demo's.
 type recording struct {
-	name string                          // as told to people
+	name string // as told to people
 	open func() (signals.Track, error)
 	demo bool
 }
@@ -87,11 +89,39 @@ func run(ctx context.Context, s streams, f runFlags, args []string) error {
 	if err != nil {
 		return err
 	}
+	for _, w := range c.Warnings {
+		fmt.Fprintln(s.err, "warning:", w)
+	}
+	n := circuit.New(c)
+	if err := stable(n); err != nil {
+		return err
+	}
 	jobs, err := jobsOf(c, f, args)
 	if err != nil {
 		return err
 	}
-	_ = jobs
+	if f.json && len(jobs) > 1 {
+		return usageError{errors.New("--json takes one track")}
+	}
+	broken := false
+	for _, j := range jobs {
+		result, err := execute(ctx, s, f, n, j)
+		if err != nil {
+			return err
+		}
+		broken = broken || !result.holds()
+		if f.json {
+			err = report.WriteJSON(s.out, result.run)
+		} else {
+			err = s.tell(result)
+		}
+		if err != nil {
+			return err
+		}
+	}
+	if broken {
+		return limitsBroken
+	}
 	return nil
 }
 
