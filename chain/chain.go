@@ -1,6 +1,8 @@
 package chain
 
 import (
+	"slices"
+
 	"midrail/chain/amplifier"
 )
 
@@ -195,4 +197,80 @@ type Limits struct {
 type Droop struct {
 	At  float64 // Hz
 	Max float64 // dB
+}
+
+// StageNamed returns the stage of that name, or nil.
+func (c *Chain) StageNamed(name string) *Stage {
+	for i := range c.Stages {
+		if c.Stages[i].Name == name {
+			return &c.Stages[i]
+		}
+	}
+	return nil
+}
+
+// InputNamed returns the input of that name, or nil.
+func (c *Chain) InputNamed(name string) *Input {
+	for i := range c.Inputs {
+		if c.Inputs[i].Name == name {
+			return &c.Inputs[i]
+		}
+	}
+	return nil
+}
+
+// BiasNamed returns the bias of that name, or nil.
+func (c *Chain) BiasNamed(name string) *Bias {
+	for i := range c.Biases {
+		if c.Biases[i].Name == name {
+			return &c.Biases[i]
+		}
+	}
+	return nil
+}
+
+// AmplifierNamed returns the amplifier of that name, or nil.
+func (c *Chain) AmplifierNamed(name string) *Amplifier {
+	for i := range c.Amplifiers {
+		if c.Amplifiers[i].Name == name {
+			return &c.Amplifiers[i]
+		}
+	}
+	return nil
+}
+
+// Parts returns every component of the chain in the order of the file. One that a --set added comes with the table it
+// was added to.
+func (c *Chain) Parts() []Part {
+	var parts []Part
+	add := func(optional *Part) {
+		if optional != nil {
+			parts = append(parts, *optional)
+		}
+	}
+	for i := range c.Biases {
+		b := &c.Biases[i]
+		parts = append(parts, b.Top, b.Bottom)
+		add(b.Bypass)
+	}
+	for i := range c.Inputs {
+		in := &c.Inputs[i]
+		if in.Kind != Electret {
+			continue
+		}
+		parts = append(parts, in.Load)
+		if f := in.SupplyFilter; f != nil {
+			parts = append(parts, f.R, f.C)
+		}
+	}
+	for i := range c.Stages {
+		s := &c.Stages[i]
+		for _, l := range s.Legs {
+			parts = append(parts, l.R)
+			add(l.C)
+		}
+		parts = append(parts, s.Parts...)
+	}
+	slices.SortStableFunc(parts, func(a, b Part) int { return a.Pos.compare(b.Pos) })
+	return parts
 }

@@ -2,183 +2,186 @@ package chain
 
 import (
 	"fmt"
+	"slices"
 	"strings"
+	"unicode"
+	"unicode/utf8"
 )
 
-// StageNamed returns the stage of that name, or nil.
-func (c *Chain) StageNamed(name string) *Stage {
-	for i := range c.Stages {
-		if c.Stages[i].Name == name {
-			return &c.Stages[i]
-		}
-	}
-	return nil
+// What names are of.
+const (
+	anInput      = "input"
+	aStage       = "stage"
+	aBias        = "bias"
+	anAmplifier  = "amplifier"
+	longestName  = 200 // runes
+	inTheirOrder = "inputs, stages, biases and amplifiers share one set of names"
+)
+
+// given is a name that the file gives to something.
+type given struct {
+	name, thing string
+	at          place
 }
 
-// InputNamed returns the input of that name, or nil.
-func (c *Chain) InputNamed(name string) *Input {
-	for i := range c.Inputs {
-		if c.Inputs[i].Name == name {
-			return &c.Inputs[i]
-		}
-	}
-	return nil
+// reference is a use of a name.
+type reference struct {
+	at     place
+	who    string // as faults tell it
+	key    string
+	name   string
+	words  []string // what it may be that is no name
+	things []string // what the name may be of
 }
 
-// BiasNamed returns the bias of that name, or nil.
-func (c *Chain) BiasNamed(name string) *Bias {
-	for i := range c.Biases {
-		if c.Biases[i].Name == name {
-			return &c.Biases[i]
-		}
+// give notes a name, and tells of one that cannot be.
+func (r *reader) give(name, thing string, at place) {
+	switch {
+	case name == "":
+		r.fault(at, "the name is empty", "give it one")
+	case utf8.RuneCountInString(name) > longestName:
+		r.fault(at, fmt.Sprintf("the name %q is longer than %d characters", short(name), longestName), "shorten it")
+	case strings.ContainsAny(name, ".=") || strings.ContainsFunc(name, unicode.IsControl):
+		r.fault(at, fmt.Sprintf("the name %q has a point, an equals sign or a control character in it", short(name)), "take it out")
+	case strings.TrimSpace(name) != name:
+		r.fault(at, fmt.Sprintf("the name %q begins or ends with a space", short(name)), "take it out")
+	case slices.Contains([]string{"supply", "ground", "mix", "conditions", "converter", "limits"}, name):
+		r.fault(at, fmt.Sprintf("the name %q means something already", name), "choose another")
 	}
-	return nil
-}
-
-// AmplifierNamed returns the amplifier of that name, or nil.
-func (c *Chain) AmplifierNamed(name string) *Amplifier {
-	for i := range c.Amplifiers {
-		if c.Amplifiers[i].Name == name {
-			return &c.Amplifiers[i]
-		}
-	}
-	return nil
-}
-
-// crossCheck tells of names that do not go together.
-func (r *reader) crossCheck(c *Chain) {
-	r.uniqueNames(c)
-	used := map[string]bool{}
-	var sound, biases, amplifiers []string
-	for i := range c.Inputs {
-		sound = append(sound, c.Inputs[i].Name)
-	}
-	for i := range c.Stages {
-		sound = append(sound, c.Stages[i].Name)
-	}
-	for i := range c.Biases {
-		biases = append(biases, c.Biases[i].Name)
-	}
-	for i := range c.Amplifiers {
-		amplifiers = append(amplifiers, c.Amplifiers[i].Name)
-	}
-	refer := func(pos Pos, who, what, name string, list []string) {
-		used[name] = true
-		if name != "" && !contains(list, name) {
-			r.fault(pos, "", fmt.Sprintf("%s: there is no %s %q", who, what, short(name)), suggest(name, list, "the names are "+strings.Join(list, ", ")))
-		}
-	}
-	for i := range c.Biases {
-		b := &c.Biases[i]
-		refer(b.Pos, fmt.Sprintf("bias %q", b.Name), "amplifier", b.Buffer, amplifiers)
-	}
-	for i := range c.Stages {
-		s := &c.Stages[i]
-		who := fmt.Sprintf("stage %q", s.Name)
-		for _, f := range s.From {
-			refer(s.Pos, who, "input or stage", f, sound)
-		}
-		refer(s.Pos, who, "amplifier", s.Amplifier, amplifiers)
-		refer(s.Pos, who, "bias", s.Bias, biases)
-	}
-	refer(c.Converter.Pos, "[converter]", "input or stage", c.Converter.From, sound)
-	if c.Converter.SharesWith != "ground" {
-		refer(c.Converter.Pos, "[converter]", "input or stage to share with", c.Converter.SharesWith, sound)
-	}
-	for i := range c.Interferers {
-		x := &c.Interferers[i]
-		if x.Into != "supply" {
-			var inputs []string
-			for k := range c.Inputs {
-				inputs = append(inputs, c.Inputs[k].Name)
-			}
-			refer(x.Pos, "[[interferer]]", "input", x.Into, append(inputs, "supply"))
-		}
-	}
-	r.unused(c, used)
-	if len(r.faults) == 0 {
-		r.cycles(c)
-	}
-}
-
-func (r *reader) uniqueNames(c *Chain) {
-	seen := map[string]string{}
-	add := func(name, what string, pos Pos) {
-		if before, there := seen[name]; there {
-			r.fault(pos, "", fmt.Sprintf("the name %q is that of %s already", name, before), "names are unique over inputs, stages, biases and amplifiers; choose another")
-		}
-		seen[name] = what
-	}
-	for i := range c.Biases {
-		add(c.Biases[i].Name, "a bias", c.Biases[i].Pos)
-	}
-	for i := range c.Amplifiers {
-		add(c.Amplifiers[i].Name, "an amplifier", c.Amplifiers[i].Pos)
-	}
-	for i := range c.Inputs {
-		add(c.Inputs[i].Name, "an input", c.Inputs[i].Pos)
-	}
-	for i := range c.Stages {
-		add(c.Stages[i].Name, "a stage", c.Stages[i].Pos)
-	}
-}
-
-func (r *reader) unused(c *Chain, used map[string]bool) {
-	tell := func(name, what, remedy string, pos Pos) {
-		if !used[name] {
-			r.fault(pos, "", fmt.Sprintf("nothing uses %s %q", what, name), remedy)
-		}
-	}
-	for i := range c.Biases {
-		tell(c.Biases[i].Name, "bias", "take it out, or give it to a stage", c.Biases[i].Pos)
-	}
-	for i := range c.Amplifiers {
-		tell(c.Amplifiers[i].Name, "amplifier", "take it out, or give it to a stage", c.Amplifiers[i].Pos)
-	}
-	for i := range c.Inputs {
-		tell(c.Inputs[i].Name, "input", "take it out, or let a stage come from it", c.Inputs[i].Pos)
-	}
-	for i := range c.Stages {
-		tell(c.Stages[i].Name, "stage", "take it out, or let a stage or the converter come from it", c.Stages[i].Pos)
-	}
-}
-
-// cycles tells of stages that drive themselves. Where there is none, every stage leads back to an input.
-func (r *reader) cycles(c *Chain) {
-	const (
-		open = 1
-		shut = 2
-	)
-	state := map[string]int{}
-	var path []string
-	var visit func(name string) bool
-	visit = func(name string) bool {
-		s := c.StageNamed(name)
-		if s == nil || state[name] == shut {
-			return false
-		}
-		if state[name] == open {
-			for path[0] != name {
-				path = path[1:]
-			}
-			r.fault(s.Pos, "", fmt.Sprintf("stages go round in a circle: %s", strings.Join(append(path, name), " → ")), "a stage comes from an input or an earlier stage")
-			return true
-		}
-		state[name] = open
-		path = append(path, name)
-		for _, from := range s.From {
-			if visit(from) {
-				return true
-			}
-		}
-		path = path[:len(path)-1]
-		state[name] = shut
-		return false
-	}
-	for i := range c.Stages {
-		path = path[:0]
-		if visit(c.Stages[i].Name) {
+	for _, other := range r.names {
+		if other.name == name {
+			r.fault(at, fmt.Sprintf("the name %q is that of %s already", short(name), article(other.thing)), inTheirOrder+"; choose another")
+			r.unsure = true
 			return
 		}
+	}
+	r.names = append(r.names, given{name, thing, at})
+}
+
+func article(thing string) string {
+	if thing == anInput || thing == anAmplifier {
+		return "an " + thing
+	}
+	return "a " + thing
+}
+
+// refer reads a name of one of the things, or one of the words. It returns "" where there is none.
+func (t *table) refer(key string, need Need, words []string, things ...string) string {
+	e := t.find(key, need)
+	if e == nil {
+		t.unsure = t.unsure || need == Must
+		return ""
+	}
+	if e.shape != textShape {
+		t.wrong(e, fmt.Sprintf("%s must be a name, not %s", key, e.shape), "put it in quotes")
+		t.unsure = true
+		return ""
+	}
+	t.references = append(t.references, reference{at: e.node.at, who: t.name, key: key, name: e.text, words: words, things: things})
+	return e.text
+}
+
+// checkNames tells of names that are used and not given, given and not used, and of stages that drive themselves.
+func (r *reader) checkNames(c *Chain) {
+	for _, ref := range r.references {
+		r.resolve(ref)
+	}
+	r.cycles(c)
+	if r.unsure {
+		return
+	}
+	heard := c.heard()
+	for _, g := range r.names {
+		used := slices.ContainsFunc(r.references, func(ref reference) bool { return ref.name == g.name })
+		switch {
+		case g.thing == anInput && !heard[g.name]:
+			r.fault(g.at, fmt.Sprintf("input %q does not lead to the converter", short(g.name)), "take it out, or let a stage come from it")
+		case g.thing == aStage && !heard[g.name]:
+			r.fault(g.at, fmt.Sprintf("stage %q does not lead to the converter", short(g.name)), "take it out, or let another stage or the converter come from it")
+		case (g.thing == aBias || g.thing == anAmplifier) && !used:
+			r.fault(g.at, fmt.Sprintf("nothing uses %s %q", g.thing, short(g.name)), "take it out")
+		}
+	}
+}
+
+// resolve tells of a reference to something that is not there.
+func (r *reader) resolve(ref reference) {
+	if slices.Contains(ref.words, ref.name) {
+		return
+	}
+	could := slices.Clone(ref.words)
+	what := ""
+	for _, g := range r.names {
+		if slices.Contains(ref.things, g.thing) {
+			could = append(could, g.name)
+		}
+		if g.name == ref.name {
+			what = g.thing
+		}
+	}
+	if slices.Contains(ref.things, what) {
+		return
+	}
+	r.unsure = true
+	wanted := strings.Join(ref.things, " or ")
+	otherwise := "there is none yet; add one"
+	if len(could) > 0 {
+		otherwise = "choose one of " + strings.Join(could[:min(len(could), 10)], ", ")
+	}
+	if what != "" {
+		r.fault(ref.at, fmt.Sprintf("%s: %s must be %s, and %q is %s", ref.who, ref.key, article(wanted), short(ref.name), article(what)), otherwise)
+		return
+	}
+	if len(r.faults) < mostFaults { // looking for near names takes its time
+		otherwise = suggest(ref.name, could, otherwise)
+	}
+	r.fault(ref.at, fmt.Sprintf("%s: there is no %s %q", ref.who, wanted, short(ref.name)), otherwise)
+}
+
+// heard returns the inputs and stages that lead to the converter, the sources that a select does not pick included.
+func (c *Chain) heard() map[string]bool {
+	heard := map[string]bool{}
+	var visit func(name string)
+	visit = func(name string) {
+		if heard[name] {
+			return
+		}
+		heard[name] = true
+		if s := c.StageNamed(name); s != nil {
+			for _, from := range s.From {
+				visit(from)
+			}
+		}
+	}
+	visit(c.Converter.From)
+	visit(c.Converter.SharesWith)
+	return heard
+}
+
+// cycles tells of stages that drive themselves. Where there are none, every stage leads back to an input.
+func (r *reader) cycles(c *Chain) {
+	var path []string
+	done := map[string]bool{}
+	var visit func(name string)
+	visit = func(name string) {
+		s := c.StageNamed(name)
+		if s == nil || done[name] {
+			return
+		}
+		if i := slices.Index(path, name); i >= 0 {
+			round := append(slices.Clone(path[i:]), name)
+			r.fault(place{pos: s.Pos}, fmt.Sprintf("stages go round in a circle: %s", strings.Join(round, " → ")), "let each come from an input or from a stage nearer to one")
+			r.unsure = true
+			return
+		}
+		path = append(path, name)
+		for _, from := range s.From {
+			visit(from)
+		}
+		path = path[:len(path)-1]
+		done[name] = true
+	}
+	for i := range c.Stages {
+		visit(c.Stages[i].Name)
 	}
 }

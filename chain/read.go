@@ -3,112 +3,96 @@ package chain
 import (
 	"fmt"
 	"math"
-	"sort"
+	"slices"
 	"strings"
-	"unicode/utf8"
 
 	"midrail/chain/amplifier"
 	"midrail/chain/quantity"
 )
 
 const (
-	// mostBytes is the largest chain file.
+	// mostBytes is the size of the largest chain file.
 	mostBytes = 1 << 20
-	// mostStages is the largest number of stages.
-	mostStages = 200
+	// mostOf is how many there may be of each: inputs, stages, biases, amplifiers, interferers, inputs of a stage.
+	// The circuit is solved as a whole, in time that grows with the cube of its size.
+	mostOf = 200
 	// mostFaults is how many faults are told at most.
 	mostFaults = 100
 )
 
-// Read reads a chain file; name is what faults call it. Each of set is a "NAME.key=value" that changes a value before
-// it is read. The error is of type [Faults]: all that is wrong, in the order of the file.
+// Read reads a chain file; name is what faults call it. Each of set is a "NAME.key=value" that gives a value before
+// the file is read, where NAME is that of an input, a stage, a bias or an amplifier, or one of the file's single
+// tables such as "supply"; "mix.voice.r=10k" is the leg of mix that comes from voice. A part keeps its ref and series.
+//
+// The chain is sound: every name is that of something, every stage leads from an input to the converter, and every
+// value is within its range. The error is of type [Faults], all that is wrong in the order of the file, up to a
+// hundred; those of a set come first. Of what is not TOML only the first fault is told.
 func Read(name string, data []byte, set []string) (*Chain, error) {
 	if len(data) > mostBytes {
-		return nil, Faults{{File: name, Text: "the file is larger than 1 MiB", Remedy: "a chain file has a few kilobytes; is this one?"}}
+		return nil, Faults{{File: name, Pos: Pos{1, 1}, Text: fmt.Sprintf("the file has more than %d bytes", mostBytes), Remedy: "is this a chain file?"}}
 	}
-	root, faults := parse(name, data)
-	if faults != nil {
-		return nil, faults
+	root, fault := parse(name, data)
+	if fault != nil {
+		return nil, Faults{*fault}
 	}
 	r := &reader{file: name}
 	for _, one := range set {
-		if f := root.set(one); f != nil {
-			r.faults = append(r.faults, *f)
+		if fault := root.set(one); fault != nil {
+			r.faults = append(r.faults, *fault)
 		}
 	}
-	c := &Chain{File: name}
-	r.chain(root, c)
-	if len(r.faults) == 0 {
-		r.crossCheck(c)
+	c := r.chain(root)
+	r.checkNames(c)
+	r.faults.sort()
+	r.warnings.sort()
+	if more := len(r.faults) - mostFaults; more > 0 {
+		last := r.faults[mostFaults-1]
+		r.faults = append(r.faults[:mostFaults], Fault{File: last.File, Pos: last.Pos, Text: fmt.Sprintf("and %d more faults from here on", more), Remedy: "mend the others first"})
 	}
 	if len(r.faults) > 0 {
-		sort.SliceStable(r.faults, func(i, j int) bool { return r.faults[i].before(r.faults[j]) })
-		if more := len(r.faults) - mostFaults; more > 0 {
-			r.faults = append(r.faults[:mostFaults], Fault{File: name, Text: fmt.Sprintf("and %d more faults", more), Remedy: "mend these first"})
-		}
 		return nil, r.faults
 	}
 	c.Warnings = r.warnings
 	return c, nil
 }
 
-func (f Fault) before(g Fault) bool {
-	if f.Pos.Line != g.Pos.Line {
-		return f.Pos.Line < g.Pos.Line
-	}
-	return f.Pos.Column < g.Pos.Column
-}
-
-func (r *reader) chain(root *node, c *Chain) {
+func (r *reader) chain(root *node) *Chain {
+	c := &Chain{File: r.file, Conditions: Conditions{Temperature: 298.15, NoiseFrom: 20}}
 	t := r.table(root, "the chain file")
 	c.Title, c.Notes = t.text("title", May), t.text("notes", May)
 	if s := t.sub("supply", Must); s != nil {
-		c.Supply = r.supply(s)
-	}
-	c.Conditions = Conditions{Temperature: 298.15, NoiseFrom: 20}
-	if s := t.sub("conditions", May); s != nil {
-		c.Conditions.Temperature = s.si("temperature", May, quantity.Temperature, 200, 500, 298.15)
-		c.Conditions.NoiseFrom = s.si("noise_from", May, quantity.Frequency, 1e-3, 1e5, 20)
+		c.Supply = Supply{Pos: s.node.at.pos, Voltage: s.si("voltage", Must, quantity.Voltage, 0.5, 60, 0)}
 		s.done()
 	}
-	for _, s := range t.subs("bias") {
-		c.Biases = append(c.Biases, r.bias(s))
+	if s := t.sub("conditions", May); s != nil {
+		c.Conditions.Temperature = s.si("temperature", May, quantity.Temperature, 200, 500, c.Conditions.Temperature)
+		c.Conditions.NoiseFrom = s.si("noise_from", May, quantity.Frequency, 1e-3, 1e5, c.Conditions.NoiseFrom)
+		s.done()
 	}
-	for _, s := range t.subs("amplifier") {
-		c.Amplifiers = append(c.Amplifiers, r.amplifier(s))
-	}
-	for _, s := range t.subs("input") {
-		c.Inputs = append(c.Inputs, r.input(s))
-	}
-	stages := t.list("stage")
-	if len(stages) > mostStages {
-		r.fault(stages[mostStages].node.pos, "", fmt.Sprintf("more than %d stages", mostStages), "split the chain")
-		stages = stages[:mostStages]
-	}
-	for _, s := range stages {
-		c.Stages = append(c.Stages, r.stage(s))
+	t.each("bias", func(name string, s *table) { c.Biases = append(c.Biases, s.bias(name)) })
+	t.each("amplifier", func(name string, s *table) { c.Amplifiers = append(c.Amplifiers, s.amplifier(name, c.Supply.Voltage)) })
+	t.each("input", func(name string, s *table) { c.Inputs = append(c.Inputs, s.input(name)) })
+	for _, s := range t.list("stage", May) {
+		if stage, ok := s.stage(); ok {
+			c.Stages = append(c.Stages, stage)
+		}
 	}
 	if s := t.sub("converter", Must); s != nil {
-		c.Converter = r.converter(s, c.Supply.Voltage)
+		c.Converter = s.converter(c.Supply.Voltage)
+	} else {
+		r.unsure = true
 	}
-	for _, s := range t.list("interferer") {
-		c.Interferers = append(c.Interferers, r.interferer(s, c))
+	for _, s := range t.list("interferer", May) {
+		c.Interferers = append(c.Interferers, s.interferer(c))
 	}
 	if s := t.sub("limits", May); s != nil {
-		c.Limits = r.limits(s)
+		c.Limits = s.limits()
 	}
-	if len(c.Inputs) == 0 && !contains(names(root.entries), "input") {
-		r.fault(Pos{1, 1}, "", "the chain has no input", "add [input.NAME]")
+	if !t.has("input") {
+		t.fault(root.at, "the chain file has no input", "add [input.NAME]")
 	}
 	t.done()
-}
-
-func names(entries []*entry) []string {
-	var list []string
-	for _, e := range entries {
-		list = append(list, e.key)
-	}
-	return list
+	return c
 }
 
 // sub returns the table of a key, or nil.
@@ -124,84 +108,73 @@ func (t *table) sub(key string, need Need) *table {
 	return t.table(e.node, "["+key+"]")
 }
 
-// subs returns the named tables of a key, as [key.NAME].
-func (t *table) subs(key string) []*table {
+// each reads the named tables [key.NAME].
+func (t *table) each(key string, read func(name string, s *table)) {
 	s := t.sub(key, May)
 	if s == nil {
-		return nil
+		t.unsure = t.unsure || t.has(key)
+		return
 	}
-	var list []*table
-	for _, e := range s.node.entries {
+	for i, e := range s.entries {
+		if i == mostOf {
+			t.tooMany(key, e.keyAt)
+			return
+		}
 		if e.shape != tableShape {
-			t.fault(e.pos, e.origin, fmt.Sprintf("%s.%s must be a table, not %s", key, short(e.key), e.shape), "write it as ["+key+".NAME]")
+			t.fault(e.keyAt, fmt.Sprintf("%s.%s must be a table, not %s", key, short(e.key), e.shape), "write it as ["+key+".NAME]")
+			t.unsure = true
 			continue
 		}
-		t.nameIsGood(e.key, e.pos)
-		e.node.pos = e.pos
-		one := t.table(e.node, fmt.Sprintf("%s %q", key, short(e.key)))
-		one.key = e.key
-		list = append(list, one)
+		t.give(e.key, key, e.keyAt)
+		read(e.key, t.table(e.node, fmt.Sprintf("%s %q", key, short(e.key))))
 	}
-	return list
 }
 
-// list returns the tables of a key, as [[key]].
-func (t *table) list(key string) []*table {
-	e := t.find(key, May)
+// list returns the tables [[key]].
+func (t *table) list(key string, need Need) []*table {
+	e := t.find(key, need)
 	if e == nil {
 		return nil
 	}
 	if e.shape != listShape {
 		t.wrong(e, fmt.Sprintf("%s must be a list of tables, not %s", key, e.shape), "write each as [["+key+"]]")
+		t.unsure = true
 		return nil
 	}
 	var list []*table
 	for i, item := range e.items {
+		if i == mostOf {
+			t.tooMany(key, item.at)
+			break
+		}
 		if item.shape != tableShape {
-			t.fault(item.pos, "", fmt.Sprintf("%s must be a list of tables", key), "write each as [["+key+"]]")
+			t.fault(item.at, fmt.Sprintf("%s must be a list of tables, not of %s", key, item.shape), "write each as [["+key+"]]")
+			t.unsure = true
 			continue
 		}
-		name := fmt.Sprintf("%s %d", key, i+1)
-		if n := item.get("name"); n != nil && n.shape == textShape && key == "stage" {
-			name = fmt.Sprintf("stage %q", short(n.text))
-		}
-		list = append(list, t.table(item, name))
+		list = append(list, t.table(item, fmt.Sprintf("%s %d", key, i+1)))
 	}
 	return list
 }
 
-func (r *reader) nameIsGood(name string, pos Pos) {
-	switch {
-	case name == "":
-		r.fault(pos, "", "a name is empty", "give it one")
-	case utf8.RuneCountInString(name) > longestName:
-		r.fault(pos, "", fmt.Sprintf("a name is longer than %d characters", longestName), "shorten it")
-	case strings.ContainsAny(name, ".=\n\r\t"):
-		r.fault(pos, "", fmt.Sprintf("the name %q has a point, an equals sign or a break in it", name), "take it out; --set needs it")
-	case name == "supply" || name == "ground" || name == "converter":
-		r.fault(pos, "", fmt.Sprintf("the name %q is taken", name), "choose another")
-	}
+func (t *table) tooMany(what string, at place) {
+	t.fault(at, fmt.Sprintf("there is more than %d of %s", mostOf, what), "split the chain")
+	t.unsure = true
 }
 
-func (r *reader) supply(t *table) Supply {
-	s := Supply{Pos: t.node.pos, Voltage: t.si("voltage", Must, quantity.Voltage, 0.5, 60, 3.3)}
-	t.done()
-	return s
-}
-
-func (r *reader) bias(t *table) Bias {
-	b := Bias{Name: t.key, Pos: t.node.pos}
-	b.Top = t.required(t.key, "top", Ohm)
-	b.Bottom = t.required(t.key, "bottom", Ohm)
-	b.Bypass = t.part(t.key, "bypass", Farad, May)
-	b.Buffer, _ = t.nameRef("buffer", May)
+func (t *table) bias(name string) Bias {
+	b := Bias{Name: name, Pos: t.node.at.pos}
+	b.Top = t.required(name, "top", Ohm)
+	b.Bottom = t.required(name, "bottom", Ohm)
+	b.Bypass = t.part(name, "bypass", Farad, May)
+	b.Buffer = t.refer("buffer", May, nil, anAmplifier)
 	t.done()
 	return b
 }
 
-func (r *reader) amplifier(t *table) Amplifier {
-	a := Amplifier{Name: t.key, Pos: t.node.pos}
-	class := t.choice("class", Must, amplifier.Classes()...)
+func (t *table) amplifier(name string, supply float64) Amplifier {
+	a := Amplifier{Name: name, Pos: t.node.at.pos}
+	class, ok := t.choice("class", Must, "", amplifier.Classes()...)
 	a.Model, _ = amplifier.Class(class)
 	m := &a.Model
 	for _, k := range []struct {
@@ -233,108 +206,124 @@ func (r *reader) amplifier(t *table) Amplifier {
 		}
 	}
 	t.done()
+	if low, high := m.SwingLow, supply-m.SwingHigh; ok && supply > 0 && low >= high {
+		t.fault(t.node.at, fmt.Sprintf("%s has no room to swing: on the supply of %s it reaches from %s to %s", t.name,
+			quantity.Format(quantity.Voltage, supply), quantity.Format(quantity.Voltage, low), quantity.Format(quantity.Voltage, high)),
+			"take another class, or give swing_high and swing_low")
+	}
 	return a
 }
 
-func (r *reader) input(t *table) Input {
-	in := Input{Name: t.key, Pos: t.node.pos, FullScale: 1, MaximumLevel: math.Inf(1)}
-	in.Kind = InputKind(t.choice("kind", Must, string(Line), string(Electret), string(Microphone)))
-	in.Channel = t.channel()
-	if in.Kind == Line {
-		v, ok := t.quantity("full_scale", Must, quantity.Level, 1e-6, 100)
-		if ok {
-			in.FullScale, in.FullScaleUnit = v.SI, v.Unit
-		}
-		in.SourceResistance = t.si("source_resistance", May, quantity.Resistance, 0, 1e9, 0)
-		t.done()
-		return in
+// pascals returns the pressure of a sound level in dB SPL.
+func pascals(db float64) float64 { return quantity.Hearing * math.Pow(10, db/20) }
+
+func (t *table) input(name string) Input {
+	in := Input{Name: name, Pos: t.node.at.pos}
+	kind, ok := t.choice("kind", Must, "", string(Line), string(Electret), string(Microphone))
+	if !ok {
+		return in // what its keys may be is not known
 	}
-	if v, ok := t.quantity("full_scale", Must, quantity.SoundLevel, 1e-5, 1e4); ok {
+	in.Kind = InputKind(kind)
+	in.Channel = t.channel()
+	in.OutputResistance, in.MaximumLevel = math.Inf(1), math.Inf(1)
+	level, low, high := quantity.SoundLevel, pascals(0), pascals(174)
+	if in.Kind == Line {
+		level, low, high = quantity.Level, 1e-6, 100
+	}
+	if v, ok := t.quantity("full_scale", Must, level, low, high); ok {
 		in.FullScale, in.FullScaleUnit = v.SI, v.Unit
 	}
-	in.Sensitivity = t.si("sensitivity", Must, quantity.Sensitivity, 1e-6, 10, 1)
-	in.SelfNoise = t.selfNoise()
-	if in.Kind == Microphone {
+	if in.Kind != Line {
+		in.Sensitivity = t.si("sensitivity", Must, quantity.Sensitivity, 1e-6, 10, 0)
+		in.SelfNoise = t.selfNoise()
+	}
+	switch in.Kind {
+	case Line:
+		in.SourceResistance = t.si("source_resistance", May, quantity.Resistance, 0, 1e9, 0)
+	case Microphone:
 		in.OutputResistance = t.si("output_resistance", May, quantity.Resistance, 0, 1e9, 0)
 		in.Rest = t.si("rest", May, quantity.Voltage, 0, 60, 0)
-		in.MaximumLevel = t.si("maximum_level", May, quantity.SoundLevel, 1e-3, 1e5, math.Inf(1))
-		t.done()
-		return in
-	}
-	in.RatedLoad = t.si("rated_load", Must, quantity.Resistance, 10, 1e6, 1)
-	in.Load = t.required(t.key, "load", Ohm)
-	in.Current = t.si("current", Must, quantity.Current, 1e-6, 1e-2, 1)
-	in.OutputResistance = t.si("output_resistance", May, quantity.Resistance, 10, 1e9, math.Inf(1))
-	in.MinimumVoltage = t.si("minimum_voltage", May, quantity.Voltage, 0, 20, 0)
-	if f := t.sub("supply_filter", May); f != nil {
-		in.SupplyFilter = &SupplyFilter{R: f.required(t.key+".supply_filter", "r", Ohm), C: f.required(t.key+".supply_filter", "c", Farad)}
-		f.done()
+		in.MaximumLevel = t.si("maximum_level", May, quantity.SoundLevel, pascals(40), pascals(194), in.MaximumLevel)
+	case Electret:
+		in.RatedLoad = t.si("rated_load", Must, quantity.Resistance, 10, 1e6, 0)
+		in.Load = t.required(name, "load", Ohm)
+		in.Current = t.si("current", Must, quantity.Current, 1e-6, 1e-2, 0)
+		in.OutputResistance = t.si("output_resistance", May, quantity.Resistance, 10, 1e9, in.OutputResistance)
+		in.MinimumVoltage = t.si("minimum_voltage", May, quantity.Voltage, 0, 20, 0)
+		if f := t.sub("supply_filter", May); f != nil {
+			f.name = t.name + ", supply_filter"
+			in.SupplyFilter = &SupplyFilter{R: f.required(name+".supply_filter", "r", Ohm), C: f.required(name+".supply_filter", "c", Farad)}
+			f.done()
+		}
 	}
 	t.done()
 	return in
 }
 
-// channel reads "mix" or a number from 1.
+// channel reads "mix", which is 0 and what an absent one stands for, or a number from 1.
 func (t *table) channel() int {
-	e := t.node.get("channel")
-	if e != nil && e.shape == textShape && e.text == "mix" {
-		t.known = append(t.known, "channel")
+	if e := t.get("channel"); e != nil && e.shape == textShape && e.node.at.set == "" && e.text != "mix" {
+		t.find("channel", May)
+		t.wrong(e, fmt.Sprintf("channel: %q is no channel", short(e.text)), `write 1, 2, … without quotes, or "mix"`)
+		return 0
+	}
+	if e := t.get("channel"); e != nil && e.text == "mix" {
+		t.find("channel", May)
 		return 0
 	}
 	return t.integer("channel", May, 1, 64, 0)
 }
 
-// selfNoise reads self_noise, or snr against 94 dB SPL (1 Pa).
+// selfNoise reads self_noise, or snr, which is against a sound of 94 dB SPL.
 func (t *table) selfNoise() float64 {
-	noise := t.si("self_noise", May, quantity.SoundLevel, 1e-7, 1e3, 0)
-	e := t.node.get("snr")
-	snr := t.si("snr", May, quantity.Decibels, 1, 150, 0)
-	if e == nil || snr == 0 {
-		return noise
+	noise := t.si("self_noise", May, quantity.SoundLevel, pascals(-40), pascals(120), 0)
+	snr, ok := t.quantity("snr", May, quantity.Decibels, 1, 130)
+	if t.has("self_noise") && t.has("snr") {
+		t.fault(t.get("snr").keyAt, t.name+" has both self_noise and snr", "keep one")
 	}
-	if t.node.get("self_noise") != nil {
-		t.wrong(e, t.name+" has both self_noise and snr", "keep one")
+	if ok {
+		return pascals(94 - snr.SI)
 	}
-	return quantity.Hearing * math.Pow(10, (94-snr)/20)
+	return noise
 }
 
-func (r *reader) stage(t *table) Stage {
-	s := Stage{Pos: t.node.pos, Name: t.text("name", Must)}
-	if e := t.node.get("name"); e != nil {
-		r.nameIsGood(s.Name, e.node.pos)
+// stage reads a stage. It reports false where what its keys may be is not known.
+func (t *table) stage() (s Stage, ok bool) {
+	s = Stage{Pos: t.node.at.pos, Name: t.text("name", Must)}
+	if e := t.get("name"); s.Name != "" {
+		t.name = fmt.Sprintf("stage %q", short(s.Name))
+		t.give(s.Name, aStage, e.node.at)
+	} else if t.unsure = true; e != nil && e.shape == textShape {
+		t.wrong(e, "the name is empty", "give it one")
 	}
 	var all []string
 	for _, k := range Kinds() {
 		all = append(all, k.Name)
 	}
-	e := t.find("kind", Must)
-	if e == nil {
-		s.Kind = &Kind{}
-		return s
+	kind, ok := t.choice("kind", Must, "", all...)
+	if !ok {
+		t.unsure = true
+		return s, false
 	}
-	if s.Kind = kindNamed(e.text); s.Kind == nil || e.shape != textShape {
-		t.wrong(e, fmt.Sprintf("%s: there is no stage kind %q", t.name, short(e.text)), suggest(e.text, all, "the kinds are "+strings.Join(all, ", ")))
-		s.Kind = &Kind{}
-		return s
-	}
+	s.Kind = KindNamed(kind)
 	k := s.Kind
+	t.about = fmt.Sprintf("%s is %s", k.Name, k.Connection)
 	switch {
 	case k.Legs:
-		s.Legs = r.legs(t, s.Name)
+		s.Legs = t.legs(s.Name)
 		for _, l := range s.Legs {
 			s.From = append(s.From, l.From)
 		}
 	case k.Pick:
 		s.From, s.Pick = t.pick()
 	default:
-		from, _ := t.nameRef("from", Must)
-		s.From = []string{from}
+		s.From = []string{t.refer("from", Must, nil, anInput, aStage)}
 	}
 	if k.Amplifier != No {
-		s.Amplifier, _ = t.nameRef("amplifier", k.Amplifier)
+		s.Amplifier = t.refer("amplifier", k.Amplifier, nil, anAmplifier)
 	}
 	if k.Bias != No {
-		s.Bias, _ = t.nameRef("bias", k.Bias)
+		s.Bias = t.refer("bias", k.Bias, nil, aBias)
 	}
 	for _, key := range k.Parts {
 		need := Must
@@ -346,37 +335,29 @@ func (r *reader) stage(t *table) Stage {
 		}
 	}
 	if k.Leg {
-		s.Leg = t.choice("leg", May, "ground", "bias")
+		s.Leg, _ = t.choice("leg", May, "ground", "ground", "bias")
 	}
 	if k.To {
-		s.To = t.choice("to", May, "ground", "bias")
+		s.To, _ = t.choice("to", May, "ground", "ground", "bias")
 	}
 	t.done()
-	r.stageIsWhole(t, &s)
-	return s
+	t.partsGoTogether(&s)
+	return s, true
 }
 
 // legs reads the [[stage.input]] of a stage.
-func (r *reader) legs(t *table, stage string) []Leg {
-	e := t.find("input", Must)
-	if e == nil {
-		return nil
-	}
-	if e.shape != listShape || len(e.items) == 0 {
-		t.wrong(e, t.name+": input must be a list of tables", "write each as [[stage.input]]")
-		return nil
+func (t *table) legs(stage string) []Leg {
+	tables := t.list("input", Must)
+	if e := t.get("input"); e != nil && e.shape == listShape && len(e.items) == 0 {
+		t.wrong(e, t.name+" has no input", "add [[stage.input]]")
 	}
 	var legs []Leg
 	seen := map[string]bool{}
-	for i, item := range e.items {
-		if item.shape != tableShape {
-			t.fault(item.pos, "", t.name+": input must be a list of tables", "write each as [[stage.input]]")
-			continue
-		}
-		in := r.table(item, fmt.Sprintf("%s, input %d", t.name, i+1))
-		from, pos := in.nameRef("from", Must)
-		if seen[from] && from != "" {
-			r.fault(pos, "", fmt.Sprintf("%s takes %q twice", t.name, short(from)), "take one leg out")
+	for _, in := range tables {
+		in.name = t.name + ", " + in.name
+		from := in.refer("from", Must, nil, anInput, aStage)
+		if from != "" && seen[from] {
+			in.wrong(in.get("from"), fmt.Sprintf("%s takes %q twice", t.name, short(from)), "take one leg out")
 		}
 		seen[from] = true
 		owner := stage + "." + from
@@ -389,126 +370,208 @@ func (r *reader) legs(t *table, stage string) []Leg {
 // pick reads from = […] and pick of a select.
 func (t *table) pick() (from []string, pick string) {
 	e := t.find("from", Must)
-	pick, pos := t.nameRef("pick", Must)
+	p := t.find("pick", Must)
 	if e == nil {
-		return nil, pick
+		t.unsure = true
+		return nil, ""
 	}
 	if e.shape != listShape || len(e.items) == 0 {
-		t.wrong(e, t.name+": from must be a list of names", `write it as from = ["one", "other"]`)
-		return nil, pick
+		t.wrong(e, "from must be a list of names", `write it as from = ["one", "other"]`)
+		t.unsure = true
+		return nil, ""
 	}
-	for _, item := range e.items {
+	for i, item := range e.items {
+		if i == mostOf {
+			t.tooMany("from", item.at)
+			break
+		}
 		if item.shape != textShape {
-			t.fault(item.pos, "", t.name+": from must be a list of names", "put each in quotes")
+			t.fault(item.at, fmt.Sprintf("from must be a list of names, not of %s", item.shape), "put each in quotes")
+			t.unsure = true
 			continue
 		}
+		if slices.Contains(from, item.text) {
+			t.fault(item.at, fmt.Sprintf("%s takes %q twice", t.name, short(item.text)), "take one out")
+		}
 		from = append(from, item.text)
+		t.references = append(t.references, reference{at: item.at, who: t.name, key: "from", name: item.text, things: []string{anInput, aStage}})
 	}
-	if pick != "" && !contains(from, pick) {
-		origin := t.node.get("pick").origin
-		t.fault(pos, origin, fmt.Sprintf("%s picks %q, which is not in its from", t.name, short(pick)), suggest(pick, from, "pick one of its from"))
+	if p != nil && (p.shape != textShape || !slices.Contains(from, p.text)) {
+		t.wrong(p, fmt.Sprintf("%s picks what is not in its from", t.name), suggest(p.text, from, "pick one of "+short(strings.Join(from, ", "))))
+		return from, ""
+	}
+	if p != nil {
+		pick = p.text
 	}
 	return from, pick
 }
 
-// stageIsWhole tells of parts that need each other.
-func (r *reader) stageIsWhole(t *table, s *Stage) {
-	has := func(key string) bool { _, ok := s.Part(key); return ok }
-	missing := func(text, remedy string) { r.fault(s.Pos, "", t.name+" "+text, remedy) }
-	if has("r_a") != has("r_b") {
-		missing("has only one of r_a and r_b", "give both, or neither for a gain of 1")
-	}
-	for _, needs := range []struct {
-		it   bool
-		what string
-	}{{has("r_a"), "r_a ends"}, {has("r_bias"), "r_bias ends"}, {s.Leg == "bias", "its leg ends"}, {s.To == "bias", "it ends"}} {
-		if needs.it && s.Bias == "" && s.Kind.Bias == May {
-			missing("has no bias, on which "+needs.what, "add bias")
+// partsGoTogether tells of parts of a stage that need each other, and of a bias that nothing ends on.
+func (t *table) partsGoTogether(s *Stage) {
+	k := s.Kind
+	for _, pair := range [...][2]string{{"r_a", "r_b"}, {"r_b", "r_a"}} {
+		if t.has(pair[0]) && !t.has(pair[1]) && slices.Contains(t.known, pair[1]) {
+			t.fault(t.get(pair[0]).keyAt, fmt.Sprintf("%s has %s without %s", t.name, pair[0], pair[1]), "give both, or neither for a gain of 1")
 		}
 	}
-	if has("c_in") && !has("r_bias") && s.Kind.Bias == May {
-		missing("has a c_in but no r_bias, so its (+) input rests nowhere", "add r_bias, or take c_in out")
+	if k.Bias != May {
+		return
+	}
+	var could []string // what may end on the bias
+	ends := false
+	for _, p := range k.Parts {
+		if p.Key == "r_bias" || p.Key == "r_a" {
+			could = append(could, p.Key)
+			ends = t.endsOnBias(p.Key, t.has(p.Key)) || ends
+		}
+	}
+	if k.Leg {
+		could = append(could, `leg = "bias"`)
+		ends = t.endsOnBias("leg", s.Leg == "bias") || ends
+	}
+	if k.To {
+		could = append(could, `to = "bias"`)
+		ends = t.endsOnBias("to", s.To == "bias") || ends
+	}
+	if t.has("bias") && !ends {
+		t.fault(t.get("bias").keyAt, fmt.Sprintf("%s has a bias on which nothing ends", t.name), "take it out, or add "+strings.Join(could, " or "))
+	}
+	if t.has("c_in") && !t.has("r_bias") && slices.Contains(could, "r_bias") {
+		t.fault(t.get("c_in").keyAt, fmt.Sprintf("%s has c_in without r_bias, so that its (+) input rests nowhere", t.name), "add r_bias and a bias, or take c_in out")
 	}
 }
 
-func (r *reader) converter(t *table, supply float64) Converter {
-	cv := Converter{Pos: t.node.pos}
-	cv.From, _ = t.nameRef("from", Must)
-	rate, clock, divide := t.node.get("rate"), t.node.get("clock"), t.node.get("divide")
-	cv.Rate = t.si("rate", May, quantity.Frequency, 100, 10e6, 8000)
-	hz := t.si("clock", May, quantity.Frequency, 100, 1e10, 8e6)
-	by := t.si("divide", May, quantity.Ratio, 1, 1e9, 1000)
-	switch {
-	case rate != nil && (clock != nil || divide != nil):
-		t.wrong(rate, "the converter has both a rate and a clock", "keep the rate, or clock and divide")
-	case rate == nil && (clock == nil || divide == nil):
-		r.fault(t.node.pos, "", "the converter has no rate", "add rate, or clock and divide")
-	case rate == nil:
-		if cv.Rate = hz / by; cv.Rate < 100 || cv.Rate > 10e6 {
-			t.wrong(clock, fmt.Sprintf("clock/divide is %s, out of range, 100 Hz to 10 MHz", quantity.Format(quantity.Frequency, cv.Rate)), "check both")
-			cv.Rate = 8000
-		}
+// endsOnBias tells of a key that needs a bias where there is none, and returns does.
+func (t *table) endsOnBias(key string, does bool) bool {
+	if does && !t.has("bias") {
+		t.fault(t.get(key).keyAt, fmt.Sprintf("%s has no bias for its %s to end on", t.name, key), "add bias")
 	}
-	cv.Bits = t.integer("bits", Must, 1, 24, 10)
-	cv.Low = t.si("low", May, quantity.Voltage, -60, 60, 0)
-	if e := t.node.get("high"); e != nil && e.shape == textShape && e.text == "supply" {
-		t.known = append(t.known, "high")
-		cv.High, cv.HighIsSupply = supply, true
-	} else {
-		cv.High = t.si("high", Must, quantity.Voltage, -60, 60, cv.Low+1)
-	}
-	if span := cv.High - cv.Low; span < 1e-3 {
-		r.fault(t.node.pos, "", "the converter's high is not above its low", "check both")
-		cv.High = cv.Low + 1
-	}
+	return does
+}
+
+// Legal range of the converter's rate, in Hz.
+const leastRate, mostRate = 100, 10e6
+
+func (t *table) converter(supply float64) Converter {
+	cv := Converter{Pos: t.node.at.pos}
+	cv.From = t.refer("from", Must, nil, anInput, aStage)
+	cv.Rate = t.rate()
+	cv.Bits = t.integer("bits", Must, 1, 24, 24)
+	t.span(&cv, supply)
+
 	cv.SwitchResistance = t.si("switch_resistance", May, quantity.Resistance, 0, 1e6, 0)
 	cv.SamplingCapacitor = t.si("sampling_capacitor", May, quantity.Capacitance, 1e-15, 1e-6, 0)
 	cv.Acquisition = t.si("acquisition", May, quantity.Time, 1e-10, 1, 0)
 	cv.PinCapacitor = t.si("pin_capacitor", May, quantity.Capacitance, 1e-15, 1e-3, 0)
-	cv.SharesWith, _ = t.nameRef("shares_with", May)
-	if (cv.SamplingCapacitor > 0) != (cv.Acquisition > 0) {
-		r.fault(t.node.pos, "", "sampling_capacitor and acquisition go together", "give both, or neither")
-	}
-	if cv.Acquisition*cv.Rate > 1 {
-		t.wrong(t.node.get("acquisition"), "acquisition is longer than the time between two samples", "check it against the rate")
-	}
-	for _, key := range [...]string{"switch_resistance", "shares_with"} {
-		if e := t.node.get(key); e != nil && cv.SamplingCapacitor == 0 {
-			t.wrong(e, key+" does nothing without sampling_capacitor and acquisition", "add them, or take it out")
+	cv.SharesWith = t.refer("shares_with", May, []string{"ground"}, aStage)
+	for _, key := range [...]string{"switch_resistance", "acquisition", "shares_with"} {
+		if t.has(key) && !t.has("sampling_capacitor") {
+			t.fault(t.get(key).keyAt, key+" does nothing without sampling_capacitor", "add it, or take this out")
 		}
 	}
-	cv.ENOB = t.si("enob", May, quantity.Ratio, 1, float64(cv.Bits), 0)
-	cv.Jitter = t.si("jitter", May, quantity.Time, 0, 0.1/cv.Rate, 0)
+	if t.has("sampling_capacitor") && !t.has("acquisition") {
+		t.fault(t.get("sampling_capacitor").keyAt, "sampling_capacitor needs to know how long it charges", "add acquisition")
+	}
+	if cv.Rate > 0 && cv.Acquisition*cv.Rate > 1 {
+		t.wrong(t.get("acquisition"), fmt.Sprintf("acquisition takes longer than a sample, %s", quantity.Format(quantity.Time, 1/cv.Rate)), "check it against the rate")
+	}
+	cv.ENOB = t.number("enob", May, 1, float64(cv.Bits), 0)
+	cv.Jitter = t.si("jitter", May, quantity.Time, 0, 1e-3, 0)
 	t.done()
 	return cv
 }
 
-func (r *reader) interferer(t *table, c *Chain) Interferer {
-	x := Interferer{Pos: t.node.pos}
-	x.Into, _ = t.nameRef("into", Must)
-	x.Shape = t.choice("shape", May, "sine", "square", "noise")
-	least, need := 0.01, Must
-	if x.Shape == "noise" {
-		least, need = 0, May
-		x.Bandwidth = t.si("bandwidth", Must, quantity.Frequency, 1, 1e6, 1000)
+// rate reads the converter's rate, or clock and divide; 0 where it is wrong.
+func (t *table) rate() float64 {
+	rate := t.si("rate", May, quantity.Frequency, leastRate, mostRate, 0)
+	clock := t.si("clock", May, quantity.Frequency, leastRate, 1e10, 0)
+	divide := t.integer("divide", May, 1, 1e9, 0)
+	if t.has("rate") {
+		for _, key := range [...]string{"clock", "divide"} {
+			if t.has(key) {
+				t.fault(t.get(key).keyAt, fmt.Sprintf("%s has both rate and %s", t.name, key), "keep rate, or clock and divide")
+			}
+		}
+		return rate
 	}
-	x.Frequency = t.si("frequency", need, quantity.Frequency, least, 1e6, 0)
+	if !t.has("clock") || !t.has("divide") {
+		t.fault(t.node.at, t.name+" has no rate", "add rate, or clock and divide")
+		return 0
+	}
+	if clock == 0 || divide == 0 {
+		return 0
+	}
+	rate = clock / float64(divide)
+	if !(rate >= leastRate && rate <= mostRate) {
+		t.wrong(t.get("divide"), fmt.Sprintf("clock by divide makes a rate of %s, out of range, %s to %s", quantity.Format(quantity.Frequency, rate),
+			quantity.Format(quantity.Frequency, leastRate), quantity.Format(quantity.Frequency, mostRate)), "check both")
+		return 0
+	}
+	return rate
+}
+
+// span reads the converter's low and high.
+func (t *table) span(cv *Converter, supply float64) {
+	// leastSpan keeps a 24-bit step well above the smallest difference between voltages of some volts.
+	const leastSpan = 1e-3
+	low, lowOK := t.quantity("low", May, quantity.Voltage, -60, 60)
+	cv.Low = low.SI
+	e := t.get("high")
+	if e != nil && e.shape == textShape && e.text == "supply" {
+		t.find("high", Must)
+		cv.High, cv.HighIsSupply = supply, true
+	} else {
+		high, ok := t.quantity("high", Must, quantity.Voltage, -60, 60)
+		if !ok {
+			return
+		}
+		cv.High = high.SI
+	}
+	if (lowOK || !t.has("low")) && (!cv.HighIsSupply || supply > 0) && cv.High-cv.Low < leastSpan {
+		t.wrong(e, fmt.Sprintf("the converter's span is too small: low is %s and high %s", quantity.Format(quantity.Voltage, cv.Low), quantity.Format(quantity.Voltage, cv.High)),
+			"high is above low by "+quantity.Format(quantity.Voltage, leastSpan)+" or more")
+	}
+}
+
+func (t *table) interferer(c *Chain) Interferer {
+	x := Interferer{Pos: t.node.at.pos}
+	x.Into = t.refer("into", Must, []string{"supply"}, anInput)
+	x.Shape, _ = t.choice("shape", May, "sine", "sine", "square", "noise")
+	noise := x.Shape == "noise"
+	if noise {
+		x.Frequency = t.si("frequency", May, quantity.Frequency, 0, 1e7, 0)
+		x.Bandwidth = t.si("bandwidth", Must, quantity.Frequency, 1, 1e7, 0)
+		if x.Frequency > 0 && x.Bandwidth > 2*x.Frequency {
+			t.wrong(t.get("bandwidth"), "the noise goes below 0 Hz: bandwidth is more than twice its frequency, on which it is centred", "leave frequency out for noise from 0 Hz on")
+		}
+	} else {
+		x.Frequency = t.si("frequency", Must, quantity.Frequency, 0.01, 1e7, 0)
+	}
 	kind, low, high := quantity.Level, 1e-9, 60.
 	if in := c.InputNamed(x.Into); in != nil && in.Kind != Line {
-		kind, low, high = quantity.SoundLevel, 1e-7, 1e4
+		kind, low, high = quantity.SoundLevel, pascals(-40), pascals(174)
+	} else if x.Into != "supply" && (in == nil || in.Kind == "") {
+		t.find("level", Must) // what it is in is not known
+		t.done()
+		return x
 	}
 	if v, ok := t.quantity("level", Must, kind, low, high); ok {
-		// A square wave's RMS is its peak; a sine's is less.
-		x.Level = v.Peak()
-		if x.Shape == "noise" || x.Shape == "square" && v.Unit != "Vp" && v.Unit != "Vpp" {
+		// What is written as a peak is one whatever the shape. A square's RMS is its peak, too.
+		peak := v.Unit == "Vp" || v.Unit == "Vpp"
+		switch {
+		case noise && peak:
+			t.wrong(t.get("level"), "noise has no peak", `give its level as RMS, as in "2mVrms"`)
+		case noise, x.Shape == "square" && !peak:
 			x.Level = v.SI
+		default:
+			x.Level = v.Peak()
 		}
 	}
 	t.done()
 	return x
 }
 
-func (r *reader) limits(t *table) Limits {
+func (t *table) limits() Limits {
 	var l Limits
 	one := func(key string, kind quantity.Kind, low, high float64) *float64 {
 		if v, ok := t.quantity(key, May, kind, low, high); ok {
@@ -522,11 +585,12 @@ func (r *reader) limits(t *table) Limits {
 	l.Interference = one("interference", quantity.Decibels, -200, 20)
 	l.Noise = one("noise", quantity.Decibels, -200, 20)
 	l.Room = one("room", quantity.Decibels, -60, 100)
-	l.Settling = one("settling", quantity.Time, 1e-6, 1e4)
 	if d := t.sub("droop", May); d != nil {
-		l.Droop = &Droop{At: d.si("at", Must, quantity.Frequency, 0.1, 1e6, 1000), Max: d.si("max", Must, quantity.Decibels, 0, 100, 1)}
+		d.name = "[limits], droop"
+		l.Droop = &Droop{At: d.si("at", Must, quantity.Frequency, 0.1, 1e7, 0), Max: d.si("max", Must, quantity.Decibels, 0, 100, 0)}
 		d.done()
 	}
+	l.Settling = one("settling", quantity.Time, 1e-6, 1e4)
 	t.done()
 	return l
 }

@@ -3,7 +3,7 @@ package chain
 import (
 	"fmt"
 	"math"
-	"sort"
+	"slices"
 	"strconv"
 	"strings"
 
@@ -11,27 +11,36 @@ import (
 	"midrail/chain/quantity"
 )
 
-// reader gathers the faults of one file.
+// reader gathers the faults of one file, and the names that it gives and uses.
 type reader struct {
-	file     string
-	faults   Faults
-	warnings Faults
+	file       string
+	faults     Faults
+	warnings   Faults
+	names      []given
+	references []reference
+	// unsure is set where a name could not be read, so that what seems unused may well be used.
+	unsure bool
 }
 
-func (r *reader) fault(pos Pos, origin, text, remedy string) {
-	file := r.file
-	if origin != "" {
-		file, pos = origin, Pos{}
+func (r *reader) fault(at place, text, remedy string) {
+	r.faults = append(r.faults, r.told(at, text, remedy))
+}
+
+// told makes a fault, or a warning, of what was written at a place.
+func (r *reader) told(at place, text, remedy string) Fault {
+	f := Fault{File: r.file, Pos: at.pos, Text: text, Remedy: remedy}
+	if at.set != "" {
+		f.File, f.Pos = at.set, Pos{}
 	}
-	r.faults = append(r.faults, Fault{File: file, Pos: pos, Text: text, Remedy: remedy})
+	return f
 }
 
 // table reads the keys of one table. Each getter notes its key, so that what is left over is unknown.
 type table struct {
 	*reader
-	node  *node
-	name  string // as faults tell it: "[supply]", "stage \"filter\""
-	key   string // the name of a [key.NAME]
+	*node
+	name  string // as faults tell it: "[supply]", `stage "filter"`
+	about string // how the thing that it describes is connected; mostly ""
 	known []string
 }
 
@@ -40,36 +49,29 @@ func (r *reader) table(n *node, name string) *table { return &table{reader: r, n
 // find returns the entry of a key, or nil; where the key must be there its absence is a fault.
 func (t *table) find(key string, need Need) *entry {
 	t.known = append(t.known, key)
-	e := t.node.get(key)
+	e := t.get(key)
 	if e == nil && need == Must {
-		t.fault(t.node.pos, t.node.origin, fmt.Sprintf("%s has no %s", t.name, key), "add it")
+		remedy := "add it"
+		if t.about != "" {
+			remedy += ": " + t.about
+		}
+		t.fault(t.node.at, fmt.Sprintf("%s has no %s", t.name, key), remedy)
 	}
 	return e
 }
 
+func (t *table) has(key string) bool { return t.get(key) != nil }
+
 // wrong tells of a value that is not as it must be.
-func (t *table) wrong(e *entry, text, remedy string) { t.fault(e.node.pos, e.origin, text, remedy) }
+func (t *table) wrong(e *entry, text, remedy string) { t.fault(e.node.at, text, remedy) }
 
 // done tells of keys that no getter asked for.
 func (t *table) done() {
-	for _, e := range t.node.entries {
-		if !contains(t.known, e.key) {
-			origin := e.origin
-			if e.pos != (Pos{}) {
-				origin = ""
-			}
-			t.fault(e.pos, origin, fmt.Sprintf("%s has no key %q", t.name, e.key), suggest(e.key, t.known, "take it out"))
+	for _, e := range t.entries {
+		if !slices.Contains(t.known, e.key) {
+			t.fault(e.keyAt, fmt.Sprintf("%s takes no %q", t.name, short(e.key)), suggest(e.key, t.known, "the keys are "+strings.Join(t.known, ", ")))
 		}
 	}
-}
-
-func contains(list []string, s string) bool {
-	for _, x := range list {
-		if x == s {
-			return true
-		}
-	}
-	return false
 }
 
 // text reads a text.
@@ -85,33 +87,17 @@ func (t *table) text(key string, need Need) string {
 	return e.text
 }
 
-// longestName is the longest name in runes.
-const longestName = 100
-
-// nameRef reads the name of something else.
-func (t *table) nameRef(key string, need Need) (string, Pos) {
+// choice reads one of several words. It reports false, and returns absent, where the key is absent or wrong.
+func (t *table) choice(key string, need Need, absent string, words ...string) (string, bool) {
 	e := t.find(key, need)
 	if e == nil {
-		return "", Pos{}
+		return absent, false
 	}
-	if e.shape != textShape || e.text == "" {
-		t.wrong(e, fmt.Sprintf("%s must be a name, not %s", key, e.shape), "put it in quotes")
-		return "", Pos{}
+	if e.shape != textShape || !slices.Contains(words, e.text) {
+		t.wrong(e, fmt.Sprintf("%s must be one of %s", key, quoted(words)), suggest(e.text, words, "choose one"))
+		return absent, false
 	}
-	return e.text, e.node.pos
-}
-
-// choice reads one of several words; the first is what an absent key stands for.
-func (t *table) choice(key string, need Need, words ...string) string {
-	e := t.find(key, need)
-	if e == nil {
-		return words[0]
-	}
-	if e.shape != textShape || !contains(words, e.text) {
-		t.wrong(e, fmt.Sprintf("%s must be %s", key, quoted(words)), suggest(e.text, words, "choose one"))
-		return words[0]
-	}
-	return e.text
+	return e.text, true
 }
 
 func quoted(words []string) string {
@@ -119,10 +105,11 @@ func quoted(words []string) string {
 	for i, w := range words {
 		q[i] = strconv.Quote(w)
 	}
-	return strings.Join(q, " or ")
+	return strings.Join(q, ", ")
 }
 
-// quantity reads a value of the kind within low and high, both in SI and included.
+// quantity reads a value of the kind within low and high, both in SI and included. It reports false where the key is
+// absent or wrong.
 func (t *table) quantity(key string, need Need, kind quantity.Kind, low, high float64) (quantity.Value, bool) {
 	e := t.find(key, need)
 	if e == nil {
@@ -131,7 +118,7 @@ func (t *table) quantity(key string, need Need, kind quantity.Kind, low, high fl
 	return t.value(key, e, kind, low, high)
 }
 
-// si is quantity for callers that want the number alone; absent is what an absent or faulty one stands for.
+// si is quantity for callers that want the number alone; absent is what an absent or wrong one stands for.
 func (t *table) si(key string, need Need, kind quantity.Kind, low, high, absent float64) float64 {
 	if v, ok := t.quantity(key, need, kind, low, high); ok {
 		return v.SI
@@ -139,8 +126,8 @@ func (t *table) si(key string, need Need, kind quantity.Kind, low, high, absent 
 	return absent
 }
 
-func (t *table) value(key string, e *entry, kind quantity.Kind, low, high float64) (quantity.Value, bool) {
-	var v quantity.Value
+func (t *table) value(key string, e *entry, kind quantity.Kind, low, high float64) (v quantity.Value, ok bool) {
+	written := strconv.Quote(short(e.text))
 	switch e.shape {
 	case textShape:
 		var err error
@@ -150,147 +137,155 @@ func (t *table) value(key string, e *entry, kind quantity.Kind, low, high float6
 			return v, false
 		}
 		if v.Note != "" {
-			t.warnings = append(t.warnings, Fault{File: t.file, Pos: e.node.pos, Text: key + ": " + v.Note})
+			text, remedy, _ := strings.Cut(v.Note, "; ")
+			t.warnings = append(t.warnings, t.told(e.node.at, key+": "+text, remedy))
 		}
 	case numberShape:
+		written = short(e.text)
 		x, err := parseNumber(e.text)
 		if err != nil {
-			t.wrong(e, fmt.Sprintf("%s: %s is no number that can be used", key, short(e.text)), "write a finite number")
+			t.wrong(e, fmt.Sprintf("%s = %s is no finite number", key, written), "write one that is")
 			return v, false
 		}
-		if kind == quantity.Level || kind == quantity.SoundLevel || kind == quantity.Sensitivity || kind == quantity.Temperature {
-			_, err := quantity.Parse(kind, e.text)
-			what, remedy, _ := strings.Cut(err.Error(), "; ")
-			t.wrong(e, key+": "+what, remedy)
+		// With an exponent it is no code: 104 is not the capacitor "104".
+		if v, err = quantity.Parse(kind, strconv.FormatFloat(x, 'e', -1, 64)); err != nil {
+			_, remedy, _ := strings.Cut(err.Error(), "; ")
+			t.wrong(e, fmt.Sprintf("%s = %s has no unit", key, written), remedy)
 			return v, false
 		}
-		v.SI = x
 	default:
-		t.wrong(e, fmt.Sprintf("%s must be a value, not %s", key, e.shape), "write a number or a text such as "+example(kind))
+		t.wrong(e, fmt.Sprintf("%s must be a value, not %s", key, e.shape), "write a number, or a text such as \"3.3V\" or \"4k7\"")
 		return v, false
 	}
 	if !(v.SI >= low && v.SI <= high) {
-		t.wrong(e, fmt.Sprintf("%s = %s is out of range, %s to %s", key, quantity.Format(kind, v.SI), quantity.Format(kind, low), quantity.Format(kind, high)), rangeRemedy(kind, e))
+		remedy := "check the unit and the power of ten"
+		if kind == quantity.Capacitance && e.shape == numberShape {
+			remedy = fmt.Sprintf("a plain number is in farads; a capacitor's three-digit code is a text, %q", e.text)
+		}
+		t.wrong(e, fmt.Sprintf("%s = %s is out of range, %s to %s", key, written, bound(kind, low, high), bound(kind, high, high)), remedy)
 		return v, false
 	}
 	return v, true
 }
 
-func example(kind quantity.Kind) string {
-	_, err := quantity.Parse(kind, "")
-	_, remedy, _ := strings.Cut(err.Error(), "write it as ")
-	return remedy
-}
-
-func rangeRemedy(kind quantity.Kind, e *entry) string {
-	if kind == quantity.Capacitance && e.shape == numberShape {
-		return fmt.Sprintf("a plain number is in farads; a capacitor's three-digit code is a text, %q", e.text)
+// bound prints an end of a range that goes up to high.
+func bound(kind quantity.Kind, x, high float64) string {
+	if kind == quantity.Ratio && high > 1 {
+		return strconv.FormatFloat(x, 'g', -1, 64) // a gain, which nobody writes in percent
 	}
-	return "check the unit and the power of ten"
+	return quantity.Format(kind, x)
 }
 
+// short cuts what someone wrote to a length that goes into a line.
 func short(s string) string {
-	if len(s) > 40 {
-		return s[:40] + "…"
+	const most = 40
+	if r := []rune(s); len(r) > most {
+		return string(r[:most]) + "…"
 	}
 	return s
 }
 
 // parseNumber reads a TOML number, whose digits may be parted by underscores.
 func parseNumber(text string) (float64, error) {
-	text = strings.ReplaceAll(text, "_", "")
 	if n, err := strconv.ParseInt(text, 0, 64); err == nil {
 		return float64(n), nil
 	}
-	x, err := strconv.ParseFloat(text, 64)
+	x, err := strconv.ParseFloat(strings.ReplaceAll(text, "_", ""), 64)
 	if err == nil && (math.IsInf(x, 0) || math.IsNaN(x)) {
 		err = strconv.ErrRange
 	}
 	return x, err
 }
 
-// integer reads a whole number within low and high, both included.
-func (t *table) integer(key string, need Need, low, high, absent int) int {
+// number reads a number that has no unit, within low and high, both included. One that a --set gives is a text.
+func (t *table) number(key string, need Need, low, high, absent float64) float64 {
 	e := t.find(key, need)
 	if e == nil {
 		return absent
 	}
 	x, err := parseNumber(e.text)
-	if e.shape != numberShape && (e.shape != textShape || e.origin == "") || err != nil || x != math.Trunc(x) {
-		t.wrong(e, fmt.Sprintf("%s must be a whole number", key), fmt.Sprintf("write one from %d to %d", low, high))
+	if e.shape != numberShape && (e.shape != textShape || e.node.at.set == "") || err != nil || !(x >= low && x <= high) {
+		t.wrong(e, fmt.Sprintf("%s must be a number from %g to %g", key, low, high), "write it without quotes and unit")
 		return absent
 	}
-	if x < float64(low) || x > float64(high) {
-		t.wrong(e, fmt.Sprintf("%s = %g is out of range", key, x), fmt.Sprintf("write one from %d to %d", low, high))
+	return x
+}
+
+// integer is number for whole ones.
+func (t *table) integer(key string, need Need, low, high, absent int) int {
+	x := t.number(key, need, float64(low), float64(high), float64(absent))
+	if x != math.Trunc(x) {
+		t.wrong(t.get(key), fmt.Sprintf("%s must be a whole number", key), fmt.Sprintf("write one from %d to %d", low, high))
 		return absent
 	}
 	return int(x)
 }
 
-// Legal ranges of parts.
+// Legal ranges of parts, in ohms and farads.
 const (
 	leastOhms, mostOhms     = 0.01, 1e11
 	leastFarads, mostFarads = 1e-14, 1.0
 )
 
-// part reads a component: a value, or a table of value, ref and series. It returns nil where there is none.
+// part reads a component: a value, or a table of value, ref and series. It returns nil where there is none; the value
+// of a wrong one is 1.
 func (t *table) part(owner, key string, unit Unit, need Need) *Part {
 	e := t.find(key, need)
 	if e == nil {
 		return nil
 	}
-	p := &Part{Name: owner + "." + key, Key: key, Unit: unit, Pos: e.pos}
+	p := &Part{Name: owner + "." + key, Key: key, Unit: unit, Value: 1, Pos: e.keyAt.pos}
 	kind, low, high := quantity.Resistance, leastOhms, mostOhms
 	if unit == Farad {
 		kind, low, high = quantity.Capacitance, leastFarads, mostFarads
 	}
-	if e.shape != tableShape {
-		v, ok := t.value(key, e, kind, low, high)
-		p.Value = v.SI
-		if !ok {
-			p.Value = 1
+	read := func(e *entry) {
+		if v, ok := t.value(key, e, kind, low, high); ok {
+			p.Value = v.SI
 		}
+	}
+	if e.shape != tableShape {
+		read(e)
 		return p
 	}
 	in := t.table(e.node, key)
-	in.node.pos = e.pos
-	p.Value = 1
 	if v := in.find("value", Must); v != nil {
-		if x, ok := in.value(key, v, kind, low, high); ok {
-			p.Value = x.SI
-		}
+		read(v)
 	}
 	p.Ref = in.text("ref", May)
 	if s := in.find("series", May); s != nil {
+		p.Series = s.text
 		if _, err := preferred.Parse(s.text); err != nil || s.shape != textShape {
-			in.wrong(s, fmt.Sprintf("%q is no series of preferred values", short(s.text)), "choose E3, E6, E12, E24, E48, E96 or E192")
-		} else {
-			p.Series = s.text
+			in.wrong(s, fmt.Sprintf("series: %q is no series of preferred values", short(s.text)), "choose E3, E6, E12, E24, E48, E96 or E192")
 		}
 	}
 	in.done()
 	return p
 }
 
-// required is part where the part must be there; a missing one is a fault, and stands as 1.
+// required is part where the part must be there.
 func (t *table) required(owner, key string, unit Unit) Part {
 	if p := t.part(owner, key, unit, Must); p != nil {
 		return *p
 	}
-	return Part{Name: owner + "." + key, Key: key, Unit: unit, Value: 1}
+	return Part{}
 }
+
+// longestGuess is the longest word, in runes, for which suggest looks for a near one.
+const longestGuess = 40
 
 // suggest returns the remedy for a word that is none of known: the one it was likely meant to be, or else.
 func suggest(word string, known []string, orElse string) string {
-	best, distance := "", len([]rune(word))/3+1
-	sorted := append([]string(nil), known...)
-	sort.Strings(sorted)
-	for _, k := range sorted {
-		if len(word) > 4*longestName {
-			break
+	best, least := "", len([]rune(word))/3+2
+	if len([]rune(word)) > longestGuess {
+		return orElse
+	}
+	for _, k := range slices.Sorted(slices.Values(known)) {
+		if len([]rune(k)) > longestGuess {
+			continue
 		}
-		if d := editDistance(strings.ToLower(word), strings.ToLower(k)); d <= distance && (best == "" || d < editDistance(strings.ToLower(word), strings.ToLower(best))) {
-			best = k
+		if d := editDistance(strings.ToLower(word), strings.ToLower(k)); d < least {
+			best, least = k, d
 		}
 	}
 	if best == "" {
@@ -299,7 +294,7 @@ func suggest(word string, known []string, orElse string) string {
 	return fmt.Sprintf("did you mean %q?", best)
 }
 
-// editDistance is the number of runes to put in, take out or change (Levenshtein 1965).
+// editDistance is the number of runes to put in, take out or change to make one text the other (Levenshtein 1966).
 func editDistance(a, b string) int {
 	x, y := []rune(a), []rune(b)
 	row := make([]int, len(y)+1)

@@ -1,8 +1,11 @@
 package chain
 
 import (
+	"bytes"
 	"errors"
 	"fmt"
+	"maps"
+	"slices"
 	"strings"
 	"unicode/utf8"
 
@@ -25,20 +28,25 @@ func (s shape) String() string {
 	return [...]string{"a text", "a number", "neither text nor number", "a list", "a table"}[s]
 }
 
-// node is a value of the chain file with its place in it.
-type node struct {
-	shape   shape
-	text    string // of a text, or as written
-	pos     Pos
-	origin  string // what it came from instead of the file: a --set
-	items   []*node
-	entries []*entry
+// place is where a key or a value was written.
+type place struct {
+	pos Pos    // in the file; of something that a --set added, its table's
+	set string // the --set it came from, as faults call it; "" for the file
 }
 
-// entry is a key of a table.
+// node is a value of the chain file.
+type node struct {
+	shape   shape
+	text    string // of a text its contents, otherwise as written
+	at      place
+	items   []*node  // of a list
+	entries []*entry // of a table, in the order of the file
+}
+
+// entry is a key of a table, with its value.
 type entry struct {
-	key string
-	pos Pos
+	key   string
+	keyAt place
 	*node
 }
 
@@ -52,138 +60,168 @@ func (n *node) get(key string) *entry {
 	return nil
 }
 
-// put sets a table's entry.
-func (n *node) put(key string, pos Pos, value *node) {
+// put sets a table's entry and returns it. An entry that is there keeps the place of its key.
+func (n *node) put(key string, at place, value *node) *entry {
 	if e := n.get(key); e != nil {
 		e.node = value
-		return
+		return e
 	}
-	n.entries = append(n.entries, &entry{key: key, pos: pos, node: value})
+	e := &entry{key: key, keyAt: at, node: value}
+	n.entries = append(n.entries, e)
+	return e
 }
 
-// parse reads TOML into a tree. The library's decoder says whether it is TOML; its parser gives the places.
-func parse(file string, data []byte) (*node, Faults) {
-	if !utf8.Valid(data) {
-		return nil, Faults{{File: file, Text: "this is not text in UTF-8", Remedy: "a chain file is a text file; see midrail new"}}
+// mostKeys bounds the work of a hostile file: looking for keys that are there twice takes the square of their number.
+// The longest chain that is legal has about half of it.
+const mostKeys = 20_000
+
+const notTOML = `chain files are TOML, with texts and names that hold spaces in quotes; "midrail new" writes an example`
+
+// parse reads TOML into a tree. The library's decoder says whether it is TOML at all; its parser gives the places.
+func parse(file string, data []byte) (*node, *Fault) {
+	data = bytes.TrimPrefix(data, []byte("\ufeff"))
+	where := cursor{data: data}
+	if i := notUTF8(data); i >= 0 {
+		return nil, &Fault{File: file, Pos: where.to(i), Text: "this is not text in UTF-8", Remedy: `save it as UTF-8; "midrail new" writes an example`}
 	}
-	if fault, deep := tooDeep(file, data); deep {
-		return nil, Faults{fault}
+	if bytes.Count(data, []byte("="))+bytes.Count(data, []byte("["))+bytes.Count(data, []byte(".")) > mostKeys {
+		return nil, &Fault{File: file, Pos: Pos{1, 1}, Text: fmt.Sprintf("the file has more than %d keys (equals signs, brackets and points)", mostKeys), Remedy: "is this a chain file?"}
 	}
-	var any map[string]any
-	if err := toml.Unmarshal(data, &any); err != nil {
-		fault := Fault{File: file, Text: strings.TrimPrefix(err.Error(), "toml: "), Remedy: "chain files are TOML; see midrail new for one"}
+	var decoded map[string]any
+	if err := toml.Unmarshal(data, &decoded); err != nil {
+		fault := &Fault{File: file, Pos: Pos{1, 1}, Text: strings.TrimPrefix(err.Error(), "toml: "), Remedy: notTOML}
 		var decode *toml.DecodeError
 		if errors.As(err, &decode) {
-			line, column := decode.Position()
-			fault.Pos = Pos{line, column}
+			fault.Pos = where.toByteColumn(decode.Position())
 		}
-		return nil, Faults{fault}
+		return nil, fault
 	}
+	b := &builder{where: where, root: &node{shape: tableShape, at: place{pos: Pos{1, 1}}}}
+	b.table = b.root
 	var p unstable.Parser
 	p.Reset(data)
-	b := &builder{p: &p, data: data, root: &node{shape: tableShape}}
-	b.at = b.root
 	for p.NextExpression() {
 		b.add(p.Expression())
 	}
 	if err := p.Error(); err != nil {
-		return nil, Faults{{File: file, Text: err.Error(), Remedy: "chain files are TOML; see midrail new for one"}}
+		return nil, &Fault{File: file, Pos: Pos{1, 1}, Text: err.Error(), Remedy: notTOML}
 	}
 	return b.root, nil
 }
 
-// deepest is how many brackets may stand open at once on a line's way into a value.
-const deepest = 32
-
-// tooDeep tells of more nesting than any chain file has, before a recursive parser sees it.
-func tooDeep(file string, data []byte) (Fault, bool) {
-	open, line := 0, 1
-	for _, b := range data {
-		switch b {
-		case '\n':
-			line++
-		case '[', '{':
-			if open++; open > deepest {
-				return Fault{File: file, Pos: Pos{line, 1}, Text: "brackets are nested too deep", Remedy: "no value of a chain file is"}, true
-			}
-		case ']', '}':
-			open = max(open-1, 0)
+// notUTF8 returns the offset of the first byte that is not UTF-8, or -1.
+func notUTF8(data []byte) int {
+	for i := 0; i < len(data); {
+		r, size := utf8.DecodeRune(data[i:])
+		if r == utf8.RuneError && size == 1 {
+			return i
 		}
+		i += size
 	}
-	return Fault{}, false
+	return -1
 }
 
-// builder makes the tree of a parser's expressions.
+// cursor turns offsets into places, in one pass where they rise.
+type cursor struct {
+	data         []byte
+	offset       int
+	lines, runes int // before offset; runes in its line
+}
+
+func (c *cursor) to(offset int) Pos {
+	if offset < c.offset {
+		*c = cursor{data: c.data}
+	}
+	for c.offset < offset {
+		r, size := utf8.DecodeRune(c.data[c.offset:])
+		c.offset += size
+		c.runes++
+		if r == '\n' {
+			c.lines, c.runes = c.lines+1, 0
+		}
+	}
+	return Pos{c.lines + 1, c.runes + 1}
+}
+
+// toByteColumn returns the place of a line and a column in bytes, both from 1.
+func (c *cursor) toByteColumn(line, column int) Pos {
+	offset := 0
+	for ; line > 1; line-- {
+		offset += bytes.IndexByte(c.data[offset:], '\n') + 1
+	}
+	return c.to(offset + column - 1)
+}
+
+// builder makes the tree of a parser's expressions. It trusts that they are sound TOML.
 type builder struct {
-	p    *unstable.Parser
-	data []byte
-	root *node
-	at   *node // table that keys go to
+	where cursor
+	root  *node
+	table *node // of the last header
 }
 
 func (b *builder) add(e *unstable.Node) {
 	switch e.Kind {
 	case unstable.Table:
-		b.at = b.open(b.root, e.Key(), false)
+		b.table = b.open(e.Key(), false)
 	case unstable.ArrayTable:
-		b.at = b.open(b.root, e.Key(), true)
+		b.table = b.open(e.Key(), true)
 	case unstable.KeyValue:
-		b.keyValue(b.at, e)
+		b.keyValue(b.table, e)
 	}
 }
 
-// open goes down a header's keys, making tables on the way; append says that the last one is a list of tables to
+func (b *builder) placeOf(n *unstable.Node) place {
+	return place{pos: b.where.to(int(n.Raw.Offset))}
+}
+
+// open goes down a header's keys, making tables on the way; where list is true the last key is a list of tables, to
 // which one is added.
-func (b *builder) open(from *node, keys unstable.Iterator, appending bool) *node {
-	at := from
+func (b *builder) open(keys unstable.Iterator, list bool) *node {
+	at := b.root
 	for keys.Next() {
-		k := keys.Node()
-		name, pos := string(k.Data), b.posOf(k)
-		e := at.get(name)
+		last := list && keys.IsLast()
+		key, where := string(keys.Node().Data), b.placeOf(keys.Node())
+		e := at.get(key)
 		if e == nil {
-			child := &node{shape: tableShape, pos: pos}
-			if appending && keys.IsLast() {
+			child := &node{shape: tableShape, at: where}
+			if last {
 				child.shape = listShape
 			}
-			at.put(name, pos, child)
-			e = at.get(name)
+			e = at.put(key, where, child)
 		}
 		at = e.node
-		if at.shape == listShape {
-			if appending && keys.IsLast() {
-				at.items = append(at.items, &node{shape: tableShape, pos: pos})
-			}
-			if len(at.items) > 0 {
-				at = at.items[len(at.items)-1]
-			}
+		if last {
+			at.items = append(at.items, &node{shape: tableShape, at: where})
+		}
+		if at.shape == listShape && len(at.items) > 0 {
+			at = at.items[len(at.items)-1]
 		}
 	}
 	return at
 }
 
-func (b *builder) keyValue(at *node, e *unstable.Node) {
+// keyValue puts a key, which may be dotted, and its value into a table.
+func (b *builder) keyValue(table *node, e *unstable.Node) {
 	keys := e.Key()
 	for keys.Next() {
-		k := keys.Node()
-		name, pos := string(k.Data), b.posOf(k)
+		key, where := string(keys.Node().Data), b.placeOf(keys.Node())
 		if keys.IsLast() {
-			at.put(name, pos, b.value(e.Value(), pos))
+			table.put(key, where, b.value(e.Value(), where))
 			return
 		}
-		next := at.get(name)
+		next := table.get(key)
 		if next == nil {
-			at.put(name, pos, &node{shape: tableShape, pos: pos})
-			next = at.get(name)
+			next = table.put(key, where, &node{shape: tableShape, at: where})
 		}
-		at = next.node
+		table = next.node
 	}
 }
 
-// value makes the node of a value whose key is at pos, for those that the parser gives no place.
-func (b *builder) value(v *unstable.Node, pos Pos) *node {
-	n := &node{text: string(v.Data), pos: pos}
+// value makes the node of a value; around is the place for a value that the parser gives none, which are lists.
+func (b *builder) value(v *unstable.Node, around place) *node {
+	n := &node{text: string(v.Data), at: around}
 	if v.Raw.Length > 0 {
-		n.pos = b.posOf(v)
+		n.at = b.placeOf(v)
 	}
 	switch v.Kind {
 	case unstable.String:
@@ -193,16 +231,12 @@ func (b *builder) value(v *unstable.Node, pos Pos) *node {
 	case unstable.Array:
 		n.shape = listShape
 		for it := v.Children(); it.Next(); {
-			if it.Node().Kind != unstable.Comment {
-				n.items = append(n.items, b.value(it.Node(), n.pos))
-			}
+			n.items = append(n.items, b.value(it.Node(), n.at))
 		}
 	case unstable.InlineTable:
 		n.shape = tableShape
 		for it := v.Children(); it.Next(); {
-			if it.Node().Kind == unstable.KeyValue {
-				b.keyValue(n, it.Node())
-			}
+			b.keyValue(n, it.Node())
 		}
 	default:
 		n.shape = otherShape
@@ -210,58 +244,47 @@ func (b *builder) value(v *unstable.Node, pos Pos) *node {
 	return n
 }
 
-// posOf returns a node's place, its column in runes.
-func (b *builder) posOf(n *unstable.Node) Pos {
-	offset := int(n.Raw.Offset)
-	if n.Raw.Length == 0 && len(n.Data) > 0 {
-		offset = int(b.p.Range(n.Data).Offset)
-	}
-	before := string(b.data[:min(offset, len(b.data))])
-	line := strings.Count(before, "\n")
-	return Pos{line + 1, utf8.RuneCountInString(before[strings.LastIndexByte(before, '\n')+1:]) + 1}
-}
-
 // set applies one "NAME.key=value" of the command line to the tree.
-func (root *node) set(one string) *Fault {
+func (n *node) set(one string) *Fault {
 	origin := fmt.Sprintf("--set %q", one)
 	wrong := func(text, remedy string) *Fault { return &Fault{File: origin, Text: text, Remedy: remedy} }
 	path, value, ok := strings.Cut(one, "=")
-	steps := strings.Split(strings.TrimSpace(path), ".")
-	if !ok || len(steps) < 2 {
-		return wrong("this is no NAME.key=value", `write it as "mic amp.r_f=180k"`)
+	steps := strings.Split(path, ".")
+	for i := range steps {
+		steps[i] = strings.TrimSpace(steps[i])
 	}
-	owners := root.owners()
-	at, ok := owners[steps[0]]
-	if !ok {
-		return wrong(fmt.Sprintf("nothing is named %q", steps[0]), suggest(steps[0], keysOf(owners), "it takes an input, stage, bias, amplifier or table of the chain file"))
+	if !ok || len(steps) < 2 || len(steps) > 4 || slices.Contains(steps, "") {
+		return wrong("this is not NAME.key=value", `write it as "mic amp.r_f=180k"`)
 	}
-	for _, s := range steps[1 : len(steps)-1] {
-		next := at.leg(s)
-		if next == nil {
-			if e := at.get(s); e != nil && e.shape == tableShape {
-				next = e.node
-			}
+	owners := n.owners()
+	table := owners[steps[0]]
+	if table == nil {
+		return wrong(fmt.Sprintf("nothing is named %q", short(steps[0])), suggest(steps[0], slices.Collect(maps.Keys(owners)), "name an input, a stage, a bias, an amplifier or a table of the chain file"))
+	}
+	for i, step := range steps[1 : len(steps)-1] {
+		next := table.leg(step)
+		if e := table.get(step); next == nil && e != nil && e.shape == tableShape {
+			next = e.node
 		}
 		if next == nil {
-			return wrong(fmt.Sprintf("%q has no %q", steps[0], s), "name a leg by what it comes from")
+			return wrong(fmt.Sprintf("%q has no table %q", strings.Join(steps[:i+1], "."), short(step)), "name a leg by what it comes from")
 		}
-		at = next
+		table = next
 	}
-	v := &node{shape: textShape, text: strings.TrimSpace(value), origin: origin}
+	at := place{pos: table.at.pos, set: origin}
+	v := &node{shape: textShape, text: strings.TrimSpace(value), at: at}
 	key := steps[len(steps)-1]
-	if e := at.get(key); e != nil && e.shape == tableShape && e.get("value") != nil {
-		e.put("value", Pos{}, v)
-		return nil
+	if e := table.get(key); e != nil && e.shape == tableShape && e.get("value") != nil {
+		table, key = e.node, "value" // a part that is a table
 	}
-	at.put(key, Pos{}, v)
-	at.get(key).pos = Pos{}
+	table.put(key, at, v)
 	return nil
 }
 
 // owners returns the tables that a --set can name.
-func (root *node) owners() map[string]*node {
+func (n *node) owners() map[string]*node {
 	owners := map[string]*node{}
-	for _, e := range root.entries {
+	for _, e := range n.entries {
 		switch {
 		case e.shape == tableShape && (e.key == "input" || e.key == "bias" || e.key == "amplifier"):
 			for _, one := range e.entries {
@@ -273,7 +296,7 @@ func (root *node) owners() map[string]*node {
 			owners[e.key] = e.node
 		case e.shape == listShape && e.key == "stage":
 			for _, one := range e.items {
-				if name := one.get("name"); one.shape == tableShape && name != nil {
+				if name := one.get("name"); name != nil {
 					owners[name.text] = one
 				}
 			}
@@ -289,17 +312,9 @@ func (n *node) leg(from string) *node {
 		return nil
 	}
 	for _, item := range e.items {
-		if f := item.get("from"); item.shape == tableShape && f != nil && f.text == from {
+		if f := item.get("from"); f != nil && f.text == from {
 			return item
 		}
 	}
 	return nil
-}
-
-func keysOf[V any](m map[string]V) []string {
-	var keys []string
-	for k := range m {
-		keys = append(keys, k)
-	}
-	return keys
 }
