@@ -299,23 +299,15 @@ func (c *Compiled) Start() *State {
 	}
 }
 
-// CopyFrom makes s the same as other, which is of the same network.
-func (s *State) CopyFrom(other *State) {
-	copy(s.Z, other.Z)
-	copy(s.H, other.H)
-	copy(s.E, other.E)
-	copy(s.Pieces, other.Pieces)
-}
-
-// Distance returns a bound in V on how far the node voltages of two states of the network may lie apart, and their
+// Size returns a bound in V on how far a packed state, as the difference of two, moves the nodes' voltages and the
 // amplifiers' sources.
-func (c *Compiled) Distance(a, b *State) float64 {
+func (c *Compiled) Size(x []float64) float64 {
 	sum := 0.
-	for i, w := range c.weight {
-		sum += w * math.Abs(a.Z[i]-b.Z[i])
-	}
-	for i := range a.H {
-		sum += math.Abs(a.H[i] - b.H[i])
+	for i, v := range x {
+		if i < c.modes {
+			v *= c.weight[i]
+		}
+		sum += math.Abs(v)
 	}
 	return sum
 }

@@ -1,68 +1,169 @@
 package bilinear
 
-import "gonum.org/v1/gonum/floats"
+import (
+	"math"
 
-// Lifted is the linear map over a block of steps: from the state before it and one input's values over it to the
-// state after it and the voltages of some nodes at its last instant. It may be shared by goroutines.
-type Lifted struct {
-	steps, states int
-	rows          [][]float64 // for each state after, then each node: weights of [state before, input over the block]
+	"gonum.org/v1/gonum/blas"
+	"gonum.org/v1/gonum/blas/blas64"
+)
+
+// Reading is a quantity of a network at one step of a block: what a [Lifted] tells.
+type Reading struct {
+	Step int // 0 is the block's first
+	Of   Quantity
+	Item int // the watched node's place in the list given to [Compile], or the element's number
 }
 
-// Lift builds the map over a number of steps for the network's given input, by probing [Compiled.StepLinear] with
-// unit vectors, so that it agrees with it but for rounding. nodes are positions in the watch list given to [Compile].
-func (c *Compiled) Lift(steps, input int, nodes []int) *Lifted {
-	states := c.modes + len(c.amplifiers)
-	l := &Lifted{steps: steps, states: states, rows: make([][]float64, states+len(nodes))}
-	for i := range l.rows {
-		l.rows[i] = make([]float64, states+steps)
+// Quantity tells what a [Reading] is of.
+type Quantity uint8
+
+// The quantities, from rest.
+const (
+	Node   Quantity = iota // V of a watched node
+	Source                 // e of an element: V of an amplifier, A of others
+	Slope                  // V that an amplifier's e moves in half a step at its slope at the step's end
+	Sense                  // V that an element follows: v+ − v− of an amplifier, of a capsule's drain, across a diode
+)
+
+// Lifted is the linear map over a block of steps: from the state before it, and an input's values over it, to the
+// state after it and to readings within it. Each is a matrix in rows: the states after, then the readings. It may be
+// shared by goroutines.
+type Lifted struct {
+	States    int
+	FromState blas64.General // rows × States
+	FromInput blas64.General // rows × steps
+}
+
+// States returns how many numbers the network's state is.
+func (c *Compiled) States() int { return c.modes + len(c.amplifiers) }
+
+// Pack puts the state into x, which is as long as [Compiled.States] says.
+func (c *Compiled) Pack(x []float64, s *State) {
+	copy(x, s.Z)
+	copy(x[c.modes:], s.H)
+}
+
+// Unpack sets the state from x.
+func (c *Compiled) Unpack(s *State, x []float64) {
+	copy(s.Z, x)
+	copy(s.H, x[c.modes:])
+}
+
+// Lift builds the map over a number of steps for the network's given input by probing [Compiled.StepLinear] with unit
+// vectors, so that it agrees with it but for rounding.
+func (c *Compiled) Lift(steps, input int, readings []Reading) *Lifted {
+	states := c.States()
+	rows := states + len(readings)
+	l := &Lifted{
+		States:    states,
+		FromState: blas64.General{Rows: rows, Cols: states, Stride: max(states, 1), Data: make([]float64, rows*max(states, 1))},
+		FromInput: blas64.General{Rows: rows, Cols: steps, Stride: steps, Data: make([]float64, rows*steps)},
 	}
-	s, u, y := c.Start(), make([]float64, c.inputs), make([]float64, c.watched)
-	record := func(column int) {
-		for i := range states {
-			l.rows[i][column] = *c.place(s, i)
+	at := make([][]int, steps) // readings of each step
+	for i, r := range readings {
+		at[r.Step] = append(at[r.Step], i)
+	}
+	s, u, y, before := c.Start(), make([]float64, c.inputs), make([]float64, c.watched), make([]float64, len(c.amplifiers))
+	read := func(r Reading) float64 {
+		switch r.Of {
+		case Node:
+			return y[r.Item]
+		case Source:
+			return s.E[r.Item]
+		case Sense:
+			return c.senseOf(s, r.Item)
 		}
-		for i, node := range nodes {
-			l.rows[states+i][column] = y[node]
-		}
+		return s.E[r.Item] - before[r.Item]
+	}
+	step := func() {
+		copy(before, s.H)
+		c.StepLinear(s, u, y)
 	}
 	for from := range states {
 		clear(s.Z)
 		clear(s.H)
 		*c.place(s, from) = 1
-		for range steps {
-			c.StepLinear(s, u, y)
+		for j := range steps {
+			step()
+			for _, i := range at[j] {
+				l.FromState.Data[(states+i)*l.FromState.Stride+from] = read(readings[i])
+			}
 		}
-		record(from)
+		for i := range states {
+			l.FromState.Data[i*l.FromState.Stride+from] = *c.place(s, i)
+		}
 	}
-	// A unit at the block's step j has steps−j steps to go, the one it enters at included.
+	// What a unit at one step does later depends on how much later alone.
 	clear(s.Z)
 	clear(s.H)
 	u[input] = 1
-	for j := steps - 1; j >= 0; j-- {
-		c.StepLinear(s, u, y)
+	for later := range steps {
+		step()
 		u[input] = 0
-		record(states + j)
+		for i := range states {
+			l.FromInput.Data[i*steps+steps-1-later] = *c.place(s, i)
+		}
+		for j := later; j < steps; j++ {
+			for _, i := range at[j] {
+				l.FromInput.Data[(states+i)*steps+j-later] = read(readings[i])
+			}
+		}
 	}
 	return l
 }
 
-// States returns the length of the state that [Lifted.Step] takes.
-func (l *Lifted) States() int { return l.states }
-
-// Step takes the state over a block, whose input is u, and puts the nodes' voltages from rest at its last instant
-// into y. scratch is for its own use and as long as the state. It panics where a length is wrong.
-func (l *Lifted) Step(state, u, y, scratch []float64) {
-	if len(state) != l.states || len(scratch) != l.states || len(u) != l.steps || len(y) != len(l.rows)-l.states {
-		panic("bilinear: wrong length of a lifted step")
+// Apply adds m·x to y, for a matrix of a [Lifted] or a part of its rows.
+func Apply(y []float64, m blas64.General, x []float64) {
+	if m.Rows == 0 || m.Cols == 0 {
+		return
 	}
-	for i, row := range l.rows {
-		v := floats.Dot(row[:l.states], state) + floats.Dot(row[l.states:], u)
-		if i < l.states {
-			scratch[i] = v
+	blas64.Gemv(blas.NoTrans, 1, m, blas64.Vector{N: m.Cols, Data: x, Inc: 1}, 1, blas64.Vector{N: m.Rows, Data: y, Inc: 1})
+}
+
+// Bounds are what an element may do without leaving its linear piece, from rest, with the rails at rest.
+type Bounds struct {
+	SourceLow, SourceHigh float64 // of its source: V of an amplifier, A of others
+	Slew                  float64 // V, of an amplifier, as a [Slope]; +Inf for others
+	SenseLow, SenseHigh   float64 // V
+}
+
+// Bounds returns the bounds of each element: amplifiers, capsules, diodes.
+func (c *Compiled) Bounds() []Bounds {
+	inf := math.Inf(1)
+	none := Bounds{-inf, inf, inf, -inf, inf}
+	var all []Bounds
+	for _, a := range c.amplifiers {
+		b := none
+		b.SourceLow, b.SourceHigh = a.low, a.high
+		if a.low > a.high {
+			b.SourceLow, b.SourceHigh = a.middle, a.middle
+		}
+		b.Slew = a.slew
+		all = append(all, b)
+	}
+	for _, p := range c.capsules {
+		b := none
+		b.SourceLow, b.SenseLow = p.least, p.floor
+		all = append(all, b)
+	}
+	for _, d := range c.diodes {
+		b := none
+		if d.conducts {
+			b.SourceLow = d.off
 		} else {
-			y[i-l.states] = v
+			b.SenseHigh = d.forward
+		}
+		all = append(all, b)
+	}
+	return all
+}
+
+// RestsOnLimit tells whether an element is at a limit without any signal, so that no step is a linear one.
+func (c *Compiled) RestsOnLimit() bool {
+	for _, p := range c.capsules {
+		if p.residual != 0 {
+			return true
 		}
 	}
-	copy(state, scratch)
+	return c.residual
 }

@@ -106,7 +106,7 @@ func (c *Compiled) beyond(s *State, u []float64) bool {
 		return false
 	}
 	i := len(c.amplifiers)
-	sense := func() float64 { return s.s0[i] + floats.Dot(c.b[i*c.elements:(i+1)*c.elements], s.E) }
+	sense := func() float64 { return c.senseOf(s, i) }
 	for j := range c.capsules {
 		if l := &c.capsules[j]; s.E[i] < l.least || sense() < l.floor {
 			return true
@@ -121,6 +121,11 @@ func (c *Compiled) beyond(s *State, u []float64) bool {
 		i++
 	}
 	return false
+}
+
+// senseOf returns what the i-th element follows, with the sources found.
+func (c *Compiled) senseOf(s *State, i int) float64 {
+	return s.s0[i] + floats.Dot(c.b[i*c.elements:(i+1)*c.elements], s.E)
 }
 
 // bounds returns the limits of e with the rails where u puts them.

@@ -12,22 +12,49 @@ import (
 
 // Feed is the recording that goes into one of the chain's inputs.
 type Feed struct {
-	Sound signals.Stream
-	Rate  float64 // Hz
+	Sound signals.Stream // nil: silence
+	Rate  float64        // Hz
 }
 
-// preRing is how many samples of the track the interpolation may ring before the first.
+// preRing is how many samples of a track its interpolation may ring before the first.
 const preRing = 256
 
-// source is one input's sound at the internal rate, parted at half the converter's rate.
-type source struct {
-	counted   *counter
-	low, high signals.Stream // high is nil where the track holds nothing there
+// part tells what a lane's sound becomes at the converter.
+type part int
+
+// The parts.
+const (
+	wantedPart part = iota
+	foldBackPart
+	inBandPart    // interference below half the converter's rate
+	outOfBandPart // and above
+	parts
+)
+
+// lane is one way of sound into the network: the part of a track or of an interferer that goes into one input, at the
+// base rate or, where that is too coarse for it, at the internal rate.
+type lane struct {
+	part  part
+	input int     // of the network's u
+	fine  bool    // at the internal rate
+	scale float64 // V or A of u for 1 of the lane's values
+	fill  func(dst []float64, first int64) error
+
+	next int64     // index of the next value at the lane's rate
+	tail []float64 // values that the next chunk needs again
+}
+
+// chunk is a stretch of the run on its way: whole blocks of every lane's values, in V or A.
+type chunk struct {
+	first int64       // conversion that the chunk ends its first one with
+	lanes [][]float64 // of each lane; those at the base rate begin as early, and end as late, as interpolation reaches
+	end   int64       // conversions in the whole run, once known; else -1
 }
 
 // counter counts the samples of a stream and remembers its end.
 type counter struct {
 	signals.Stream
+	rate  float64
 	n     int64
 	ended bool
 }
@@ -47,35 +74,135 @@ func lead(feeds []Feed, fc float64) int64 {
 		if f.Sound == nil {
 			continue
 		}
-		ring := float64(preRing)
-		if fc/2 < f.Rate/2 {
-			ring += float64(resample.NewSplit(nil, f.Rate, fc/2, 0).HalfLength())
-		}
-		most = math.Max(most, ring/f.Rate)
+		half := resample.NewSplit(nil, f.Rate, fc/2, 0).HalfLength()
+		most = math.Max(most, float64(preRing+half)/f.Rate)
 	}
 	return int64(math.Ceil(most*fc)) + 1
 }
 
-// newSource returns a feed's sound from the given step of the internal rate on.
-func newSource(f Feed, fc, fi float64, first int64) *source {
-	s := &source{counted: &counter{Stream: f.Sound}}
-	if fc/2 >= f.Rate/2 {
-		s.low = resample.New(s.counted, f.Rate, fi, 0, first, preRing)
-		return s
-	}
-	half := resample.NewSplit(nil, f.Rate, fc/2, 0).HalfLength()
-	both := &tee{split: resample.NewSplit(s.counted, f.Rate, fc/2, half)}
-	s.low = resample.New(both.side(0), f.Rate, fi, -int64(half), first, preRing)
-	s.high = resample.New(both.side(1), f.Rate, fi, -int64(half), first, preRing)
-	return s
+// feeder fills chunks.
+type feeder struct {
+	n      *circuit.Network
+	grid   grid
+	lanes  []*lane
+	tracks []*counter
 }
 
-// length returns the source's samples once they are known, else −1.
-func (s *source) length() int64 {
-	if s.counted.ended {
-		return s.counted.n
+// newFeeder prepares the lanes of tracks and interferers. The run's first step is one past the given conversion's.
+func newFeeder(n *circuit.Network, feeds []Feed, g grid, first int64, seed uint64) *feeder {
+	f := &feeder{n: n, grid: g}
+	base := g.plan.baseRate()
+	start := first*int64(g.plan.Base) + 1 - int64(g.reach)
+	for i, one := range feeds {
+		if one.Sound == nil {
+			continue
+		}
+		c := &counter{Stream: one.Sound, rate: one.Rate}
+		f.tracks = append(f.tracks, c)
+		add := func(p part, s signals.Stream, from int64) {
+			in := resample.New(s, one.Rate, base, from, start, preRing)
+			f.lanes = append(f.lanes, &lane{
+				part: p, input: circuit.SoundInput(i), scale: n.Inputs[i].Scale, next: start,
+				fill: func(dst []float64, _ int64) error { return readAll(in, dst) },
+			})
+		}
+		half := resample.NewSplit(nil, one.Rate, n.Chain.Converter.Rate/2, 0).HalfLength()
+		if half == 0 {
+			add(wantedPart, c, 0)
+			continue
+		}
+		both := &tee{split: resample.NewSplit(c, one.Rate, n.Chain.Converter.Rate/2, half)}
+		add(wantedPart, both.side(0), -int64(half))
+		add(foldBackPart, both.side(1), -int64(half))
 	}
-	return -1
+	fineStart := first*int64(g.plan.Steps()) + 1
+	for _, x := range newInterferers(n, g.plan, seed) {
+		l := &lane{part: x.part, input: x.input, fine: x.fine, scale: x.scale, next: start, fill: func(dst []float64, first int64) error {
+			clear(dst)
+			x.signal.add(dst, first)
+			return nil
+		}}
+		if x.fine {
+			l.next = fineStart
+		}
+		f.lanes = append(f.lanes, l)
+	}
+	for _, l := range f.lanes {
+		if !l.fine {
+			l.tail = make([]float64, 2*g.reach)
+			// What the first chunk needs before its own values.
+			l.next += int64(len(l.tail))
+			if err := l.fill(l.tail, start); err != nil {
+				l.fill = func([]float64, int64) error { return err }
+			}
+			scaleBy(l.tail, l.scale)
+		}
+	}
+	return f
+}
+
+// fill puts the next values of every lane into the chunk.
+func (f *feeder) fill(c *chunk) error {
+	for i, l := range f.lanes {
+		dst := c.lanes[i]
+		fresh := dst[copy(dst, l.tail):]
+		if err := l.fill(fresh, l.next); err != nil {
+			return err
+		}
+		scaleBy(fresh, l.scale)
+		l.next += int64(len(fresh))
+		copy(l.tail, dst[len(dst)-len(l.tail):])
+	}
+	c.end = f.conversions()
+	return nil
+}
+
+func scaleBy(x []float64, scale float64) {
+	for i := range x {
+		x[i] *= scale
+	}
+}
+
+// conversions returns ceil(N·fc/ft) over the longest track once every track has been read, else −1.
+func (f *feeder) conversions() int64 {
+	most := int64(0)
+	for _, t := range f.tracks {
+		if !t.ended {
+			return -1
+		}
+		most = max(most, Conversions(t.n, t.rate, f.n.Chain.Converter.Rate))
+	}
+	return most
+}
+
+// seconds returns the length of the longest track.
+func (f *feeder) seconds() float64 {
+	longest := 0.
+	for _, t := range f.tracks {
+		longest = math.Max(longest, float64(t.n)/t.rate)
+	}
+	return longest
+}
+
+// Conversions returns how many samples a converter at rate fc takes of n samples at rate ft: those at k/fc before
+// the end of the track, ceil(n·fc/ft).
+func Conversions(n int64, ft, fc float64) int64 {
+	exact := float64(n) * fc / ft
+	// A quotient that is whole but for rounding counts as whole.
+	if whole := math.Round(exact); math.Abs(exact-whole) <= 1e-9*math.Max(1, exact) {
+		return int64(whole)
+	}
+	return int64(math.Ceil(exact))
+}
+
+// readAll fills dst from the stream, with zeros after its end.
+func readAll(s signals.Stream, dst []float64) error {
+	n, err := s.Read(dst)
+	if err != nil && !errors.Is(err, io.EOF) {
+		return err
+	}
+	clear(dst[n:])
+	return nil
 }
 
 // tee gives the two sides of a split as two streams that are read in turns.
@@ -92,131 +219,33 @@ type teeSide struct {
 
 func (t *tee) side(i int) signals.Stream { return &teeSide{t, i} }
 
+// Read implements [signals.Stream].
 func (s *teeSide) Read(dst []float64) (int, error) {
 	t := s.t
 	if missing := len(dst) - len(t.pending[s.side]); missing > 0 && t.err == nil {
-		low, high := make([]float64, missing), make([]float64, missing)
-		n, err := t.split.Read(low, high)
-		t.pending[0] = append(t.pending[0], low[:n]...)
-		t.pending[1] = append(t.pending[1], high[:n]...)
-		t.err = err
+		t.more(missing)
 	}
-	n := copy(dst, t.pending[s.side])
-	t.pending[s.side] = append(t.pending[s.side][:0], t.pending[s.side][n:]...)
+	own := t.pending[s.side]
+	n := copy(dst, own)
+	t.pending[s.side] = own[:copy(own, own[n:])]
 	if n < len(dst) {
 		return n, t.err
 	}
 	return n, nil
 }
 
-// chunk is a block of the internal rate: for each of the network's inputs u the deviations that the layers' sources
-// make, in volts or amperes. A nil slice is silence.
-type chunk struct {
-	first     int64 // step of the internal rate, counted from the tracks' first sample
-	wanted    [][]float64
-	folded    [][]float64
-	inBand    [][]float64 // interference below half the converter's rate
-	outOfBand [][]float64 // and above
-	end       int64       // conversions in the whole run, once known; else -1
-}
-
-// feeder fills chunks.
-type feeder struct {
-	n            *circuit.Network
-	sources      []*source // nil where the input is silent
-	rates        []float64
-	interference *interference
-	plan         Plan
-}
-
-func newFeeder(n *circuit.Network, feeds []Feed, plan Plan, first int64, seed uint64) *feeder {
-	f := &feeder{n: n, plan: plan, interference: newInterference(n, plan.Rate, seed)}
-	for _, one := range feeds {
-		if one.Sound == nil {
-			f.sources = append(f.sources, nil)
-		} else {
-			f.sources = append(f.sources, newSource(one, n.Chain.Converter.Rate, plan.Rate, first))
+// more reads so many values of both sides.
+func (t *tee) more(values int) {
+	var room [2][]float64
+	for i, p := range t.pending {
+		for cap(p)-len(p) < values {
+			p = append(p[:cap(p)], 0)[:len(p)]
 		}
-		f.rates = append(f.rates, one.Rate)
+		t.pending[i], room[i] = p, p[len(p):len(p)+values]
 	}
-	return f
-}
-
-// fill puts the next steps into the chunk, as many as it holds; c.first is set.
-func (f *feeder) fill(c *chunk) error {
-	for i, s := range f.sources {
-		if s == nil {
-			continue
-		}
-		u, scale := circuit.SoundInput(i), f.n.Inputs[i].Scale
-		if err := readScaled(s.low, c.wanted[u], scale); err != nil {
-			return err
-		}
-		if s.high != nil {
-			if err := readScaled(s.high, c.folded[u], scale); err != nil {
-				return err
-			}
-		}
-	}
-	for _, x := range f.interference.sources {
-		clear(c.inBand[x.input])
-		clear(c.outOfBand[x.input])
-	}
-	for _, x := range f.interference.sources {
-		addScaled(x.inBand, c.inBand[x.input], c.first, x.scale)
-		addScaled(x.folded, c.outOfBand[x.input], c.first, x.scale)
-	}
-	c.end = f.conversions()
-	return nil
-}
-
-// conversions returns ceil(N·fc/ft) over the longest track once every track has been read, else −1.
-func (f *feeder) conversions() int64 {
-	most := int64(0)
-	for i, s := range f.sources {
-		if s == nil {
-			continue
-		}
-		n := s.length()
-		if n < 0 {
-			return -1
-		}
-		most = max(most, Conversions(n, f.rates[i], f.n.Chain.Converter.Rate))
-	}
-	return most
-}
-
-// Conversions returns how many samples a converter at rate fc takes of n samples at rate ft: those at k/fc before
-// the end of the track, ceil(n·fc/ft).
-func Conversions(n int64, ft, fc float64) int64 {
-	exact := float64(n) * fc / ft
-	// A quotient that is whole but for rounding counts as whole.
-	if whole := math.Round(exact); math.Abs(exact-whole) <= 1e-9*math.Max(1, exact) {
-		return int64(whole)
-	}
-	return int64(math.Ceil(exact))
-}
-
-// readScaled fills dst from the stream, with zeros after its end.
-func readScaled(s signals.Stream, dst []float64, scale float64) error {
-	n, err := s.Read(dst)
-	if err != nil && !errors.Is(err, io.EOF) {
-		return err
-	}
-	clear(dst[n:])
-	for i := range dst[:n] {
-		dst[i] *= scale
-	}
-	return nil
-}
-
-func addScaled(g generator, dst []float64, first int64, scale float64) {
-	if g == nil {
-		return
-	}
-	scratch := make([]float64, len(dst))
-	g.add(scratch, first)
-	for i, v := range scratch {
-		dst[i] += scale * v
+	n, err := t.split.Read(room[0], room[1])
+	t.err = err
+	for i, p := range t.pending {
+		t.pending[i] = p[:len(p)+n]
 	}
 }

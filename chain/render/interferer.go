@@ -2,6 +2,7 @@ package render
 
 import (
 	"math"
+	"math/cmplx"
 	"math/rand/v2"
 
 	"midrail/bilinear"
@@ -9,18 +10,13 @@ import (
 	"midrail/chain/circuit"
 )
 
-// interference makes the interferers of a chain at the internal rate, apart for what lies below half the
-// converter's rate and what folds.
-type interference struct {
-	sources []*interferer
-}
-
-// interferer is one interferer on its way into one input of the network.
+// interferer is one part of an interferer on its way into one input of the network.
 type interferer struct {
+	part   part
 	input  int     // of the network's u
 	scale  float64 // volts or amperes of u for one unit of the interferer
-	inBand generator
-	folded generator
+	fine   bool    // made at the internal rate
+	signal generator
 }
 
 // generator adds its signal at the steps first, first+1, … of the internal rate to dst.
@@ -28,36 +24,58 @@ type generator interface {
 	add(dst []float64, first int64)
 }
 
-// newInterference prepares the chain's interferers, with noise drawn from the seed.
-func newInterference(n *circuit.Network, rate float64, seed uint64) *interference {
+// newInterferers prepares the chain's interferers, parted at half the converter's rate, with noise drawn from the seed.
+// Tones that the tracks could hold too are made at the base rate, everything else at the internal rate.
+func newInterferers(n *circuit.Network, plan Plan, seed uint64) []*interferer {
 	c := n.Chain
 	half := c.Converter.Rate / 2
-	all := &interference{}
+	var all []*interferer
 	for i, x := range c.Interferers {
-		one := &interferer{input: circuit.SupplyInput, scale: 1}
+		one := interferer{input: circuit.SupplyInput, scale: 1}
 		for k := range c.Inputs {
 			if in := &c.Inputs[k]; in.Name == x.Into {
 				one.input = circuit.SoundInput(k)
 				one.scale = n.Inputs[k].Scale / (in.FullScale * math.Sqrt2)
 			}
 		}
-		switch x.Shape {
-		case "square":
-			one.inBand, one.folded = splitSquare(x, rate, half)
-		case "noise":
-			one.inBand, one.folded = splitNoise(x, rate, half, seed, uint64(i))
-		default:
-			tone := sine{level: x.Level, cycles: x.Frequency / rate}
-			if x.Frequency < half {
-				one.inBand = tone
-			} else {
-				one.folded = tone
+		add := func(p part, fine bool, g generator) {
+			if g != nil {
+				all = append(all, &interferer{p, one.input, one.scale, fine, g})
 			}
 		}
-		all.sources = append(all.sources, one)
+		tone := func(f, level float64) (g generator, fine bool) {
+			if f <= baseTone*plan.To {
+				return sine{level: level, cycles: f / plan.baseRate()}, false
+			}
+			return sine{level: level, cycles: f / plan.Rate}, true
+		}
+		switch x.Shape {
+		case "square":
+			// Its harmonics below half the converter's rate are put where they belong and taken from the rest.
+			add(outOfBandPart, true, square{level: x.Level, cycles: x.Frequency / plan.Rate})
+			for k := 1; float64(k)*x.Frequency < half; k += 2 {
+				g, fine := tone(float64(k)*x.Frequency, 4/math.Pi/float64(k)*x.Level)
+				add(inBandPart, fine, g)
+				add(outOfBandPart, fine, negative{g})
+			}
+		case "noise":
+			inBand, folded := splitNoise(x, plan.Rate, half, seed, uint64(i))
+			add(inBandPart, true, inBand)
+			add(outOfBandPart, true, folded)
+		default:
+			g, fine := tone(x.Frequency, x.Level)
+			p := inBandPart
+			if x.Frequency >= half {
+				p = outOfBandPart
+			}
+			add(p, fine, g)
+		}
 	}
 	return all
 }
+
+// baseTone is how much of the tracks' band half-band filters pass flat.
+const baseTone = 0.92
 
 // sine is a tone that is 0 and rising at step 0.
 type sine struct {
@@ -66,18 +84,25 @@ type sine struct {
 }
 
 func (s sine) add(dst []float64, first int64) {
+	_, phase := math.Modf(s.cycles * float64(first))
+	now := cmplx.Rect(s.level, 2*math.Pi*phase)
+	turn := cmplx.Rect(1, 2*math.Pi*s.cycles)
 	for i := range dst {
-		_, phase := math.Modf(s.cycles * float64(first+int64(i)))
-		dst[i] += s.level * math.Sin(2*math.Pi*phase)
+		dst[i] += imag(now)
+		now *= turn
 	}
 }
 
-// sum is several generators at once.
-type sum []generator
+// negative takes a generator away.
+type negative struct{ generator }
 
-func (s sum) add(dst []float64, first int64) {
-	for _, g := range s {
-		g.add(dst, first)
+func (n negative) add(dst []float64, first int64) {
+	for i := range dst {
+		dst[i] = -dst[i]
+	}
+	n.generator.add(dst, first)
+	for i := range dst {
+		dst[i] = -dst[i]
 	}
 }
 
@@ -115,17 +140,6 @@ func edge(phase, cycles float64) float64 {
 		return x * x
 	}
 	return 0
-}
-
-// splitSquare parts a square wave into its harmonics below half the converter's rate and the rest.
-func splitSquare(x chain.Interferer, rate, half float64) (inBand, folded generator) {
-	var low, high sum
-	for k := 1; float64(k)*x.Frequency < half; k += 2 {
-		level := 4 / math.Pi / float64(k) * x.Level
-		low = append(low, sine{level: level, cycles: float64(k) * x.Frequency / rate})
-		high = append(high, sine{level: -level, cycles: float64(k) * x.Frequency / rate})
-	}
-	return low, append(high, square{level: x.Level, cycles: x.Frequency / rate})
 }
 
 // splitNoise parts a band of noise at half the converter's rate; the two parts are independent, as bands of

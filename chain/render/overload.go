@@ -112,10 +112,11 @@ type watcher struct {
 	Steps       int64
 }
 
-// touch tells that the limit held at a step, and by which ratio the linear chain would have passed it.
-func (w *watcher) touch(step int64, ratio float64) {
-	w.Steps++
-	if w.open && float64(step-w.last)*w.dt > joined {
+// touch tells that the limit held at a step that stands for several up to it, and by which ratio the linear chain would
+// have passed it.
+func (w *watcher) touch(step int64, ratio float64, several int64) {
+	w.Steps += several
+	if w.open && float64(step-w.last)*w.dt > math.Max(joined, 1.5*float64(several)*w.dt) {
 		w.close()
 	}
 	if !w.open {

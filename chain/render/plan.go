@@ -4,20 +4,29 @@ import (
 	"math"
 	"math/cmplx"
 
+	"midrail/bilinear"
 	"midrail/chain/circuit"
 )
 
-// Plan is how finely a run steps the circuit.
+// Plan is how finely a run steps the circuit: from the tracks' rate sound is interpolated to a base rate, a multiple of
+// the converter's at least twice the tracks' rate, and from there by doublings to the internal rate.
 type Plan struct {
-	Steps        int     // internal steps for each conversion, M
-	Rate         float64 // Hz, fi = M·fc
+	Base         int     // base samples for each conversion
+	Doublings    int     // internal rate = base rate·2^Doublings
+	Rate         float64 // Hz, the internal rate
 	LargestError float64 // dB, the largest difference between stepped and exact response up to To
 	To           float64 // Hz, the highest frequency that the tracks hold
 }
 
+// Steps returns the internal steps for each conversion.
+func (p Plan) Steps() int { return p.Base << p.Doublings }
+
+// baseRate returns the base rate in Hz.
+func (p Plan) baseRate() float64 { return p.Rate / float64(int64(1)<<p.Doublings) }
+
 const (
 	// accuracy is the largest error of the stepped response that a run accepts, in dB.
-	accuracy = 0.05
+	accuracy = 0.01
 	// unheard is how far below its peak a response may lie before its error no longer counts.
 	unheard = 1e-7
 	// perInterferer is how many steps the shortest period of an interferer gets at least.
@@ -26,26 +35,25 @@ const (
 	gridPoints = 96
 )
 
-// NewPlan chooses the internal rate for tracks that hold frequencies up to the given one in Hz.
+// NewPlan chooses the rates for tracks that hold frequencies up to the given one in Hz.
 //
 // The bilinear transform of the whole circuit is exact but for its warped frequency axis: at f it has the
 // circuit's response at (fi/π)·tan(πf/fi). For n poles the error is about n·8.69·(πf/fi)²/3 dB.
 func NewPlan(n *circuit.Network, to float64) Plan {
 	fc := n.Chain.Converter.Rate
-	least := 4 * to
+	p := Plan{Base: int(math.Ceil(4 * to / fc * (1 - 1e-12))), To: to}
+	least := 0.
 	for _, x := range n.Chain.Interferers {
 		least = math.Max(least, perInterferer*(x.Frequency+x.Bandwidth))
 	}
-	p := Plan{Steps: max(1, int(math.Ceil(least/fc))), To: to}
-	for {
-		p.Rate = float64(p.Steps) * fc
-		p.LargestError = warpError(n, p.Rate, to)
-		if p.LargestError <= accuracy {
+	for p.Doublings = 1; ; p.Doublings++ {
+		p.Rate = fc * float64(p.Steps())
+		if p.Rate < least {
+			continue
+		}
+		if p.LargestError = warpError(n, p.Rate, to); p.LargestError <= accuracy {
 			return p
 		}
-		// The error falls as 1/fi².
-		grow := math.Sqrt(p.LargestError / accuracy)
-		p.Steps = max(p.Steps+1, int(math.Ceil(float64(p.Steps)*math.Min(grow, 4))))
 	}
 }
 
@@ -58,7 +66,7 @@ func warpError(n *circuit.Network, rate, to float64) float64 {
 	for i := range gridPoints {
 		f := to * math.Pow(10, -3*float64(i)/(gridPoints-1))
 		exact := n.At(f).Into(n.Output)
-		stepped := n.At(rate / math.Pi * math.Tan(math.Pi*f/rate)).Into(n.Output)
+		stepped := n.At(bilinear.Warped(f, rate)).Into(n.Output)
 		for in := range n.Inputs {
 			u := circuit.SoundInput(in)
 			at[in] = append(at[in], pair{cmplx.Abs(exact.Input(u)), cmplx.Abs(stepped.Input(u))})

@@ -44,6 +44,8 @@ type Options struct {
 	Seed     uint64                  // of all that is drawn by chance
 	Noise    *noise.Budget           // of the network; nil runs without noise
 	Progress func(conversions int64) // called now and then, from one goroutine; may be nil
+
+	plain bool // step every block
 }
 
 // Result is what a run found beside the sound.
@@ -109,39 +111,39 @@ func Run(ctx context.Context, n *circuit.Network, feeds []Feed, o Options, sink 
 		return nil, err
 	}
 	fc := n.Chain.Converter.Rate
-	plan := NewPlan(n, top)
+	g := newGrid(NewPlan(n, top), 2*top)
 	settle := newSettling(n)
-	sim, err := newSimulator(n, at, plan, settle)
+	// The run begins one step behind a conversion, whole blocks before the tracks do.
+	before := lead(feeds, fc)
+	blocks := (before + int64(g.conversions) - 1) / int64(g.conversions)
+	first := -blocks * int64(g.conversions)
+	feed := newFeeder(n, feeds, g, first, o.Seed)
+	sim, err := newSimulator(n, at, g, settle, feed.lanes)
 	if err != nil {
 		return nil, err
 	}
-	before := lead(feeds, fc)
-	// The last step of every conversion k is step k·M, so the run starts one past the end of conversion −before−1.
-	first := -before*int64(plan.Steps) - int64(plan.Steps) + 1
+	sim.always = sim.always || o.plain
 	p := &pipeline{
-		feed: newFeeder(n, feeds, plan, first, o.Seed), sim: sim,
-		conv: newConverter(n, at, settle, o),
-		next: first, conversion: -before,
-		perChunk: max(1, chunkSteps/plan.Steps),
+		feed: feed, sim: sim, conv: newConverter(n, at, settle, o),
+		conversion: first + 1, blocks: max(1, chunkBase/g.base),
 	}
 	p.conv.sink, p.conv.progress = sink, o.Progress
 	if err := p.run(ctx); err != nil {
 		return nil, err
 	}
-	return p.result(feeds, at, plan), nil
+	return p.result(at, g.plan), nil
 }
 
-// chunkSteps is about how many steps of the internal rate a chunk holds.
-const chunkSteps = 16384
+// chunkBase is about how many base samples a chunk holds.
+const chunkBase = 3072
 
 // pipeline has three goroutines pass chunks on: tracks → circuit → converter.
 type pipeline struct {
 	feed       *feeder
 	sim        *simulator
 	conv       *converter
-	next       int64 // step
-	conversion int64
-	perChunk   int
+	conversion int64 // the next chunk's first
+	blocks     int   // in a chunk
 }
 
 // work is a chunk on its way.
@@ -167,10 +169,9 @@ func (p *pipeline) run(ctx context.Context) error {
 			case <-ctx.Done():
 				return
 			case w := <-free:
-				w.chunk.first, w.out.first = p.next, p.conversion
+				w.chunk.first = p.conversion
 				w.err = p.feed.fill(w.chunk)
-				p.next += int64(p.perChunk) * int64(p.feed.plan.Steps)
-				p.conversion += int64(p.perChunk)
+				p.conversion += int64(len(w.out.slope))
 				fed <- w
 				if w.err != nil || w.chunk.end >= 0 && p.conversion >= w.chunk.end {
 					return
@@ -208,45 +209,32 @@ func (p *pipeline) run(ctx context.Context) error {
 }
 
 func (p *pipeline) newWork() *work {
-	steps := p.perChunk * p.feed.plan.Steps
-	inputs := 1 + len(p.feed.n.Inputs)
-	w := &work{chunk: &chunk{
-		wanted: make([][]float64, inputs), folded: make([][]float64, inputs),
-		inBand: make([][]float64, inputs), outOfBand: make([][]float64, inputs),
-	}, out: &conversions{}}
-	for i, s := range p.feed.sources {
-		if s == nil {
-			continue
+	g := p.sim.grid
+	w := &work{chunk: &chunk{}, out: &conversions{}}
+	for _, l := range p.feed.lanes {
+		length := p.blocks * g.steps
+		if !l.fine {
+			length = p.blocks*g.base + 2*g.reach
 		}
-		u := circuit.SoundInput(i)
-		w.chunk.wanted[u] = make([]float64, steps)
-		if s.high != nil {
-			w.chunk.folded[u] = make([]float64, steps)
-		}
+		w.chunk.lanes = append(w.chunk.lanes, make([]float64, length))
 	}
-	for _, x := range p.feed.interference.sources {
-		w.chunk.inBand[x.input] = make([]float64, steps)
-		w.chunk.outOfBand[x.input] = make([]float64, steps)
-	}
+	conversions := p.blocks * g.conversions
 	rows := func() [][]float64 {
 		r := make([][]float64, len(p.sim.ports))
 		for i := range r {
-			r[i] = make([]float64, p.perChunk)
+			r[i] = make([]float64, conversions)
 		}
 		return r
 	}
-	w.out.wanted, w.out.folded, w.out.inBand, w.out.outOfBand, w.out.overload = rows(), rows(), rows(), rows(), rows()
-	w.out.slope, w.out.supply = make([]float64, p.perChunk), make([]float64, p.perChunk)
+	for i := range w.out.parts {
+		w.out.parts[i] = rows()
+	}
+	w.out.overload, w.out.slope, w.out.supply = rows(), make([]float64, conversions), make([]float64, conversions)
 	return w
 }
 
-func (p *pipeline) result(feeds []Feed, at bilinear.Operating, plan Plan) *Result {
-	r := &Result{Plan: plan, At: at, Span: p.conv.span, Rest: p.conv.rest, Conversions: p.conv.count, Saturated: p.conv.saturated}
-	for i, s := range p.feed.sources {
-		if s != nil {
-			r.Seconds = math.Max(r.Seconds, float64(s.length())/feeds[i].Rate)
-		}
-	}
+func (p *pipeline) result(at bilinear.Operating, plan Plan) *Result {
+	r := &Result{Plan: plan, At: at, Span: p.conv.span, Rest: p.conv.rest, Conversions: p.conv.count, Saturated: p.conv.saturated, Seconds: p.feed.seconds()}
 	for i, e := range p.sim.stages {
 		rest := at.Volts[p.sim.n.StageNode(i)]
 		r.Stages = append(r.Stages, StageRange{Rest: rest, Lowest: rest + e.lowest, Highest: rest + e.highest})
@@ -353,7 +341,7 @@ func (b *Block) reset() {
 func (v *converter) one(o *conversions, k int, kept bool) {
 	unit := v.span.Unit()
 	var part [5]float64
-	for i, rows := range [...][][]float64{o.wanted, o.folded, o.inBand, o.outOfBand, o.overload} {
+	for i, rows := range [...][][]float64{o.parts[wantedPart], o.parts[foldBackPart], o.parts[inBandPart], o.parts[outOfBandPart], o.overload} {
 		other := 0.
 		if len(rows) > 1 {
 			other = rows[1][k]
@@ -389,7 +377,7 @@ func (v *converter) one(o *conversions, k int, kept bool) {
 		if d := held - v.rest; d != 0 {
 			ratio = (x - v.rest) / d
 		}
-		v.range_[side].touch(o.first+int64(k), ratio)
+		v.range_[side].touch(o.first+int64(k), ratio, 1)
 		overload += held - x
 	}
 	code := v.span.Code(held)

@@ -3,35 +3,159 @@ package render
 import (
 	"math"
 
+	"gonum.org/v1/gonum/blas/blas64"
+
 	"midrail/bilinear"
 	"midrail/chain"
 	"midrail/chain/circuit"
+	"midrail/signals/resample"
 )
 
-// same is the difference in V below which the limited run is back on the linear one.
-const same = 1e-12
+const (
+	// same is the difference in V below which the limited run is back on the linear one.
+	same = 1e-12
+	// margin is by how much less than a limit a linear run must stay at the instants that are looked at, which are at
+	// least four to a period of the tracks' highest frequency: 1/cos(π/4) is what may lie between them.
+	margin = 1.42
+	// blockBase is about how many base samples a block has.
+	blockBase = 12
+)
 
-// simulator steps the circuit through chunks: a limited run, and beside it, from the moment they part until they
-// meet again, the linear run. The layers of the linear chain are taken separately, by blocks of one conversion.
+// grid lays a run out in blocks of whole conversions.
+type grid struct {
+	plan        Plan
+	conversions int       // in a block
+	base        int       // base samples in a block
+	steps       int       // internal steps in a block
+	kernel      []float64 // that takes the base rate to the internal rate
+	reach       int       // base samples that it reaches to either side
+}
+
+func newGrid(p Plan, tracksRate float64) grid {
+	g := grid{plan: p, conversions: max(1, blockBase/p.Base)}
+	g.base = g.conversions * p.Base
+	g.steps = g.base << p.Doublings
+	g.kernel, g.reach = resample.Refinement(tracksRate/p.baseRate(), p.Doublings)
+	return g
+}
+
+// window is how many base samples a block's steps are made from.
+func (g grid) window() int { return g.base + 2*g.reach }
+
+// refine puts the internal steps that a window of base samples makes into dst. The window begins reach−1 samples before
+// the block's first instant at the base rate.
+func (g grid) refine(dst, window []float64) {
+	scale := 1 << g.plan.Doublings
+	middle := g.reach * scale
+	for j := range dst {
+		// Step j lies (j+1)/scale base samples behind the block's start, which is the window's sample reach−1.
+		at := (g.reach-1)*scale + j + 1
+		sum := 0.
+		for b := (at - middle + scale - 1) / scale; b*scale <= at+middle && b < len(window); b++ {
+			sum = math.FMA(g.kernel[middle+at-b*scale], window[b], sum)
+		}
+		dst[j] = sum
+	}
+}
+
+// fold returns m, whose columns are a block's internal steps, for the base samples that make them.
+func (g grid) fold(m blas64.General) blas64.General {
+	out := blas64.General{Rows: m.Rows, Cols: g.window(), Stride: g.window(), Data: make([]float64, m.Rows*g.window())}
+	unit, steps := make([]float64, g.window()), make([]float64, g.steps)
+	for b := range unit {
+		unit[b] = 1
+		g.refine(steps, unit)
+		unit[b] = 0
+		for r := range m.Rows {
+			sum := 0.
+			for j, v := range steps {
+				sum = math.FMA(m.Data[r*m.Stride+j], v, sum)
+			}
+			out.Data[r*out.Stride+b] = sum
+		}
+	}
+	return out
+}
+
+// cells returns m, whose columns are a block's internal steps, for the means of the steps of each base sample: close
+// enough to look for limits.
+func (g grid) cells(m blas64.General) blas64.General {
+	out := blas64.General{Rows: m.Rows, Cols: g.base, Stride: g.base, Data: make([]float64, m.Rows*g.base)}
+	scale := 1 << g.plan.Doublings
+	for r := range m.Rows {
+		for j, v := range m.Data[r*m.Stride : r*m.Stride+g.steps] {
+			out.Data[r*out.Stride+j/scale] += v
+		}
+	}
+	return out
+}
+
+// means puts the means of the steps of each base sample into dst.
+func (g grid) means(dst, steps []float64) {
+	scale := 1 << g.plan.Doublings
+	for i := range dst {
+		sum := 0.
+		for _, v := range steps[i*scale : (i+1)*scale] {
+			sum += v
+		}
+		dst[i] = sum / float64(scale)
+	}
+}
+
+// simulator takes the circuit through chunks, block by block. Each lane has the linear circuit to itself, as a map from
+// block to block; their sum is looked at where limits could be touched, and only blocks in which they could are
+// stepped, with the limits. What the limits change lives on as the difference of the limited run and the linear one.
 type simulator struct {
 	n       *circuit.Network
 	circuit *bilinear.Compiled
-	plan    Plan
+	grid    grid
+	bounds  []bilinear.Bounds
+	clip    []float64 // of each input of u; +Inf: none
+	always  bool      // step every block
 
-	limited, linear, before *bilinear.State
-	parted                  bool      // whether linear is a run of its own
-	u, uLinear              []float64 // inputs of the network
-	y, yLinear              []float64 // watched nodes
-	lastOut                 float64   // y at the output one step before
+	elements   []element
+	perInstant int // readings
 
-	watch    []int       // watched nodes
-	indexOf  map[int]int // node → index in watch
-	ports    []int       // nodes at the converter: the output and, if another, the one it shares with
-	layers   []*layerRun
+	watch      []int // watched nodes
+	indexOf    map[int]int
+	stageIndex []int // of each stage's output among them
+	ports      []int // indices of the nodes at the converter: the output and, if another, the one it shares with
+
+	advanceState, inspectState blas64.General
+	lanes                      []*laneRun
+	inputs                     int
+	coarse, fine               []inputMaps // of each input of u
+
+	linear, difference []float64 // states: the sum of the lanes'; limited minus linear
+	parted             bool      // whether difference is not 0
+	held               bool      // whether the last block could touch a limit
+	sums, fineSums     [][]float64
+	cellMeans          []float64
+	looked, moved      []float64 // readings of a block: of the linear run, and by how much the limited one differs
+	change             []float64
+
+	limitedRun, linearRun *bilinear.State
+	u, uLimited           []float64
+	y, yLinear            []float64
+	steps                 [][]float64 // of each input, a block's internal steps
+
 	stages   []excursion // of each stage's output, limited run
 	asked    []excursion // of each amplifier's internal source, linear run
 	watchers watchers
 	list     eventList
+}
+
+// inputMaps are what a block's values at one input add.
+type inputMaps struct {
+	present          bool
+	advance, inspect blas64.General
+}
+
+// laneRun is a lane's linear circuit.
+type laneRun struct {
+	*lane
+	state, next []float64
+	into        func(*conversions) [][]float64
 }
 
 // excursion is how far a voltage went from rest.
@@ -45,44 +169,32 @@ func (e *excursion) see(v float64) {
 	}
 }
 
-// layerRun is one input's linear way to the converter for one layer.
-type layerRun struct {
-	pick  func(*chunk) [][]float64
-	into  func(*conversions) [][]float64
-	input int
-	lift  *bilinear.Lifted
-	state []float64
-	after []float64 // room for the next state
-	y     []float64
-}
-
-// conversions is what the circuit gives at the converter's instants over a chunk, in volts from rest. Each layer
-// has a row for each of the simulator's ports.
+// conversions is what the circuit gives at the converter's instants over a chunk, in volts from rest. Each part has a
+// row for each of the simulator's ports.
 type conversions struct {
-	first                             int64
-	wanted, folded, inBand, outOfBand [][]float64
-	overload                          [][]float64
-	slope                             []float64 // V/s of the limited run at the output
-	supply                            []float64 // V from nominal
-	end                               int64     // as chunk.end
+	first    int64
+	parts    [parts][][]float64
+	overload [][]float64
+	slope    []float64 // V/s of the limited run at the output
+	supply   []float64 // V from nominal
+	end      int64     // as chunk.end
 }
 
-func newSimulator(n *circuit.Network, at bilinear.Operating, plan Plan, settle settling) (*simulator, error) {
-	s := &simulator{n: n, plan: plan, indexOf: map[int]int{}}
-	see := func(node int) {
+func newSimulator(n *circuit.Network, at bilinear.Operating, g grid, settle settling, lanes []*lane) (*simulator, error) {
+	s := &simulator{n: n, grid: g, indexOf: map[int]int{}, inputs: 1 + len(n.Inputs)}
+	see := func(node int) int {
 		if _, ok := s.indexOf[node]; !ok {
 			s.indexOf[node] = len(s.watch)
 			s.watch = append(s.watch, node)
 		}
+		return s.indexOf[node]
 	}
-	see(n.Output)
-	s.ports = []int{n.Output}
+	s.ports = []int{see(n.Output)}
 	if settle.from > 0 {
-		see(settle.from)
-		s.ports = append(s.ports, settle.from)
+		s.ports = append(s.ports, see(settle.from))
 	}
 	for i := range n.Chain.Stages {
-		see(n.StageNode(i))
+		s.stageIndex = append(s.stageIndex, see(n.StageNode(i)))
 	}
 	for _, a := range n.Amplifiers {
 		see(a.Plus)
@@ -90,156 +202,420 @@ func newSimulator(n *circuit.Network, at bilinear.Operating, plan Plan, settle s
 		see(a.Out)
 	}
 	var err error
-	s.circuit, err = bilinear.Compile(n.Description(), at, plan.Rate, s.watch)
+	s.circuit, err = bilinear.Compile(n.Description(), at, g.plan.Rate, s.watch)
 	if err != nil {
 		return nil, err
 	}
-	s.limited, s.linear, s.before = s.circuit.Start(), s.circuit.Start(), s.circuit.Start()
-	inputs := 1 + len(n.Inputs)
-	s.u, s.uLinear = make([]float64, inputs), make([]float64, inputs)
+	s.bounds = s.circuit.Bounds()
+	s.always = s.circuit.RestsOnLimit()
+	s.limitedRun, s.linearRun = s.circuit.Start(), s.circuit.Start()
+	s.u, s.uLimited = make([]float64, s.inputs), make([]float64, s.inputs)
 	s.y, s.yLinear = make([]float64, len(s.watch)), make([]float64, len(s.watch))
+	s.clip = make([]float64, s.inputs)
+	s.clip[circuit.SupplyInput] = math.Inf(1)
+	for i, in := range n.Inputs {
+		s.clip[circuit.SoundInput(i)] = in.Clip
+	}
 	s.stages = make([]excursion, len(n.Chain.Stages))
 	s.asked = make([]excursion, len(n.Amplifiers))
-	s.watchers = newWatchers(n, at, s.indexOf, 1/plan.Rate, &s.list)
-	s.newLayers()
+	s.watchers = newWatchers(n, at, s.indexOf, 1/g.plan.Rate, &s.list)
+	top := 2 * g.plan.To * (1 - resample.PassBand) // what interpolation lets through
+	for _, x := range n.Chain.Interferers {
+		if x.Shape == "sine" {
+			top = math.Max(top, x.Frequency)
+		} else {
+			top = math.Inf(1)
+		}
+	}
+	s.layReadings(top)
+	s.lift(lanes)
 	return s, nil
 }
 
-// portIndices returns where the ports stand among the watched nodes.
-func (s *simulator) portIndices() []int {
-	var at []int
-	for _, node := range s.ports {
-		at = append(at, s.indexOf[node])
+// element is where an element's quantities stand among the readings of one instant; −1: not read.
+type element struct{ source, slope, sense int }
+
+// layReadings decides what is read at each instant that is looked at: the watched nodes, each element's source, and
+// its slope and sense where they could come to a bound before its source does.
+func (s *simulator) layReadings(top float64) {
+	at := len(s.watch)
+	next := func(wanted bool) int {
+		if !wanted {
+			return -1
+		}
+		at++
+		return at - 1
 	}
-	return at
+	for _, b := range s.bounds {
+		// What is band-limited to top moves no faster than 2π·top times its peak (S. Bernstein 1912).
+		swing := math.Max(math.Abs(b.SourceLow), math.Abs(b.SourceHigh))
+		fastest := math.Pi * top * swing / s.grid.plan.Rate
+		s.elements = append(s.elements, element{
+			source: next(true),
+			slope:  next(!math.IsInf(b.Slew, 1) && !(fastest < b.Slew)),
+			sense:  next(!math.IsInf(b.SenseLow, -1) || !math.IsInf(b.SenseHigh, 1)),
+		})
+	}
+	s.perInstant = at
 }
 
-// newLayers prepares the linear way of every input that carries a signal, for each layer.
-func (s *simulator) newLayers() {
-	supplied := make([]bool, 1+len(s.n.Inputs)) // inputs with an interferer
-	for _, x := range s.n.Chain.Interferers {
-		in := circuit.SupplyInput
-		for i := range s.n.Chain.Inputs {
-			if s.n.Chain.Inputs[i].Name == x.Into {
-				in = circuit.SoundInput(i)
+// lift makes the maps.
+func (s *simulator) lift(lanes []*lane) {
+	g := s.grid
+	scale := 1 << g.plan.Doublings
+	var advance, inspect []bilinear.Reading
+	for k := range g.conversions {
+		last := (k+1)*g.plan.Steps() - 1
+		for _, p := range s.ports {
+			advance = append(advance, bilinear.Reading{Step: last, Of: bilinear.Node, Item: p})
+		}
+		advance = append(advance, bilinear.Reading{Step: last - 1, Of: bilinear.Node, Item: s.ports[0]})
+	}
+	for i := range g.base {
+		instant := make([]bilinear.Reading, s.perInstant)
+		put := func(at int, of bilinear.Quantity, item int) {
+			if at >= 0 {
+				instant[at] = bilinear.Reading{Step: (i+1)*scale - 1, Of: of, Item: item}
 			}
 		}
-		supplied[in] = true
-	}
-	add := func(input int, pick func(*chunk) [][]float64, into func(*conversions) [][]float64) {
-		l := s.circuit.Lift(s.plan.Steps, input, s.portIndices())
-		s.layers = append(s.layers, &layerRun{pick: pick, into: into, input: input, lift: l, state: make([]float64, l.States()), after: make([]float64, l.States()), y: make([]float64, len(s.ports))})
-	}
-	for u, interfered := range supplied {
-		if u != circuit.SupplyInput {
-			add(u, func(c *chunk) [][]float64 { return c.wanted }, func(o *conversions) [][]float64 { return o.wanted })
-			add(u, func(c *chunk) [][]float64 { return c.folded }, func(o *conversions) [][]float64 { return o.folded })
+		for w := range s.watch {
+			put(w, bilinear.Node, w)
 		}
-		if interfered {
-			add(u, func(c *chunk) [][]float64 { return c.inBand }, func(o *conversions) [][]float64 { return o.inBand })
-			add(u, func(c *chunk) [][]float64 { return c.outOfBand }, func(o *conversions) [][]float64 { return o.outOfBand })
+		for k, e := range s.elements {
+			put(e.source, bilinear.Source, k)
+			put(e.slope, bilinear.Slope, k)
+			put(e.sense, bilinear.Sense, k)
+		}
+		inspect = append(inspect, instant...)
+	}
+	s.coarse, s.fine = make([]inputMaps, s.inputs), make([]inputMaps, s.inputs)
+	states := s.circuit.States()
+	for u := range s.inputs {
+		var coarse, fine bool
+		for _, l := range lanes {
+			coarse = coarse || l.input == u && !l.fine
+			fine = fine || l.input == u && l.fine
+		}
+		if !coarse && !fine && u != circuit.SupplyInput {
+			continue
+		}
+		a, i := s.circuit.Lift(g.steps, u, advance), s.circuit.Lift(g.steps, u, inspect)
+		s.advanceState, s.inspectState = a.FromState, below(i.FromState, states)
+		ai, ii := a.FromInput, below(i.FromInput, states)
+		if coarse {
+			s.coarse[u] = inputMaps{true, g.fold(ai), g.fold(ii)}
+		}
+		if fine {
+			s.fine[u] = inputMaps{true, ai, g.cells(ii)}
 		}
 	}
+	for _, l := range lanes {
+		run := &laneRun{lane: l, state: make([]float64, s.advanceState.Rows), next: make([]float64, s.advanceState.Rows)}
+		s.lanes = append(s.lanes, run)
+	}
+	s.linear, s.difference = make([]float64, states), make([]float64, states)
+	s.change = make([]float64, s.advanceState.Rows)
+	s.looked, s.moved = make([]float64, s.inspectState.Rows), make([]float64, s.inspectState.Rows)
+	s.sums, s.fineSums, s.steps = make([][]float64, s.inputs), make([][]float64, s.inputs), make([][]float64, s.inputs)
+	for u := range s.inputs {
+		s.steps[u] = make([]float64, g.steps)
+		if s.coarse[u].present {
+			s.sums[u] = make([]float64, g.window())
+		}
+		if s.fine[u].present {
+			s.fineSums[u] = make([]float64, g.steps)
+		}
+	}
+	s.cellMeans = make([]float64, g.base)
 }
 
-// run steps the circuit through a chunk, whose length is a whole number of conversions.
+// below returns a matrix without its first rows.
+func below(m blas64.General, rows int) blas64.General {
+	m.Data, m.Rows = m.Data[rows*m.Stride:], m.Rows-rows
+	return m
+}
+
+// run takes the circuit through a chunk.
 func (s *simulator) run(c *chunk, o *conversions) {
-	s.runLayers(c, o)
-	steps := s.plan.Steps
-	for k := range o.slope {
-		for j := k * steps; j < (k+1)*steps; j++ {
-			s.step(c, j)
-		}
-		o.slope[k] = (s.y[0] - s.lastOut) * s.plan.Rate
-		o.supply[k] = s.u[circuit.SupplyInput]
-		for p, node := range s.ports {
-			o.overload[p][k] = 0
-			if s.parted {
-				i := s.indexOf[node]
-				o.overload[p][k] = s.y[i] - s.yLinear[i]
-			}
-		}
-	}
-	o.end = c.end
-}
-
-func (s *simulator) runLayers(c *chunk, o *conversions) {
-	for _, rows := range [...][][]float64{o.wanted, o.folded, o.inBand, o.outOfBand} {
-		for _, row := range rows {
+	o.first, o.end = c.first, c.end
+	for p := range o.parts {
+		for _, row := range o.parts[p] {
 			clear(row)
 		}
 	}
-	steps := s.plan.Steps
-	for _, l := range s.layers {
-		sound := l.pick(c)[l.input]
-		if sound == nil {
+	blocks := len(o.slope) / s.grid.conversions
+	step := (c.first-1)*int64(s.grid.plan.Steps()) + 1
+	for b := range blocks {
+		s.block(c, o, b, step+int64(b*s.grid.steps))
+	}
+}
+
+// block takes the circuit through the chunk's b-th block, whose first internal step is given.
+func (s *simulator) block(c *chunk, o *conversions, b int, step int64) {
+	s.gather(c, b)
+	clear(s.looked)
+	bilinear.Apply(s.looked, s.inspectState, s.linear)
+	for u := range s.inputs {
+		if s.coarse[u].present {
+			bilinear.Apply(s.looked, s.coarse[u].inspect, s.sums[u])
+		}
+		if s.fine[u].present {
+			s.grid.means(s.cellMeans, s.fineSums[u])
+			bilinear.Apply(s.looked, s.fine[u].inspect, s.cellMeans)
+		}
+	}
+	clear(s.moved)
+	if s.parted {
+		bilinear.Apply(s.moved, s.inspectState, s.difference)
+	}
+	near := s.near()
+	first := b * s.grid.conversions
+	if near || s.held || s.always {
+		s.stepBlock(o, first, step)
+	} else {
+		s.passBlock(o, first, step)
+	}
+	s.held = near
+	s.advanceLanes(c, o, b)
+}
+
+// gather sums the lanes' values over a block by input, and their states.
+func (s *simulator) gather(c *chunk, b int) {
+	clear(s.linear)
+	for u := range s.inputs {
+		clear(s.sums[u])
+		clear(s.fineSums[u])
+	}
+	for i, l := range s.lanes {
+		for k := range s.linear {
+			s.linear[k] += l.state[k]
+		}
+		sum := s.sums[l.input]
+		if l.fine {
+			sum = s.fineSums[l.input]
+		}
+		for k, v := range s.valuesOf(c, i, b) {
+			sum[k] += v
+		}
+	}
+}
+
+// valuesOf returns a lane's values for the chunk's b-th block.
+func (s *simulator) valuesOf(c *chunk, lane, b int) []float64 {
+	if s.lanes[lane].fine {
+		return c.lanes[lane][b*s.grid.steps : (b+1)*s.grid.steps]
+	}
+	return c.lanes[lane][b*s.grid.base : b*s.grid.base+s.grid.window()]
+}
+
+// near tells whether the block could touch a limit.
+func (s *simulator) near() bool {
+	supply := 0.
+	for u, clip := range s.clip {
+		if u != circuit.SupplyInput && math.IsInf(clip, 1) {
 			continue
 		}
-		into := l.into(o)
-		for k := range o.slope {
-			l.lift.Step(l.state, sound[k*steps:(k+1)*steps], l.y, l.after)
-			for p, v := range l.y {
-				into[p][k] += v
+		most := (largest(s.sums[u]) + largest(s.fineSums[u])) * margin
+		if most >= clip {
+			return true
+		}
+		if u == circuit.SupplyInput {
+			supply = most
+		}
+	}
+	n := s.perInstant
+	for at := 0; at < len(s.looked); at += n {
+		z, d := s.looked[at:at+n], s.moved[at:at+n]
+		for k := range s.bounds {
+			b, e := &s.bounds[k], s.elements[k]
+			rails := 0. // the supply moves the amplifiers' limits
+			if k < len(s.n.Amplifiers) {
+				rails = supply
+			}
+			if v := (z[e.source] + d[e.source]) * margin; v >= b.SourceHigh-rails || v <= b.SourceLow+rails {
+				return true
+			}
+			if e.slope >= 0 && math.Abs(z[e.slope]+d[e.slope])*margin >= b.Slew {
+				return true
+			}
+			if e.sense >= 0 {
+				if v := (z[e.sense] + d[e.sense]) * margin; v >= b.SenseHigh || v <= b.SenseLow {
+					return true
+				}
 			}
 		}
 	}
+	return false
 }
 
-// step takes the limited run, and the linear one where they have parted, to the chunk's j-th step.
-func (s *simulator) step(c *chunk, j int) {
-	clipped := s.inputs(c, j)
-	s.lastOut = s.y[0]
-	var touched bool
+// largest returns the largest magnitude.
+func largest(x []float64) float64 {
+	high, low := 0., 0.
+	for _, v := range x {
+		if v > high {
+			high = v
+		} else if v < low {
+			low = v
+		}
+	}
+	return math.Max(high, -low)
+}
+
+// passBlock takes the limited run through a block in which no limit is near: it differs from the linear run by what
+// is left of the difference.
+func (s *simulator) passBlock(o *conversions, first int, step int64) {
+	n := s.perInstant
+	scale := int64(1) << s.grid.plan.Doublings
+	for i, at := 0, 0; at < len(s.looked); i, at = i+1, at+n {
+		z, d := s.looked[at:at+n], s.moved[at:at+n]
+		for k := range s.asked {
+			s.asked[k].see(z[s.elements[k].source])
+		}
+		if s.parted {
+			for j := range z {
+				z[j] += d[j]
+			}
+		}
+		for k := range s.stages {
+			s.stages[k].see(z[s.stageIndex[k]])
+		}
+		s.watchers.watch(z, func(k int) float64 { return z[s.elements[k].source] }, step+int64(i+1)*scale-1, scale)
+	}
+	for p := range s.ports {
+		clear(o.overload[p][first : first+s.grid.conversions])
+	}
+	clear(o.slope[first : first+s.grid.conversions])
 	if !s.parted {
-		s.before.CopyFrom(s.limited)
-		touched = s.circuit.Step(s.limited, s.u, s.y) || clipped
-		if touched {
-			s.parted = true
-			s.linear, s.before = s.before, s.linear
-			s.circuit.StepLinear(s.linear, s.uLinear, s.yLinear)
+		return
+	}
+	clear(s.change)
+	bilinear.Apply(s.change, s.advanceState, s.difference)
+	readings := s.change[len(s.difference):]
+	for k := range s.grid.conversions {
+		r := readings[k*(len(s.ports)+1):]
+		for p := range s.ports {
+			o.overload[p][first+k] = r[p]
 		}
-	} else {
-		touched = s.circuit.Step(s.limited, s.u, s.y) || clipped
-		s.circuit.StepLinear(s.linear, s.uLinear, s.yLinear)
-		if !touched && s.circuit.Distance(s.limited, s.linear) < same {
-			s.parted = false
-			s.limited.CopyFrom(s.linear)
-			copy(s.y, s.yLinear)
-		}
+		o.slope[first+k] = (r[0] - r[len(s.ports)]) * s.grid.plan.Rate
 	}
-	linear := s.limited
-	if s.parted {
-		linear = s.linear
-	}
-	for i := range s.asked {
-		s.asked[i].see(linear.E[i])
-	}
-	for i := range s.stages {
-		s.stages[i].see(s.y[s.indexOf[s.n.StageNode(i)]])
-	}
-	s.watchers.see(s, linear, c.first+int64(j), touched)
+	copy(s.difference, s.change)
+	s.settleDifference()
 }
 
-// inputs sets u to what the sound and the interferers make at the chunk's j-th step, and reports whether a
-// microphone passed less than it was given.
-func (s *simulator) inputs(c *chunk, j int) (clipped bool) {
-	for i := range s.u {
-		v := 0.
-		for _, layer := range [...][][]float64{c.wanted, c.folded, c.inBand, c.outOfBand} {
-			if layer[i] != nil {
-				v += layer[i][j]
-			}
-		}
-		s.u[i], s.uLinear[i] = v, v
+// settleDifference drops a difference that no longer is one.
+func (s *simulator) settleDifference() {
+	s.parted = s.circuit.Size(s.difference) >= same
+	if !s.parted {
+		clear(s.difference)
 	}
-	for i, in := range s.n.Inputs {
-		if u := circuit.SoundInput(i); math.Abs(s.u[u]) > in.Clip {
-			s.watchers.tooLoud(i, c.first+int64(j), math.Abs(s.u[u])/in.Clip)
-			s.u[u] = math.Copysign(in.Clip, s.u[u])
+}
+
+// stepBlock steps the linear and the limited run through a block.
+func (s *simulator) stepBlock(o *conversions, first int, step int64) {
+	for u := range s.inputs {
+		clear(s.steps[u])
+		if s.coarse[u].present {
+			s.grid.refine(s.steps[u], s.sums[u])
+		}
+		for j, v := range s.fineSums[u] {
+			s.steps[u][j] += v
+		}
+	}
+	s.circuit.Unpack(s.linearRun, s.linear)
+	for i, d := range s.difference {
+		s.change[i] = s.linear[i] + d
+	}
+	s.circuit.Unpack(s.limitedRun, s.change[:len(s.difference)])
+	everTouched := false
+	perConversion := s.grid.plan.Steps()
+	for j := range s.grid.steps {
+		clipped := s.inputsAt(j, step)
+		before := s.y[s.ports[0]] - s.yLinear[s.ports[0]]
+		touched := s.circuit.Step(s.limitedRun, s.uLimited, s.y) || clipped
+		s.circuit.StepLinear(s.linearRun, s.u, s.yLinear)
+		everTouched = everTouched || touched
+		for k := range s.asked {
+			s.asked[k].see(s.linearRun.E[k])
+		}
+		for k := range s.stages {
+			s.stages[k].see(s.y[s.stageIndex[k]])
+		}
+		if touched {
+			s.watchers.touched(s, step+int64(j))
+		}
+		s.watchers.watch(s.y, func(k int) float64 { return s.limitedRun.E[k] }, step+int64(j), 1)
+		if (j+1)%perConversion == 0 {
+			k := first + j/perConversion
+			for p, i := range s.ports {
+				o.overload[p][k] = 0
+				if everTouched || s.parted {
+					o.overload[p][k] = s.y[i] - s.yLinear[i]
+				}
+			}
+			o.slope[k] = (s.y[s.ports[0]] - s.yLinear[s.ports[0]] - before) * s.grid.plan.Rate
+		}
+	}
+	if everTouched || s.parted {
+		s.circuit.Pack(s.difference, s.limitedRun)
+		s.circuit.Pack(s.change, s.linearRun)
+		for i := range s.difference {
+			s.difference[i] -= s.change[i]
+		}
+		s.settleDifference()
+	}
+}
+
+// inputsAt sets u to the block's j-th step, and reports whether a microphone passed less than it was given.
+func (s *simulator) inputsAt(j int, step int64) (clipped bool) {
+	for u := range s.u {
+		v := s.steps[u][j]
+		s.u[u], s.uLimited[u] = v, v
+		if clip := s.clip[u]; math.Abs(v) > clip {
+			s.watchers.loud[u-1].touch(step+int64(j), math.Abs(v)/clip, 1)
+			s.uLimited[u] = math.Copysign(clip, v)
 			clipped = true
 		}
 	}
 	return clipped
+}
+
+// advanceLanes takes every lane through a block.
+func (s *simulator) advanceLanes(c *chunk, o *conversions, b int) {
+	states := len(s.linear)
+	first := b * s.grid.conversions
+	for i, l := range s.lanes {
+		clear(l.next)
+		bilinear.Apply(l.next, s.advanceState, l.state[:states])
+		m := s.coarse[l.input]
+		if l.fine {
+			m = s.fine[l.input]
+		}
+		bilinear.Apply(l.next, m.advance, s.valuesOf(c, i, b))
+		rows := o.parts[l.part]
+		for k := range s.grid.conversions {
+			r := l.next[states+k*(len(s.ports)+1):]
+			for p := range s.ports {
+				rows[p][first+k] += r[p]
+			}
+			o.slope[first+k] += (r[0] - r[len(s.ports)]) * s.grid.plan.Rate
+		}
+		l.state, l.next = l.next, l.state
+	}
+	for k := range s.grid.conversions {
+		o.supply[first+k] = s.supplyAt(k)
+	}
+}
+
+// supplyAt returns the supply's deviation at the block's k-th conversion.
+func (s *simulator) supplyAt(k int) float64 {
+	v := 0.
+	if sum := s.sums[circuit.SupplyInput]; sum != nil {
+		v += sum[s.grid.reach-1+(k+1)*s.grid.plan.Base]
+	}
+	if sum := s.fineSums[circuit.SupplyInput]; sum != nil {
+		v += sum[(k+1)*s.grid.plan.Steps()-1]
+	}
+	return v
 }
 
 // watchers are all that is watched for overload.
@@ -252,9 +628,9 @@ type watchers struct {
 
 type amplifierWatch struct {
 	high, low, slew, commonMode, current *watcher
-	rest, lowest, highest                float64 // V of the internal source: at rest, and its limits from rest
+	lowest, highest                      float64 // V, the limits of the internal source from rest
 	plus, minus, out                     int     // indices of the watched nodes
-	commonLow, commonHigh                float64 // V from rest that (+) may reach, and (−) with it
+	plusLow, plusHigh                    float64 // V from rest
 	minusLow, minusHigh                  float64
 	restCurrent, conductance             float64 // A out of the output at rest; S, 1/Ro
 	source, sink                         float64 // A
@@ -276,14 +652,14 @@ func newWatchers(n *circuit.Network, at bilinear.Operating, indexOf map[int]int,
 	for k, a := range n.Amplifiers {
 		m := a.Model
 		supply := n.Chain.Supply.Voltage
-		e := at.Sources[k]
+		e, plus, minus := at.Sources[k], at.Volts[a.Plus], at.Volts[a.Minus]
 		aw := amplifierWatch{
 			high: one(a.Name, UpperLimit), low: one(a.Name, LowerLimit), slew: one(a.Name, Slew),
 			commonMode: one(a.Name, CommonMode), current: one(a.Name, OutputCurrent),
-			rest: e, lowest: a.Low - e, highest: a.High - e,
+			lowest: a.Low - e, highest: a.High - e,
 			plus: indexOf[a.Plus], minus: indexOf[a.Minus], out: indexOf[a.Out],
-			commonLow: m.CommonModeLow - at.Volts[a.Plus], commonHigh: supply - m.CommonModeHigh - at.Volts[a.Plus],
-			minusLow: m.CommonModeLow - at.Volts[a.Minus], minusHigh: supply - m.CommonModeHigh - at.Volts[a.Minus],
+			plusLow: m.CommonModeLow - plus, plusHigh: supply - m.CommonModeHigh - plus,
+			minusLow: m.CommonModeLow - minus, minusHigh: supply - m.CommonModeHigh - minus,
 			source: m.CurrentSource, sink: m.CurrentSink,
 			slewStep: m.SlewRate * dt / 2,
 		}
@@ -308,40 +684,43 @@ func newWatchers(n *circuit.Network, at bilinear.Operating, indexOf map[int]int,
 	return w
 }
 
-func (w *watchers) tooLoud(input int, step int64, ratio float64) { w.loud[input].touch(step, ratio) }
-
-// see looks at the state after a step.
-func (w *watchers) see(s *simulator, linear *bilinear.State, step int64, touched bool) {
-	if touched {
-		w.union++
-		for k := range w.amplifiers {
-			a := &w.amplifiers[k]
-			switch s.limited.Pieces[k] {
-			case bilinear.High:
-				a.high.touch(step, linear.E[k]/a.highest)
-			case bilinear.Low:
-				a.low.touch(step, linear.E[k]/a.lowest)
-			case bilinear.SlewUp, bilinear.SlewDown:
-				a.slew.touch(step, math.Abs(linear.E[k]-linear.H[k])/a.slewStep)
-			}
-		}
-		for i := range w.capsules {
-			c := &w.capsules[i]
-			switch s.limited.Pieces[c.element] {
-			case bilinear.CutOff:
-				c.cutOff.touch(step, math.Abs(s.u[c.input])/c.current)
-			case bilinear.Saturated:
-				c.saturated.touch(step, 0)
-			}
-		}
-	}
+// touched notes which limits hold at a step.
+func (w *watchers) touched(s *simulator, step int64) {
+	w.union++
+	linear := s.linearRun
 	for k := range w.amplifiers {
 		a := &w.amplifiers[k]
-		if p, m := s.y[a.plus], s.y[a.minus]; p > a.commonHigh || p < a.commonLow || m > a.minusHigh || m < a.minusLow {
-			a.commonMode.touch(step, 0)
+		switch s.limitedRun.Pieces[k] {
+		case bilinear.High:
+			a.high.touch(step, linear.E[k]/a.highest, 1)
+		case bilinear.Low:
+			a.low.touch(step, linear.E[k]/a.lowest, 1)
+		case bilinear.SlewUp, bilinear.SlewDown:
+			// Twice what is left to the history is half a step's slope.
+			a.slew.touch(step, math.Abs(linear.H[k]-linear.E[k])/a.slewStep, 1)
 		}
-		if i := a.restCurrent + (s.limited.E[k]-s.y[a.out])*a.conductance; i > a.source || -i > a.sink {
-			a.current.touch(step, math.Max(i/a.source, -i/a.sink))
+	}
+	for i := range w.capsules {
+		c := &w.capsules[i]
+		switch s.limitedRun.Pieces[c.element] {
+		case bilinear.CutOff:
+			c.cutOff.touch(step, math.Abs(s.u[c.input])/c.current, 1)
+		case bilinear.Saturated:
+			c.saturated.touch(step, 0, 1)
+		}
+	}
+}
+
+// watch notes amplifiers outside their common-mode range or beyond their output current at a step that stands for
+// several. source gives the internal source of an amplifier, y the watched nodes, both from rest.
+func (w *watchers) watch(y []float64, source func(k int) float64, step, several int64) {
+	for k := range w.amplifiers {
+		a := &w.amplifiers[k]
+		if p, m := y[a.plus], y[a.minus]; p > a.plusHigh || p < a.plusLow || m > a.minusHigh || m < a.minusLow {
+			a.commonMode.touch(step, 0, several)
+		}
+		if i := a.restCurrent + (source(k)-y[a.out])*a.conductance; i > a.source || -i > a.sink {
+			a.current.touch(step, math.Max(i/a.source, -i/a.sink), several)
 		}
 	}
 }

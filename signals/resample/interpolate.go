@@ -11,9 +11,9 @@ import (
 )
 
 const (
-	// passBand is how much of the source's rate passes flat; images then lie from 1 − passBand on. A track's sound
+	// PassBand is how much of the source's rate passes flat; images then lie from 1 − PassBand on. A track's sound
 	// between it and half the rate passes with the filter's slope, −6 dB at half the rate, and so do its images.
-	passBand = 0.46
+	PassBand = 0.46
 	// mostPhases is the largest denominator of a ratio of rates that gets exact phases.
 	mostPhases = 1024
 	// tablePhases is the number of phases between which the kernel is interpolated for all other ratios: the error
@@ -108,7 +108,7 @@ type sincStage struct {
 
 func newSincStage(src signals.Stream, from, to float64, srcFirst, first int64) *sincStage {
 	s := &sincStage{src: src, ratio: from / to, next: first}
-	s.reach = taps(2*math.Pi*(1-2*passBand)) / 2
+	s.reach = taps(2*math.Pi*(1-2*PassBand)) / 2
 	s.num, s.den = fraction(s.ratio)
 	phases := int64(tablePhases)
 	if s.den > 0 {
@@ -238,8 +238,8 @@ func newHalfStage(src stage, taps []float64, first int64) *halfStage {
 
 // halfBand returns the taps for a source that holds the original's rate times share of its own.
 func halfBand(share float64) []float64 {
-	// The source's sound ends at (1 − passBand) of the original's rate; its image begins that far below its own rate.
-	top := (1 - passBand) * share
+	// The source's sound ends at (1 − PassBand) of the original's rate; its image begins that far below its own rate.
+	top := (1 - PassBand) * share
 	// At the doubled rate the filter may fall from top/2 to (1−top)/2.
 	pairs := max(2, (taps(2*math.Pi*(0.5-top))+3)/4)
 	w := make([]float64, pairs)
@@ -284,4 +284,39 @@ func (h *halfStage) fill(dst []float64) error {
 	h.buffer = h.buffer[:copy(h.buffer, h.buffer[drop:])]
 	h.origin += drop
 	return nil
+}
+
+// Refinement returns the kernel by which half-band filters take a stream to 2^doublings times its rate: what a sample
+// of 1 among zeros becomes, from −reach to reach of the stream's samples, both included; reach·2^doublings values stand
+// on either side of the middle one. The stream holds the original's rate times share of its own, share ½ or less.
+func Refinement(share float64, doublings int) (kernel []float64, reach int) {
+	kernel = []float64{1}
+	for d := range doublings {
+		taps := halfBand(share / float64(int64(1)<<d))
+		middle := len(kernel) / 2
+		at := func(i int) float64 {
+			if i += middle; i < 0 || i >= len(kernel) {
+				return 0
+			}
+			return kernel[i]
+		}
+		side := 2*middle + 2*len(taps) - 1
+		finer := make([]float64, 2*side+1)
+		for i := -side; i <= side; i++ {
+			if i%2 == 0 {
+				finer[i+side] = at(i / 2)
+				continue
+			}
+			k := floorHalf(int64(i)) // between k and k+1
+			for j, w := range taps {
+				finer[i+side] += w * (at(int(k)-j) + at(int(k)+1+j))
+			}
+		}
+		kernel = finer
+	}
+	scale := 1 << doublings
+	reach = (len(kernel)/2 + scale - 1) / scale
+	padded := make([]float64, 2*reach*scale+1)
+	copy(padded[reach*scale-len(kernel)/2:], kernel)
+	return padded, reach
 }
