@@ -21,19 +21,19 @@ type Chain struct {
 	Converter   Converter
 	Interferers []Interferer
 	Limits      Limits
-	Warnings    []Fault // what reads well but is likely not meant, such as the capacitor code "100"
+	Warnings    []Fault // what reads well but may not be meant, such as the capacitor code "100"; in the order of Faults
 }
 
 // Supply is the one supply that feeds the dividers and every amplifier.
 type Supply struct {
-	Voltage float64 // V, 0.5 to 60
+	Voltage float64 // V, 0.5 to 60; the amplifiers' supply, too
 	Pos     Pos
 }
 
 // Conditions are those the chain works in.
 type Conditions struct {
-	Temperature float64 // K
-	NoiseFrom   float64 // Hz, the lowest frequency that noise is counted from
+	Temperature float64 // K, 223.15 to 473.15 (−50 to 200 °C); 298.15 where not given
+	NoiseFrom   float64 // Hz, 0.001 to 1e5, the lowest frequency that noise is counted from; 20 where not given
 }
 
 // Part is one component on the board.
@@ -41,9 +41,9 @@ type Part struct {
 	Name   string  // owner and key, as in "capsule amp.r_f"; what --set takes
 	Key    string  // "r_f"
 	Unit   Unit    // Ohm or Farad
-	Value  float64 // ohms or farads
-	Ref    string  // reference on the board, as in "R7"; may be empty
-	Series string  // preferred series, "E3" to "E192"; empty means the default
+	Value  float64 // ohms, 0.01 to 1e11, or farads, 1e-14 to 1
+	Ref    string  // reference on the board, as in "R7"; empty: none
+	Series string  // preferred series, "E3" to "E192"; empty: the default
 	Pos    Pos
 }
 
@@ -61,7 +61,7 @@ type Bias struct {
 	Name        string
 	Top, Bottom Part
 	Bypass      *Part  // nil: none
-	Buffer      string // name of the amplifier class entry that follows the divider; empty: none
+	Buffer      string // name of the amplifier that follows the divider; empty: none
 	Pos         Pos
 }
 
@@ -86,31 +86,31 @@ const (
 type Input struct {
 	Name    string
 	Kind    InputKind
-	Channel int // 1, 2, …; 0 is the mean of all channels ("mix")
+	Channel int // 1 to 64; 0 is the mean of all channels ("mix"), also where not given
 	// FullScale is the RMS value that a full-scale sine (peaks at ±1.0) has at the input:
-	// volts for a line, pascals for a microphone.
+	// volts, 1e-6 to 100, for a line, pascals, 0 to 174 dB SPL, for a microphone.
 	FullScale float64
 	// FullScaleUnit is the unit that the owner wrote it in: "Vrms", "dBu", "dBV", "dBSPL", …
 	FullScaleUnit string
 
 	// line
-	SourceResistance float64 // Ω
+	SourceResistance float64 // Ω, 0 to 1e9; 0 where not given
 
 	// electret and microphone
-	Sensitivity      float64 // V/Pa at RatedLoad for an electret, at no load for a microphone
-	OutputResistance float64 // Ω; electret: across the drain, +Inf if not given
-	SelfNoise        float64 // Pa RMS, A-weighted equivalent; 0: not given
+	Sensitivity      float64 // V/Pa, 1e-6 to 10; at RatedLoad for an electret, at no load for a microphone
+	OutputResistance float64 // Ω, to 1e9; microphone: 0 where not given; electret: 10 and more across the drain, +Inf where not given
+	SelfNoise        float64 // Pa RMS, −40 to 120 dB SPL, A-weighted equivalent, also from snr; 0: not given
 
 	// electret
-	RatedLoad      float64 // Ω
+	RatedLoad      float64 // Ω, 10 to 1e6
 	Load           Part
-	Current        float64 // A, drain current at rest
-	MinimumVoltage float64 // V, the drain does not go below it
-	SupplyFilter   *SupplyFilter
+	Current        float64       // A, 1e-6 to 0.01, drain current at rest
+	MinimumVoltage float64       // V, 0 to 20, the drain does not go below it; 0 where not given
+	SupplyFilter   *SupplyFilter // nil: none
 
 	// microphone
-	Rest         float64 // V, what its output rests at
-	MaximumLevel float64 // Pa RMS of the largest sine it passes; +Inf: not given
+	Rest         float64 // V, 0 to 60, what its output rests at; 0 where not given
+	MaximumLevel float64 // Pa RMS, 40 to 194 dB SPL, of the largest sine it passes; +Inf: not given, and of the other kinds
 
 	Pos Pos
 }
@@ -127,8 +127,8 @@ type Stage struct {
 	Legs      []Leg    // summer and passive sum
 	Amplifier string   // name of an entry in Chain.Amplifiers; empty: none
 	Bias      string   // name of an entry in Chain.Biases; empty: none
-	Leg       string   // non-inverting: "ground" or "bias", where r_g ends
-	To        string   // rc high-pass and divider: "ground" or "bias"
+	Leg       string   // non-inverting: "ground", also where not given, or "bias", where r_g ends; else empty
+	To        string   // rc high-pass and divider: "ground", also where not given, or "bias"; else empty
 	Pick      string   // select: the one of From that is passed on
 	Pos       Pos
 }
@@ -153,50 +153,50 @@ type Leg struct {
 // Converter is the sampling converter at the end of the chain.
 type Converter struct {
 	From         string  // stage (or input) it samples
-	Rate         float64 // Hz; from clock and divide where those are given
+	Rate         float64 // Hz, 100 to 1e7; from clock and divide where those are given
 	Bits         int     // 1 to 24
-	Low, High    float64 // V; its span
+	Low, High    float64 // V, −60 to 60; its span is 1 mV and more; Low is 0 where not given
 	HighIsSupply bool    // high = "supply": ratiometric
 
-	SwitchResistance  float64 // Ω
-	SamplingCapacitor float64 // F; 0: none
-	Acquisition       float64 // s
-	PinCapacitor      float64 // F
+	SwitchResistance  float64 // Ω, 0 to 1e6; 0 where not given
+	SamplingCapacitor float64 // F, 1e-15 to 1e-6; 0: none
+	Acquisition       float64 // s, 1e-10 to a sample; 0: no SamplingCapacitor
+	PinCapacitor      float64 // F, 1e-15 to 1e-3; 0: none
 	SharesWith        string  // "": its own last sample; "ground"; or the name of a stage on the same multiplexer
 
-	ENOB   float64 // effective bits; 0: not given
-	Jitter float64 // s RMS, of the sampling instant
+	ENOB   float64 // effective bits, 1 to Bits; 0: not given
+	Jitter float64 // s RMS, 0 to 0.001, of the sampling instant
 	Pos    Pos
 }
 
 // Interferer is an unwanted signal that enters at an input or at the supply.
 type Interferer struct {
 	Into      string  // an input's name, or "supply"
-	Frequency float64 // Hz; 0 for noise from DC
-	Shape     string  // "sine", "square" or "noise"
+	Frequency float64 // Hz, 0.01 to 1e7; 0 for noise from DC
+	Shape     string  // "sine", also where not given, "square" or "noise"
 	// Level is the peak for a sine or a square and the RMS for noise: volts at a line input or the
 	// supply, pascals at a microphone.
 	Level     float64
-	Bandwidth float64 // Hz, of noise: centred on Frequency, or from 0 where Frequency is 0
+	Bandwidth float64 // Hz, 1 to 1e7, of noise: centred on Frequency, which is half of it or more, or from 0 where Frequency is 0
 	Pos       Pos
 }
 
 // Limits are what the owner wants the run to hold; nil pointers are limits not set.
 type Limits struct {
 	OverloadTime        *float64 // share of the track's time, 0 to 1
-	FoldBack            *float64 // dBFS
-	FoldBackBelowWanted *float64 // dB
-	Interference        *float64 // dBFS
-	Noise               *float64 // dBFS
-	Room                *float64 // dB
+	FoldBack            *float64 // dBFS, −200 to 20
+	FoldBackBelowWanted *float64 // dB, 0 to 200
+	Interference        *float64 // dBFS, −200 to 20
+	Noise               *float64 // dBFS, −200 to 20
+	Room                *float64 // dB, −60 to 100
 	Droop               *Droop
-	Settling            *float64 // s
+	Settling            *float64 // s, 1e-6 to 1e4
 }
 
 // Droop limits the loss at a frequency, relative to the mid-band gain.
 type Droop struct {
-	At  float64 // Hz
-	Max float64 // dB
+	At  float64 // Hz, 0.1 to 1e7
+	Max float64 // dB, 0 to 100
 }
 
 // StageNamed returns the stage of that name, or nil.

@@ -10,13 +10,14 @@ import (
 
 // What names are of.
 const (
-	anInput      = "input"
-	aStage       = "stage"
-	aBias        = "bias"
-	anAmplifier  = "amplifier"
-	longestName  = 200 // runes
-	inTheirOrder = "inputs, stages, biases and amplifiers share one set of names"
+	anInput     = "input"
+	aStage      = "stage"
+	aBias       = "bias"
+	anAmplifier = "amplifier"
 )
+
+// longestName is the length of the longest name in runes.
+const longestName = 200
 
 // given is a name that the file gives to something.
 type given struct {
@@ -50,8 +51,8 @@ func (r *reader) give(name, thing string, at place) {
 	}
 	for _, other := range r.names {
 		if other.name == name {
-			r.fault(at, fmt.Sprintf("the name %q is that of %s already", short(name), article(other.thing)), inTheirOrder+"; choose another")
-			r.unsure = true
+			r.fault(at, fmt.Sprintf("the name %q is that of %s already", short(name), article(other.thing)), "choose another: inputs, stages, biases and amplifiers share one set of names")
+			r.unsure, r.twice = true, true
 			return
 		}
 	}
@@ -59,7 +60,7 @@ func (r *reader) give(name, thing string, at place) {
 }
 
 func article(thing string) string {
-	if thing == anInput || thing == anAmplifier {
+	if strings.ContainsRune("aeiou", rune(thing[0])) {
 		return "an " + thing
 	}
 	return "a " + thing
@@ -86,7 +87,9 @@ func (r *reader) checkNames(c *Chain) {
 	for _, ref := range r.references {
 		r.resolve(ref)
 	}
-	r.cycles(c)
+	if !r.twice {
+		r.cycles(c)
+	}
 	if r.unsure {
 		return
 	}
@@ -113,7 +116,7 @@ func (r *reader) resolve(ref reference) {
 	what := ""
 	for _, g := range r.names {
 		if slices.Contains(ref.things, g.thing) {
-			could = append(could, g.name)
+			could = append(could, short(g.name))
 		}
 		if g.name == ref.name {
 			what = g.thing
@@ -123,6 +126,9 @@ func (r *reader) resolve(ref reference) {
 		return
 	}
 	r.unsure = true
+	if r.unnamed && what == "" && slices.Contains(ref.things, aStage) {
+		return
+	}
 	wanted := strings.Join(ref.things, " or ")
 	otherwise := "there is none yet; add one"
 	if len(could) > 0 {
@@ -169,9 +175,11 @@ func (r *reader) cycles(c *Chain) {
 			return
 		}
 		if i := slices.Index(path, name); i >= 0 {
-			round := append(slices.Clone(path[i:]), name)
-			r.fault(place{pos: s.Pos}, fmt.Sprintf("stages go round in a circle: %s", strings.Join(round, " → ")), "let each come from an input or from a stage nearer to one")
 			r.unsure = true
+			if len(r.faults) < mostFaults { // a circle's text may be long
+				round := append(slices.Clone(path[i:]), name)
+				r.fault(place{pos: s.Pos}, "stages go round in a circle: "+strings.Join(round, " → "), "let each come from an input or from a stage nearer to one")
+			}
 			return
 		}
 		path = append(path, name)

@@ -65,7 +65,7 @@ func (r *reader) chain(root *node) *Chain {
 		s.done()
 	}
 	if s := t.sub("conditions", May); s != nil {
-		c.Conditions.Temperature = s.si("temperature", May, quantity.Temperature, 200, 500, c.Conditions.Temperature)
+		c.Conditions.Temperature = s.si("temperature", May, quantity.Temperature, 223.15, 473.15, c.Conditions.Temperature)
 		c.Conditions.NoiseFrom = s.si("noise_from", May, quantity.Frequency, 1e-3, 1e5, c.Conditions.NoiseFrom)
 		s.done()
 	}
@@ -293,7 +293,7 @@ func (t *table) stage() (s Stage, ok bool) {
 	if e := t.get("name"); s.Name != "" {
 		t.name = fmt.Sprintf("stage %q", short(s.Name))
 		t.give(s.Name, aStage, e.node.at)
-	} else if t.unsure = true; e != nil && e.shape == textShape {
+	} else if t.unsure, t.unnamed = true, true; e != nil && e.shape == textShape {
 		t.wrong(e, "the name is empty", "give it one")
 	}
 	var all []string
@@ -350,6 +350,7 @@ func (t *table) legs(stage string) []Leg {
 	tables := t.list("input", Must)
 	if e := t.get("input"); e != nil && e.shape == listShape && len(e.items) == 0 {
 		t.wrong(e, t.name+" has no input", "add [[stage.input]]")
+		t.unsure = true
 	}
 	var legs []Leg
 	seen := map[string]bool{}

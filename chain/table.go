@@ -18,8 +18,9 @@ type reader struct {
 	warnings   Faults
 	names      []given
 	references []reference
-	// unsure is set where a name could not be read, so that what seems unused may well be used.
-	unsure bool
+	unsure     bool // a use of a name could not be read: what seems unused may be used
+	unnamed    bool // a stage's name could not be read: a stage that seems not to be there may be
+	twice      bool // a name is that of two things
 }
 
 func (r *reader) fault(at place, text, remedy string) {
@@ -276,10 +277,11 @@ const longestGuess = 40
 
 // suggest returns the remedy for a word that is none of known: the one it was likely meant to be, or else.
 func suggest(word string, known []string, orElse string) string {
-	best, least := "", len([]rune(word))/3+2
-	if len([]rune(word)) > longestGuess {
+	length := len([]rune(word))
+	if length > longestGuess {
 		return orElse
 	}
+	best, least := "", max(1, length/3)+1
 	for _, k := range slices.Sorted(slices.Values(known)) {
 		if len([]rune(k)) > longestGuess {
 			continue
@@ -294,24 +296,29 @@ func suggest(word string, known []string, orElse string) string {
 	return fmt.Sprintf("did you mean %q?", best)
 }
 
-// editDistance is the number of runes to put in, take out or change to make one text the other (Levenshtein 1966).
+// editDistance is the least number of runes to put in, take out or change, and of neighbours to swap, that makes one
+// text the other, where nothing is edited twice (Damerau 1964, Levenshtein 1966).
 func editDistance(a, b string) int {
 	x, y := []rune(a), []rune(b)
-	row := make([]int, len(y)+1)
-	for j := range row {
-		row[j] = j
+	d := make([][]int, len(x)+1) // of the first i runes of x and the first j of y
+	for i := range d {
+		d[i] = make([]int, len(y)+1)
+		d[i][0] = i
 	}
-	for i, r := range x {
-		diagonal := row[0]
-		row[0] = i + 1
-		for j, s := range y {
-			change := diagonal
-			if r != s {
-				change++
+	for j := range d[0] {
+		d[0][j] = j
+	}
+	for i := 1; i <= len(x); i++ {
+		for j := 1; j <= len(y); j++ {
+			change := 1
+			if x[i-1] == y[j-1] {
+				change = 0
 			}
-			diagonal = row[j+1]
-			row[j+1] = min(change, row[j]+1, row[j+1]+1)
+			d[i][j] = min(d[i-1][j-1]+change, d[i-1][j]+1, d[i][j-1]+1)
+			if i > 1 && j > 1 && x[i-1] == y[j-2] && x[i-2] == y[j-1] {
+				d[i][j] = min(d[i][j], d[i-2][j-2]+1)
+			}
 		}
 	}
-	return row[len(y)]
+	return d[len(x)][len(y)]
 }

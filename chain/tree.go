@@ -72,7 +72,7 @@ func (n *node) put(key string, at place, value *node) *entry {
 }
 
 // mostKeys bounds the work of a hostile file: looking for keys that are there twice takes the square of their number.
-// The longest chain that is legal has about half of it.
+// A chain of a hundred stages has some two thousand.
 const mostKeys = 20_000
 
 const notTOML = `chain files are TOML, with texts and names that hold spaces in quotes; "midrail new" writes an example`
