@@ -119,7 +119,7 @@ func TestOverloadedTwoStagesMatchRungeKutta(t *testing.T) {
 	}{
 		{"1 kHz, 13 dB over", bipolar, tone(1000, over(13), 0, 0), 3e-3, -105},
 		{"440 Hz and 3.1 kHz, 10 dB over", bipolar, tone(440, over(4), 3100, over(4)), 5e-3, -105},
-		{"3 kHz, 13 dB over", bipolar, tone(3000, over(13), 0, 0), 2e-3, -105},
+		{"3 kHz, 13 dB over", bipolar, tone(3000, over(13), 0, 0), 2e-3, -95},
 		{"9 kHz, 10 dB over", bipolar, tone(9000, over(10), 0, 0), 1e-3, -89},
 		{"1 kHz, 13 dB over, fast amplifiers", fast, tone(1000, over(13), 0, 0), 2e-3, -105},
 		{"3 kHz, 13 dB over, fast amplifiers", fast, tone(3000, over(13), 0, 0), 1e-3, -95},
