@@ -1,0 +1,391 @@
+package render
+
+import (
+	"context"
+	"fmt"
+	"io"
+	"math"
+	"math/cmplx"
+	"math/rand/v2"
+	"runtime"
+	"testing"
+
+	"midrail/chain"
+	"midrail/chain/circuit"
+	"midrail/chain/noise"
+	"midrail/signals"
+	"midrail/signals/tone"
+)
+
+// sound is everything a run gave.
+type sound struct {
+	result *Result
+	layers [LayerCount][]float64
+	folded []float64
+	heard  []float64
+	codes  []int32
+}
+
+func renderAll(tb testing.TB, n *circuit.Network, o Options, tracks ...signals.Track) *sound {
+	tb.Helper()
+	feeds := make([]Feed, len(n.Inputs))
+	for i, t := range tracks {
+		feeds[i] = Feed{Sound: signals.Channels(t, 1)[0], Rate: t.Rate()}
+	}
+	s := &sound{}
+	var err error
+	s.result, err = Run(context.Background(), n, feeds, o, func(b *Block) error {
+		if b.First != int64(len(s.codes)) {
+			return fmt.Errorf("block begins at %d, not %d", b.First, len(s.codes))
+		}
+		for i, l := range b.Layers {
+			s.layers[i] = append(s.layers[i], l...)
+		}
+		s.folded = append(s.folded, b.Folded...)
+		s.heard = append(s.heard, b.Heard...)
+		s.codes = append(s.codes, b.Codes...)
+		return nil
+	})
+	if err != nil {
+		tb.Fatal(err)
+	}
+	return s
+}
+
+func parse(tb testing.TB, text string, set ...string) *circuit.Network {
+	tb.Helper()
+	c, err := chain.Read("test.toml", []byte(text), set)
+	if err != nil {
+		tb.Fatal(err)
+	}
+	return circuit.New(c)
+}
+
+// lineChain is a line input into an inverting stage of gain −1 and a Sallen-Key low-pass at 15 kHz.
+const lineChain = `
+[supply]
+voltage = "5V"
+[bias.half]
+top = "22k"
+bottom = "22k"
+bypass = "10u"
+[amplifier.one]
+class = "cmos rail-to-rail"
+[input.line]
+kind = "line"
+full_scale = "1Vrms"
+[[stage]]
+name = "amp"
+kind = "inverting"
+from = "line"
+amplifier = "one"
+bias = "half"
+c_in = "1u"
+r_in = "10k"
+r_f = "10k"
+[[stage]]
+name = "filter"
+kind = "sallen-key low-pass"
+from = "amp"
+amplifier = "one"
+r_1 = "6k8"
+r_2 = "6k8"
+c_1 = "2n2"
+c_2 = "1n"
+[converter]
+from = "filter"
+rate = 16000
+bits = 12
+low = 0
+high = 5
+`
+
+// fit returns the amplitude of the sine at f in x, whose samples are 1/rate apart, as a complex number, and the RMS of
+// what is left of x. The first skip samples and the last half as many, where the sound begins and ends, do not count.
+func fit(x []float64, f, rate float64, skip int) (complex128, float64) {
+	x = x[:len(x)-skip/2]
+	// Least squares over sine, cosine and a constant.
+	var m [3][4]float64
+	for i, v := range x[skip:] {
+		w := 2 * math.Pi * f * float64(i+skip) / rate
+		row := [4]float64{math.Cos(w), math.Sin(w), 1, v}
+		for a := range 3 {
+			for b := range 4 {
+				m[a][b] += row[a] * row[b]
+			}
+		}
+	}
+	for c := range 3 {
+		for r := c + 1; r < 3; r++ {
+			k := m[r][c] / m[c][c]
+			for j := c; j < 4; j++ {
+				m[r][j] -= k * m[c][j]
+			}
+		}
+	}
+	var p [3]float64
+	for c := 2; c >= 0; c-- {
+		p[c] = m[c][3]
+		for j := c + 1; j < 3; j++ {
+			p[c] -= m[c][j] * p[j]
+		}
+		p[c] /= m[c][c]
+	}
+	rest := 0.
+	for i, v := range x[skip:] {
+		w := 2 * math.Pi * f * float64(i+skip) / rate
+		d := v - p[0]*math.Cos(w) - p[1]*math.Sin(w) - p[2]
+		rest += d * d
+	}
+	return complex(p[1], p[0]), math.Sqrt(rest / float64(len(x)-skip))
+}
+
+// expected returns the complex amplitude in full scale that a full-scale sine has at the converter.
+func expected(n *circuit.Network, r *Result, f float64) complex128 {
+	return n.At(f).Into(n.Output).Input(circuit.SoundInput(0)) * complex(n.Inputs[0].Scale/r.Span.Unit(), 0)
+}
+
+// linearTolerance is what a run promises of its stepped response, in dB, and interpolation's ripple with it.
+const linearTolerance = accuracy + 0.001
+
+func TestTonesBelowHalfTheRateComeOutAsTheCircuitResponds(t *testing.T) {
+	n := parse(t, lineChain)
+	for _, f := range []float64{50, 440, 1000, 3000.5, 7000} {
+		s := renderAll(t, n, Options{}, tone.Sine(48000, 0.6, f, -6))
+		got, rest := fit(s.layers[Wanted], f, 16000, 3200)
+		want := expected(n, s.result, f) * complex(math.Pow(10, -6./20), 0)
+		if db := 20 * math.Log10(cmplx.Abs(got)/cmplx.Abs(want)); !(math.Abs(db) <= linearTolerance) {
+			t.Errorf("%g Hz is %.4f dB off", f, db)
+		}
+		// A phase error of 1e-3 rad is what warping leaves at most here.
+		if d := cmplx.Phase(got / want); !(math.Abs(d) <= 2e-3) {
+			t.Errorf("%g Hz is %.2g rad off", f, d)
+		}
+		if !(rest < 1e-6) {
+			t.Errorf("%g Hz leaves %.3g beside the tone", f, rest)
+		}
+		// The split lets no more than −120 dB through to the other side.
+		if fold, _ := fit(s.layers[FoldBack], f, 16000, 3200); !(cmplx.Abs(fold) < 1e-6) {
+			t.Errorf("%g Hz: %.3g of it in fold-back", f, cmplx.Abs(fold))
+		}
+	}
+}
+
+// Where a tone folds to: r = f mod fs, fs − r beyond half of it (sampling theorem).
+func TestTonesAboveHalfTheRateFold(t *testing.T) {
+	n := parse(t, lineChain)
+	for _, c := range []struct{ f, folds float64 }{{9000, 7000}, {15000, 1000}, {21000, 5000}, {17000, 1000}, {12345, 3655}} {
+		s := renderAll(t, n, Options{}, tone.Sine(48000, 0.6, c.f, -6))
+		got, rest := fit(s.layers[FoldBack], c.folds, 16000, 3200)
+		want := cmplx.Abs(expected(n, s.result, c.f)) * math.Pow(10, -6./20)
+		if db := 20 * math.Log10(cmplx.Abs(got)/want); !(math.Abs(db) <= linearTolerance) {
+			t.Errorf("%g Hz at %g Hz is %.4f dB off", c.f, c.folds, db)
+		}
+		if !(rest < 1e-6) {
+			t.Errorf("%g Hz leaves %.3g beside its image", c.f, rest)
+		}
+		if wanted, _ := fit(s.layers[Wanted], c.folds, 16000, 3200); !(cmplx.Abs(wanted) < 1e-6) {
+			t.Errorf("%g Hz: %.3g of it in wanted", c.f, cmplx.Abs(wanted))
+		}
+	}
+}
+
+// hostile are sounds that try the places where limits are looked for.
+func hostile(rate float64) map[string]signals.Track {
+	draw := rand.New(rand.NewPCG(7, 7))
+	make1 := func(f func(i int) float64) signals.Track {
+		x := make([]float64, int(0.1*rate))
+		for i := range x {
+			x[i] = f(i)
+		}
+		return &sliceTrack{rate: rate, x: x}
+	}
+	envelope := func(i int) float64 { return 0.5 + 0.5*math.Sin(2*math.Pi*3*float64(i)/rate) }
+	return map[string]signals.Track{
+		"white":  make1(func(int) float64 { return 0.3 * draw.NormFloat64() }),
+		"square": make1(func(i int) float64 { return math.Copysign(0.9*envelope(i), math.Sin(2*math.Pi*313*float64(i)/rate)) }),
+		"clicks and bursts": make1(func(i int) float64 {
+			v := 0.
+			if i%701 == 0 {
+				v = 0.99
+			}
+			if i/900%3 == 1 {
+				v += 0.7 * math.Sin(2*math.Pi*0.4375*float64(i))
+			}
+			return v
+		}),
+		"speech-like": make1(func(i int) float64 {
+			w := 2 * math.Pi * 140 * float64(i) / rate
+			return envelope(i) * envelope(i) * (0.5*math.Sin(w) + 0.3*math.Sin(3*w+1) + 0.2*math.Sin(9*w+2) + 0.1*draw.NormFloat64())
+		}),
+	}
+}
+
+type sliceTrack struct {
+	rate float64
+	x    []float64
+	at   int
+}
+
+func (s *sliceTrack) Rate() float64 { return s.rate }
+func (s *sliceTrack) Channels() int { return 1 }
+func (s *sliceTrack) Frames() int64 { return int64(len(s.x)) }
+func (s *sliceTrack) Close() error  { return nil }
+func (s *sliceTrack) ReadFrames(dst []float64) (int, error) {
+	n := copy(dst, s.x[s.at:])
+	s.at += n
+	if n < len(dst) {
+		return n, io.EOF
+	}
+	return n, nil
+}
+
+// fastTolerance is how far the lifted passages may lie from stepping every step, in V.
+const fastTolerance = 1e-12
+
+func TestLiftedPassagesAreTheSteppedOnes(t *testing.T) {
+	for _, c := range []struct {
+		name  string
+		chain string
+		set   []string
+		rate  float64
+	}{
+		{"line, loud", lineChain, []string{"amp.r_f=47k"}, 48000},
+		{"line, on the verge", lineChain, []string{"amp.r_f=18k"}, 48000},
+		{"line, soft", lineChain, []string{"amp.r_f=4k7"}, 48000},
+		{"slow amplifiers", lineChain, []string{"one.slew_rate=0.03V/us", "amp.r_f=22k"}, 48000},
+		{"44.1 kHz into 9615.38 Hz", lineChain, []string{"converter.rate=9615.38", "amp.r_f=33k"}, 44100},
+		{"into 96 kHz", lineChain, []string{"converter.rate=96k", "amp.r_f=33k"}, 48000},
+		{"supply ripple", lineChain + "[[interferer]]\ninto = \"supply\"\nfrequency = 700\nlevel = \"0.4Vpp\"\nshape = \"square\"\n[[interferer]]\ninto = \"line\"\nfrequency = \"300k\"\nlevel = \"0.1Vrms\"\n", []string{"amp.r_f=27k"}, 48000},
+	} {
+		n := parse(t, c.chain, c.set...)
+		for name, track := range hostile(c.rate) {
+			fast := renderAll(t, n, Options{}, track)
+			track.(*sliceTrack).at = 0
+			plain := renderAll(t, n, Options{plain: true}, track)
+			unit := fast.result.Span.Unit()
+			if len(fast.codes) != len(plain.codes) {
+				t.Fatalf("%s, %s: %d conversions, stepped %d", c.name, name, len(fast.codes), len(plain.codes))
+			}
+			for l := range fast.layers {
+				for i, v := range fast.layers[l] {
+					if !(math.Abs(v-plain.layers[l][i])*unit <= fastTolerance) {
+						t.Fatalf("%s, %s: %v differs by %.3g V at %d", c.name, name, Layer(l), (v-plain.layers[l][i])*unit, i)
+					}
+				}
+			}
+			if fast.result.Overloaded != plain.result.Overloaded {
+				t.Errorf("%s, %s: %g s overloaded, stepped %g s", c.name, name, fast.result.Overloaded, plain.result.Overloaded)
+			}
+		}
+	}
+}
+
+func TestLayersSumToHeard(t *testing.T) {
+	n := parse(t, lineChain+"[[interferer]]\ninto = \"supply\"\nfrequency = 1300\nlevel = \"0.1Vpp\"\n", "amp.r_f=33k", "converter.high=supply", "converter.jitter=10ns")
+	for name, track := range hostile(48000) {
+		s := renderAll(t, n, Options{Noise: noise.At(n), Seed: 3}, track)
+		half := s.result.Span.step() / 2
+		for i, heard := range s.heard {
+			parts := []float64{s.result.Rest}
+			for _, l := range s.layers {
+				parts = append(parts, l[i])
+			}
+			forward, backward := 0., 0.
+			for k := range parts {
+				forward += parts[k]
+				backward += parts[len(parts)-1-k]
+				if parts[k] != snap(parts[k]) {
+					t.Fatalf("%s: part %d of conversion %d is no multiple of 2⁻⁴⁴", name, k, i)
+				}
+			}
+			if forward != heard || backward != heard {
+				t.Fatalf("%s: conversion %d: layers sum to %.17g and %.17g, heard is %.17g", name, i, forward, backward, heard)
+			}
+			if r := s.layers[Rounding][i]; !(math.Abs(r) <= half) {
+				t.Fatalf("%s: rounding is %g, more than half a step", name, r)
+			}
+			if heard != s.result.Span.Value(s.codes[i]) {
+				t.Fatalf("%s: heard is not its code", name)
+			}
+		}
+	}
+}
+
+func TestNothingTouchedIsNoOverload(t *testing.T) {
+	n := parse(t, lineChain, "amp.r_f=3k3")
+	s := renderAll(t, n, Options{}, tone.Demo())
+	for i, v := range s.layers[Overloaded] {
+		if v != 0 {
+			t.Fatalf("overload is %g at conversion %d", v, i)
+		}
+	}
+	if len(s.result.Overloads) != 0 || s.result.Overloaded != 0 {
+		t.Errorf("overloads: %v", s.result.Overloads)
+	}
+}
+
+func TestSameBytesOnOneCoreAndSeveral(t *testing.T) {
+	n := demoNetwork(t)
+	run := func(cores int) *sound {
+		defer runtime.GOMAXPROCS(runtime.GOMAXPROCS(cores))
+		return renderAll(t, n, Options{Noise: noise.At(n), Seed: 9}, hostile(48000)["speech-like"])
+	}
+	one, four := run(1), run(4)
+	for l := range one.layers {
+		for i, v := range one.layers[l] {
+			if v != four.layers[l][i] {
+				t.Fatalf("%v differs at %d", Layer(l), i)
+			}
+		}
+	}
+}
+
+func TestConversionsAreThoseBeforeTheEnd(t *testing.T) {
+	n := parse(t, lineChain, "converter.rate=9615.38")
+	for _, frames := range []int{1, 2, 4799, 4800} {
+		s := renderAll(t, n, Options{}, &sliceTrack{rate: 48000, x: make([]float64, frames)})
+		if want := int(math.Ceil(float64(frames) * 9615.38 / 48000)); len(s.codes) != want {
+			t.Errorf("%d frames give %d conversions, want %d", frames, len(s.codes), want)
+		}
+	}
+}
+
+// SINAD of an ideal converter, 6.02·N + 1.76 dB (W. R. Bennett, 1948). The sine comes 0.1 dB below the span through a
+// chain of nothing but a resistor; the tolerance is what the finite record leaves.
+func TestRoundingIsThatOfAnIdealConverter(t *testing.T) {
+	const tolerance = 0.2 // dB
+	for _, bits := range []int{8, 10, 12} {
+		n := parse(t, wireChain, fmt.Sprintf("converter.bits=%d", bits))
+		s := renderAll(t, n, Options{}, tone.Sine(48000, 1, 997, -0.1))
+		_, rest := fit(s.heard, 997, 16000, 400)
+		amplitude := math.Pow(10, -0.1/20)
+		got := 20 * math.Log10(amplitude/math.Sqrt2/rest)
+		if want := 6.02059991328*float64(bits) + 1.760912590557 - 0.1; !(math.Abs(got-want) <= tolerance) {
+			t.Errorf("%d bits: SINAD %.2f dB, want %.2f dB", bits, got, want)
+		}
+	}
+}
+
+// wireChain is a microphone that rests mid-span, straight into the converter: a sample of ±1.0 fills the span.
+const wireChain = `
+[supply]
+voltage = "5V"
+[input.line]
+kind = "microphone"
+sensitivity = "1V/Pa"
+rest = "1V"
+full_scale = "90.9691001300805dBSPL"
+[[stage]]
+name = "wire"
+kind = "divider"
+from = "line"
+r_top = "0.01"
+r_bottom = "100M"
+[converter]
+from = "wire"
+rate = 16000
+bits = 10
+low = 0
+high = 2
+`
