@@ -31,10 +31,13 @@ func besselI0(x float64) float64 {
 	return sum
 }
 
-// sinc is sin(πx)/(πx).
+// sinc is sin(πx)/(πx), exactly 0 at whole numbers but 0.
 func sinc(x float64) float64 {
 	if x == 0 {
 		return 1
+	}
+	if x == math.Trunc(x) {
+		return 0
 	}
 	return math.Sin(math.Pi*x) / (math.Pi * x)
 }

@@ -4,6 +4,7 @@ import (
 	"errors"
 	"io"
 	"math"
+	"slices"
 
 	"gonum.org/v1/gonum/floats"
 
@@ -15,7 +16,7 @@ const (
 	// between it and half the rate passes with the filter's slope, −6 dB at half the rate, and so do its images.
 	PassBand = 0.46
 	// mostPhases is the largest denominator of a ratio of rates that gets exact phases.
-	mostPhases = 1024
+	mostPhases = 4096
 	// tablePhases is the number of phases between which the kernel is interpolated for all other ratios: the error
 	// of a straight line, (π/tablePhases)²/8, is −143 dB.
 	tablePhases = 4096
@@ -23,7 +24,9 @@ const (
 
 // Interpolator takes a stream to a higher rate by band-limited interpolation on an absolute time grid, without delay:
 // a windowed sinc to between two and four times the source's rate, then half-band filters, each doubling. Flat within
-// 0.001 dB to 0.46 of the source's rate, whose images are at least 120 dB down.
+// 0.001 dB to 0.46 of the source's rate, and the images of all that is there, from 0.54 on, are at least 120 dB down.
+// What the source holds between 0.46 and half of its rate passes on the filter's slope, −6 dB at half the rate, and its
+// images between half and 0.54 of the rate on the other side of the slope.
 type Interpolator struct {
 	stage
 	from, to float64
@@ -74,9 +77,9 @@ func (p *Interpolator) Read(dst []float64) (int, error) {
 	if p.base.ended {
 		end := p.srcFirst + p.base.read + p.tail
 		// The first grid index at or after the end.
-		last := int64(math.Ceil(float64(end) * p.to / p.from))
-		for float64(last-1)*p.from >= float64(end)*p.to {
-			last--
+		last := int64(float64(end) * p.to / p.from)
+		for float64(last)*p.from < float64(end)*p.to {
+			last++
 		}
 		if left := max(last-p.next, 0); left < n {
 			p.next += left
@@ -103,7 +106,6 @@ type sincStage struct {
 	den    int64
 	next   int64 // grid index
 	phases [][]float64
-	mixed  []float64 // a kernel between two phases
 }
 
 func newSincStage(src signals.Stream, from, to float64, srcFirst, first int64) *sincStage {
@@ -116,9 +118,14 @@ func newSincStage(src signals.Stream, from, to float64, srcFirst, first int64) *
 	}
 	s.phases = make([][]float64, phases+1)
 	for i := range s.phases {
-		s.phases[i] = s.kernel(float64(i) / float64(phases))
+		mirrored := int(phases) - i
+		if mirrored >= i {
+			s.phases[i] = s.kernel(float64(i) / float64(phases))
+			continue
+		}
+		s.phases[i] = slices.Clone(s.phases[mirrored])
+		slices.Reverse(s.phases[i])
 	}
-	s.mixed = make([]float64, 2*s.reach)
 	// Source samples from −reach around the first output on; those before srcFirst are zeros.
 	at, _ := s.place(first)
 	s.origin = at - int64(s.reach) + 1
@@ -166,9 +173,10 @@ func (s *sincStage) place(k int64) (at int64, phase float64) {
 		}
 		return at, float64(p-at*s.den) / float64(s.den)
 	}
-	x := float64(k) * s.ratio
-	whole := math.Floor(x)
-	return int64(whole), x - whole
+	whole := math.Floor(float64(k) * s.ratio)
+	// The phase of the exact product, which hours into a track has more digits than a float64.
+	phase = math.FMA(float64(k), s.ratio, -whole)
+	return int64(whole), math.Min(math.Max(phase, 0), 1)
 }
 
 func (s *sincStage) fill(dst []float64) error {
@@ -176,19 +184,10 @@ func (s *sincStage) fill(dst []float64) error {
 	if err := s.need(last + int64(s.reach) + 1); err != nil {
 		return err
 	}
-	exact := s.den > 0
-	for i := range dst {
-		at, phase := s.place(s.next + int64(i))
-		from := at - int64(s.reach) + 1 - s.origin
-		x := s.buffer[from : from+int64(2*s.reach)]
-		position := phase * float64(len(s.phases)-1)
-		if exact {
-			dst[i] = floats.Dot(s.phases[int(position+0.5)], x)
-			continue
-		}
-		p := int(position)
-		a := position - float64(p)
-		dst[i] = float64((1-a)*floats.Dot(s.phases[p], x)) + float64(a*floats.Dot(s.phases[p+1], x))
+	if s.den > 0 {
+		s.exact(dst)
+	} else {
+		s.between(dst)
 	}
 	s.next += int64(len(dst))
 	// Keep what the next output needs.
@@ -199,6 +198,37 @@ func (s *sincStage) fill(dst []float64) error {
 		s.origin += drop
 	}
 	return nil
+}
+
+// exact fills dst where every value has a kernel of its own.
+func (s *sincStage) exact(dst []float64) {
+	at, phase := s.place(s.next)
+	from := int(at - int64(s.reach) + 1 - s.origin)
+	p := int64(math.Round(phase * float64(s.den)))
+	for i := range dst {
+		if p == 0 { // the kernel is 1 at the sample itself and 0 at all others
+			dst[i] = s.buffer[from+s.reach-1]
+		} else {
+			dst[i] = floats.Dot(s.phases[p], s.buffer[from:from+2*s.reach])
+		}
+		if p += s.num; p >= s.den {
+			p -= s.den
+			from++
+		}
+	}
+}
+
+// between fills dst with values between those of the two kernels whose phases are nearest.
+func (s *sincStage) between(dst []float64) {
+	for i := range dst {
+		at, phase := s.place(s.next + int64(i))
+		from := int(at - int64(s.reach) + 1 - s.origin)
+		x := s.buffer[from : from+2*s.reach]
+		position := phase * tablePhases
+		p := min(int(position), tablePhases-1)
+		a := position - float64(p)
+		dst[i] = float64((1-a)*floats.Dot(s.phases[p], x)) + float64(a*floats.Dot(s.phases[p+1], x))
+	}
 }
 
 // need makes the buffer reach up to, but not including, the source sample end.
@@ -226,17 +256,21 @@ func (s *sincStage) need(end int64) error {
 // halfStage doubles the rate: every second value is the source's own, the ones between are interpolated.
 type halfStage struct {
 	src    stage
-	taps   []float64 // weights of the pairs of samples around a point midway, nearest first
+	taps   []float64 // weights of the samples around a point midway
 	buffer []float64 // source values from index origin on
 	origin int64
 	next   int64 // index at this stage's rate
 }
 
+// newHalfStage takes the weights of pairs as halfBand gives them.
 func newHalfStage(src stage, taps []float64, first int64) *halfStage {
-	return &halfStage{src: src, taps: taps, origin: floorHalf(first) - int64(len(taps)) + 1, next: first}
+	mirrored := slices.Clone(taps)
+	slices.Reverse(mirrored)
+	return &halfStage{src: src, taps: append(mirrored, taps...), origin: floorHalf(first) - int64(len(taps)) + 1, next: first}
 }
 
-// halfBand returns the taps for a source that holds the original's rate times share of its own.
+// halfBand returns the weights of the pairs of samples around a point midway, nearest first, for a source that holds
+// the original's rate times share of its own.
 func halfBand(share float64) []float64 {
 	// The source's sound ends at (1 − PassBand) of the original's rate; its image begins that far below its own rate.
 	top := (1 - PassBand) * share
@@ -256,7 +290,7 @@ func halfBand(share float64) []float64 {
 }
 
 func (h *halfStage) fill(dst []float64) error {
-	m := int64(len(h.taps))
+	m := int64(len(h.taps) / 2)
 	end := floorHalf(h.next+int64(len(dst))-1) + m + 1
 	if missing := end - h.origin - int64(len(h.buffer)); missing > 0 {
 		old := len(h.buffer)
@@ -272,12 +306,7 @@ func (h *halfStage) fill(dst []float64) error {
 			dst[i] = h.buffer[at]
 			continue
 		}
-		x := h.buffer[at-m+1 : at+m+1]
-		sum := 0.
-		for j, w := range h.taps {
-			sum = math.FMA(w, x[int(m)-1-j]+x[int(m)+j], sum)
-		}
-		dst[i] = sum
+		dst[i] = floats.Dot(h.taps, h.buffer[at-m+1:at+m+1])
 	}
 	h.next += int64(len(dst))
 	drop := floorHalf(h.next) - m + 1 - h.origin

@@ -6,6 +6,7 @@ import (
 	"math"
 
 	"gonum.org/v1/gonum/dsp/fourier"
+	"gonum.org/v1/gonum/floats"
 
 	"midrail/signals"
 )
@@ -17,12 +18,11 @@ type Split struct {
 	src  signals.Stream
 	half int // half the filter's length; 0: everything lies below
 
-	plan     *fourier.FFT
-	response []complex128
-	input    []float64 // the block: 2·half values of the last one, then new ones
-	fresh    int       // where the new ones begin
-	spectrum []complex128
+	response []complex128 // empty where everything lies below
+	work     []complex128
 	result   []float64
+	input    []float64 // two blocks that overlap: 2·half values of the last two, then new ones
+	fresh    int       // where the new ones begin
 
 	low, high []float64 // parted, not yet read
 	zeros     int       // still to come before the source's first sample
@@ -39,30 +39,36 @@ type Split struct {
 // follows. src may be nil if only HalfLength is wanted.
 func NewSplit(src signals.Stream, rate, edge float64, lead int) *Split {
 	s := &Split{src: src, lead: lead}
-	size := 4096
 	if edge < rate/2 {
 		s.half = taps(2*math.Pi*0.02*edge/rate)/2 + 1
-		for size < 8*s.half {
-			size *= 2
-		}
 	}
 	if src == nil {
 		return s
 	}
 	s.zeros = lead + s.half
-	s.input = make([]float64, size)
+	size := 4096
+	for size < 6*s.half {
+		size *= 4
+	}
+	s.input = make([]float64, 2*(size-s.half))
 	if s.half == 0 {
 		return s
 	}
-	s.plan = fourier.NewFFT(size)
-	impulse := make([]float64, size)
+	impulse := make([]float64, 2*s.half+1)
 	cut := 2 * edge / rate
-	for i := -s.half; i <= s.half; i++ {
-		// The transform there and back multiplies by its length.
-		impulse[i+s.half] = cut * sinc(cut*float64(i)) * kaiser(float64(i)/float64(s.half+1)) / float64(size)
+	for i := range impulse {
+		x := float64(i - s.half)
+		impulse[i] = sinc(cut*x) * kaiser(x/float64(s.half+1))
 	}
-	s.response = s.plan.Coefficients(nil, impulse)
-	s.result = make([]float64, size)
+	// A constant lies below, all of it. The transform there and back multiplies by its length.
+	scale := 1 / (floats.Sum(impulse) * float64(size))
+	s.response = make([]complex128, size)
+	for i, v := range impulse {
+		s.response[i] = complex(v*scale, 0)
+	}
+	fourier.CoefficientsRadix4(s.response)
+	s.work = make([]complex128, size)
+	s.result = make([]float64, 2*(size-2*s.half))
 	return s
 }
 
@@ -96,11 +102,7 @@ func (s *Split) more() {
 	}
 	low := s.input
 	if s.half > 0 {
-		s.spectrum = s.plan.Coefficients(s.spectrum, s.input)
-		for i, r := range s.response {
-			s.spectrum[i] *= r
-		}
-		low = s.plan.Sequence(s.result, s.spectrum)[2*s.half:]
+		low = s.filter()
 	}
 	if s.ended {
 		if left := int64(s.lead) + s.read + int64(s.half) - s.given; left <= int64(len(low)) {
@@ -114,6 +116,24 @@ func (s *Split) more() {
 	s.given += int64(len(low))
 	s.fresh = 2 * s.half
 	copy(s.input, s.input[len(s.input)-s.fresh:])
+}
+
+// filter returns what lies below of the input, whose two blocks are the real and the imaginary part of one transform.
+func (s *Split) filter() []float64 {
+	size, overlap := len(s.work), 2*s.half
+	step := size - overlap
+	for i := range s.work {
+		s.work[i] = complex(s.input[i], s.input[step+i])
+	}
+	fourier.CoefficientsRadix4(s.work)
+	for i, r := range s.response {
+		s.work[i] *= r
+	}
+	fourier.SequenceRadix4(s.work)
+	for i, z := range s.work[overlap:] {
+		s.result[i], s.result[step+i] = real(z), imag(z)
+	}
+	return s.result
 }
 
 // fill takes the next values: zeros before the source's first sample, the source, zeros after its last.

@@ -1,15 +1,26 @@
 // Package spectrum estimates power spectral densities by Welch's method: the mean of the periodograms of segments that
 // overlap by half, under a Hann window, each without its mean.
 //
-// Units: S(f), one-sided, in units²/Hz; S·Step summed over the points is the mean square. P. D. Welch, "The use of fast
-// Fourier transform for the estimation of power spectra", IEEE Trans. Audio and Electroacoustics AU-15 (1967).
+// Units: S(f), one-sided, in units²/Hz; S·Step summed over the points is the mean square without DC. For a segment x of
+// n values at rate fs, with the window w:
+//
+//	S(k·fs/n) = 2·|Σ w[i]·(x[i] − mean)·exp(−2πj·ik/n)|² / (fs·Σ w²),    half of that at 0 and fs/2
+//
+// P. D. Welch, "The use of fast Fourier transform for the estimation of power spectra", IEEE Trans. Audio and
+// Electroacoustics AU-15 (1967).
 package spectrum
 
 import (
+	"math/bits"
+	"slices"
+
 	"gonum.org/v1/gonum/dsp/fourier"
 	"gonum.org/v1/gonum/dsp/window"
 	"gonum.org/v1/gonum/floats"
 )
+
+// shortest is the least number of values that have a spectrum.
+const shortest = 4
 
 // Density is a one-sided power spectral density at 0, Step, 2·Step, … to half the rate.
 type Density struct {
@@ -19,27 +30,43 @@ type Density struct {
 
 // Welch gathers the density of a stream.
 type Welch struct {
-	rate     float64
-	length   int
-	segment  []float64
-	filled   int
-	plan     *fourier.FFT
-	window   []float64
-	windowed []float64
-	spectrum []complex128
-	sum      []float64
+	rate   float64
+	half   int // half a segment
+	window []float64
+	// values holds four halves of segments: the first is kept for the last segment alone, the others make two
+	// segments, which one transform takes at once.
+	values []float64
+	filled int
+	n      int64 // values written
+	tally  tally
+}
+
+// tally is a sum of periodograms.
+type tally struct {
+	work     []complex128
+	power    []float64 // Σ|X|², twice that but for the first and the last
 	segments int
 }
 
-// NewWelch starts an estimate for a stream at a rate in Hz from segments of the given length, which is even and has
-// only small prime factors to be quick. It panics where the length is below 4 or odd.
-func NewWelch(rate float64, length int) *Welch {
-	if length < 4 || length%2 != 0 {
-		panic("spectrum: a segment's length must be even and at least 4")
+// Length returns the least length of segments, for a rate in Hz, whose points are not more than resolution Hz apart.
+func Length(rate, resolution float64) int {
+	length := shortest
+	for rate/float64(length) > resolution {
+		length *= 4
 	}
+	return length
+}
+
+// NewWelch starts an estimate for a stream at a rate in Hz from segments of the given length. It panics where the
+// length is not a power of four, 4 or more.
+func NewWelch(rate float64, length int) *Welch {
+	if length < shortest || bits.OnesCount(uint(length)) != 1 || bits.TrailingZeros(uint(length))%2 != 0 {
+		panic("spectrum: a segment's length must be a power of four")
+	}
+	half := length / 2
 	return &Welch{
-		rate: rate, length: length, segment: make([]float64, length), plan: fourier.NewFFT(length),
-		window: hann(length), windowed: make([]float64, length), spectrum: make([]complex128, length/2+1), sum: make([]float64, length/2+1),
+		rate: rate, half: half, window: hann(length), values: make([]float64, 4*half), filled: half,
+		tally: tally{work: make([]complex128, length), power: make([]float64, half+1)},
 	}
 }
 
@@ -52,47 +79,77 @@ func hann(length int) []float64 {
 	return window.Hann(w)[:length]
 }
 
-// Write takes the stream's next values.
+// Write takes the stream's next values. How the stream is cut into blocks changes nothing.
 func (w *Welch) Write(x []float64) {
+	w.n += int64(len(x))
 	for len(x) > 0 {
-		n := copy(w.segment[w.filled:], x)
+		n := copy(w.values[w.filled:], x)
 		w.filled += n
 		x = x[n:]
-		if w.filled == w.length {
-			w.add(w.segment, w.window)
-			w.filled = copy(w.segment, w.segment[w.length/2:])
+		if w.filled == len(w.values) {
+			w.tally.add(w.values[w.half:3*w.half], w.values[2*w.half:], w.window)
+			w.filled = copy(w.values, w.values[2*w.half:])
 		}
 	}
 }
 
-// add adds the periodogram of a segment, which may be shorter than the others.
-func (w *Welch) add(segment, window []float64) {
-	mean := floats.Sum(segment) / float64(len(segment))
-	for i, x := range segment {
-		w.windowed[i] = (x - mean) * window[i]
+// add adds the periodograms of two segments, as the real and the imaginary part of one transform:
+// |Z(k)|² + |Z(−k)|² = 2·|A(k)|² + 2·|B(k)|². b may be nil.
+func (t *tally) add(a, b, window []float64) {
+	t.segments++
+	if b == nil {
+		b = make([]float64, len(a))
+	} else {
+		t.segments++
 	}
-	clear(w.windowed[len(segment):])
-	w.plan.Coefficients(w.spectrum, w.windowed)
-	scale := 2 / (w.rate * floats.Dot(window, window))
-	for i, c := range w.spectrum {
-		p := float64(real(c)*real(c)) + float64(imag(c)*imag(c))
-		if i == 0 || i == len(w.spectrum)-1 {
-			p /= 2
-		}
-		w.sum[i] += p * scale
+	if constant(a) && constant(b) {
+		return
 	}
-	w.segments++
+	meanA, meanB := floats.Sum(a)/float64(len(a)), floats.Sum(b)/float64(len(b))
+	for i, w := range window {
+		t.work[i] = complex((a[i]-meanA)*w, (b[i]-meanB)*w)
+	}
+	clear(t.work[len(window):])
+	z := fourier.CoefficientsRadix4(t.work)
+	last := len(t.power) - 1
+	t.power[0] += square(z[0])
+	t.power[last] += square(z[last])
+	for k := 1; k < last; k++ {
+		t.power[k] += square(z[k]) + square(z[len(z)-k])
+	}
 }
 
-// Result returns the density of what was written. A stream shorter than one segment is one segment of its own length;
-// otherwise what follows the last whole segment, less than half of one, does not count. An empty stream has none.
+func constant(x []float64) bool {
+	for _, v := range x {
+		if v != x[0] {
+			return false
+		}
+	}
+	return true
+}
+
+func square(z complex128) float64 { return float64(real(z)*real(z)) + float64(imag(z)*imag(z)) }
+
+// Result returns the density of what was written so far; more may follow. The last segment ends with the last value
+// and overlaps the one before it by more than half, unless the stream's length fits. A stream shorter than one segment
+// is one segment of its own length; one of less than four values has no density.
 func (w *Welch) Result() Density {
-	if w.segments == 0 && w.filled > 3 {
-		w.add(w.segment[:w.filled], hann(w.filled))
+	t := tally{work: slices.Clone(w.tally.work), power: slices.Clone(w.tally.power), segments: w.tally.segments}
+	win := w.window
+	h, end := w.half, w.filled
+	switch {
+	case w.n < shortest:
+	case w.n < int64(2*h):
+		win = hann(int(w.n))
+		t.add(w.values[h:end], nil, win)
+	case end > 3*h:
+		t.add(w.values[h:3*h], w.values[end-2*h:end], win)
+	case end > 2*h:
+		t.add(w.values[end-2*h:end], nil, win)
 	}
-	d := Density{Step: w.rate / float64(w.length), Values: make([]float64, len(w.sum))}
-	if w.segments > 0 {
-		floats.ScaleTo(d.Values, 1/float64(w.segments), w.sum)
+	d := Density{Step: w.rate / float64(2*h), Values: t.power}
+	if t.segments > 0 {
+		floats.Scale(1/(w.rate*floats.Dot(win, win)*float64(t.segments)), d.Values)
 	}
 	return d
 }
