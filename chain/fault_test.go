@@ -349,9 +349,22 @@ func TestFaultsOfSelect(t *testing.T) {
 	}
 }
 
+func TestWhatSharesTheConverterIsUsed(t *testing.T) {
+	other := "[[stage]]\nname = \"other\"\nkind = \"rc low-pass\"\nfrom = \"aux\"\nr = \"1k\"\nc = \"1n\"\n[converter]"
+	shared := "high = \"3V\"\nsampling_capacitor = \"10p\"\nacquisition = \"2us\"\nshares_with = \"other\""
+	c := mustRead(t, broken(t, "[converter]", other, `high = "3V"`, shared))
+	if c.Converter.SharesWith != "other" {
+		t.Errorf("converter is %+v", c.Converter)
+	}
+	if faults := faultsOf(t, broken(t, "[converter]", other)); len(faults) != 1 || !strings.HasPrefix(faults[0].Text, `stage "other" does not lead`) {
+		t.Errorf("without shares_with:\n%v", faults)
+	}
+}
+
 func TestFaultsOfSet(t *testing.T) {
 	mustRead(t, base(), "sum.aux.r=10k")
 	for _, c := range []struct{ set, want string }{
+		{"half.top=1\xfck", `this is not text in UTF-8; write it in UTF-8`},
 		{"filter", `this is not NAME.key=value; write it as "mic amp.r_f=180k"`},
 		{"filter=1", `this is not NAME.key=value; write it as "mic amp.r_f=180k"`},
 		{".r_1=1", `this is not NAME.key=value; write it as "mic amp.r_f=180k"`},
@@ -391,12 +404,12 @@ func TestFaultsOfSet(t *testing.T) {
 }
 
 func TestWarnings(t *testing.T) {
-	text, at := marked(broken(t, `c_2 = "1n"`, `c_2 = §"100"`, `c_g = "10u"`, `c_g = §"220"`))
+	text, at := marked(broken(t, "c_1 = \"2n2\"\nc_2 = \"1n\"", "c_2 = §\"100\"\nc_1 = §\"220\""))
 	c := mustRead(t, text, "half.bypass=470")
 	if len(c.Warnings) != 3 || c.Warnings[0].File != `--set "half.bypass=470"` || c.Warnings[1].Pos != at[0] || c.Warnings[2].Pos != at[1] {
 		t.Fatalf("warnings are\n%v", c.Warnings)
 	}
-	if got, want := c.Warnings[2].Error(), fmt.Sprintf(`test.toml:%d:%d: c_2: "100" is read as a three-digit code, 10 pF; write "10p" or "100p" to say which`, at[1].Line, at[1].Column); got != want {
+	if got, want := c.Warnings[1].Error(), fmt.Sprintf(`test.toml:%d:%d: c_2: "100" is read as a three-digit code, 10 pF; write "10p" or "100p" to say which`, at[0].Line, at[0].Column); got != want {
 		t.Errorf("it reads\n%s, want\n%s", got, want)
 	}
 }
@@ -502,6 +515,7 @@ func FuzzRead(f *testing.F) {
 	}
 	f.Add([]byte(chain.Starter()), "line amp.r_f=10k")
 	f.Add([]byte(base()), "sum.aux.r=10k")
+	f.Add([]byte(base()), "half.top=1\xfck") // once a panic
 	f.Add([]byte("\"\\u00e9\" = { a.b = [1, { c = 2 }] }\n[[x.y]]\n[x.z]\n"), "x.y.z=1")
 	f.Fuzz(func(t *testing.T, data []byte, set string) {
 		c, err := chain.Read("test.toml", data, []string{set})

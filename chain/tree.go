@@ -248,6 +248,9 @@ func (b *builder) value(v *unstable.Node, around place) *node {
 func (n *node) set(one string) *Fault {
 	origin := fmt.Sprintf("--set %q", one)
 	wrong := func(text, remedy string) *Fault { return &Fault{File: origin, Text: text, Remedy: remedy} }
+	if !utf8.ValidString(one) {
+		return wrong("this is not text in UTF-8", "write it in UTF-8")
+	}
 	path, value, ok := strings.Cut(one, "=")
 	steps := strings.Split(path, ".")
 	for i := range steps {
