@@ -69,6 +69,9 @@ numbers: what clipped and when, what folded back, how much room is left.`,
 // usageError is a command line that makes no sense.
 type usageError struct{ error }
 
+// refusal is something that is not done for the user's sake.
+type refusal struct{ error }
+
 // limitsBroken says that the work is done and a limit does not hold.
 var limitsBroken = errors.New("a limit is broken")
 
@@ -77,6 +80,7 @@ func (s streams) status(err error) int {
 	var faults chain.Faults
 	var format *wav.FormatError
 	var usage usageError
+	var refused refusal
 	switch {
 	case err == nil:
 		return Done
@@ -90,6 +94,9 @@ func (s streams) status(err error) int {
 		return WrongInput
 	case errors.As(err, &usage):
 		fmt.Fprintf(s.err, "midrail: %v; see midrail --help\n", usage.error)
+		return WrongInput
+	case errors.As(err, &refused):
+		fmt.Fprintf(s.err, "midrail: %v\n", refused.error)
 		return WrongInput
 	case errors.Is(err, context.Canceled):
 		fmt.Fprintln(s.err, "midrail: interrupted; nothing was left behind")

@@ -18,13 +18,6 @@ type folder struct {
 	working string // where it is written
 }
 
-// foreignFolder says that a folder which is not ours stands where the output should go.
-type foreignFolder struct{ path string }
-
-func (f foreignFolder) Error() string {
-	return fmt.Sprintf("%s: there already, and not a folder that midrail made; name another with --out, or move it away", f.path)
-}
-
 // newFolder starts an output folder at the path, which must not exist or be one of ours.
 func newFolder(path string) (*folder, error) {
 	path, err := filepath.Abs(path)
@@ -64,7 +57,7 @@ func mayReplace(path string) error {
 			return nil
 		}
 	}
-	return foreignFolder{path}
+	return refusal{fmt.Errorf("%s: there already, and not a folder that midrail made; name another with --out, or move it away", path)}
 }
 
 // file returns the path of a file in the folder while it is being written.

@@ -44,7 +44,7 @@ func exactly(n int) cobra.PositionalArgs {
 func writeNew(path string, write func(*os.File) error) error {
 	f, err := os.OpenFile(path, os.O_WRONLY|os.O_CREATE|os.O_EXCL, 0o666)
 	if errors.Is(err, fs.ErrExist) {
-		return usageError{fmt.Errorf("%s is there already; name another file, or move it away", path)}
+		return refusal{fmt.Errorf("%s: there already; name another file, or move it away", path)}
 	}
 	if err != nil {
 		return err

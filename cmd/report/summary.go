@@ -108,6 +108,9 @@ func (o Options) rows(head table.Row, body []table.Row, figures int) []string {
 		return lines
 	}
 	names := 0
+	if head != nil {
+		names = text.StringWidthWithoutEscSequences(fmt.Sprint(head[0]))
+	}
 	for _, row := range body {
 		names = max(names, text.StringWidthWithoutEscSequences(fmt.Sprint(row[0])))
 	}
