@@ -42,7 +42,7 @@ const (
 	bins = 4096
 	// explicit is how many images of the converter's rate are folded one by one; what lies beyond is smooth over
 	// one rate, and its mean is added.
-	explicit = 64
+	explicit = 16
 )
 
 // Kind tells the kinds of source apart.

@@ -5,6 +5,7 @@ import (
 	"math"
 	"strconv"
 	"strings"
+	"unicode/utf8"
 )
 
 // parseCode reads a letter code of IEC 60062, in which the multiplier stands for the decimal point ("4k7", "R47",
@@ -106,11 +107,8 @@ func codeLetter(k Kind, letter string) (exponent int, ok bool) {
 }
 
 func firstRune(s string) (first, rest string) {
-	for i, r := range s {
-		n := i + len(string(r))
-		return s[:n], s[n:]
-	}
-	return "", ""
+	_, n := utf8.DecodeRuneInString(s)
+	return s[:n], s[n:]
 }
 
 // Format prints a value in SI as the trade writes it, with up to four significant digits: "4.7 kΩ", "100 nF",

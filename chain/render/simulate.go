@@ -114,7 +114,9 @@ type simulator struct {
 	always  bool      // step every block
 
 	elements   []element
-	perInstant int // readings
+	quantities int           // that are read at each instant: first the watched nodes
+	reach      quantityReach // how far a state and an input can take each
+	most       []float64     // how far each quantity can go in this block
 
 	watch      []int // watched nodes
 	indexOf    map[int]int
@@ -130,8 +132,10 @@ type simulator struct {
 	parted             bool      // whether difference is not 0
 	held               bool      // whether the last block could touch a limit
 	sums, fineSums     [][]float64
-	cellMeans          []float64
-	looked, moved      []float64 // readings of a block: of the linear run, and by how much the limited one differs
+	cellMeans          [][]float64 // of each input with fine lanes
+	inputMost          []float64   // V or A, how large each input of u gets in the block
+	isRead             []bool      // of each quantity, in this block
+	looked, moved      []float64   // readings of a block: of the linear run, and by how much the limited one differs
 	change             []float64
 
 	limitedRun, linearRun *bilinear.State
@@ -151,6 +155,35 @@ type inputMaps struct {
 	advance, inspect blas64.General
 }
 
+// quantityReach bounds the quantities over a block by the sizes of what makes them: |q| ≤ Σ state·|x| + Σ input·max|u|.
+type quantityReach struct {
+	state        []float64 // quantities × states
+	coarse, fine []float64 // quantities × inputs
+}
+
+// reachOf returns, for each quantity, the largest row sum of magnitudes of m over the block's instants, or, by
+// column, the largest magnitudes.
+func (s *simulator) reachOf(m blas64.General, byColumn bool) []float64 {
+	width := 1
+	if byColumn {
+		width = m.Cols
+	}
+	out := make([]float64, s.quantities*width)
+	for r := range m.Rows {
+		q, sum := r/s.grid.base, 0.
+		for c, v := range m.Data[r*m.Stride : r*m.Stride+m.Cols] {
+			if byColumn {
+				out[q*width+c] = math.Max(out[q*width+c], math.Abs(v))
+			}
+			sum += math.Abs(v)
+		}
+		if !byColumn {
+			out[q] = math.Max(out[q], sum)
+		}
+	}
+	return out
+}
+
 // laneRun is a lane's linear circuit.
 type laneRun struct {
 	*lane
@@ -168,6 +201,9 @@ func (e *excursion) see(v float64) {
 		e.highest = v
 	}
 }
+
+// within tells whether something as large could lie beyond what was seen.
+func (e *excursion) within(most float64) bool { return most > e.highest || -most < e.lowest }
 
 // conversions is what the circuit gives at the converter's instants over a chunk, in volts from rest. Each part has a
 // row for each of the simulator's ports.
@@ -232,7 +268,7 @@ func newSimulator(n *circuit.Network, at bilinear.Operating, g grid, settle sett
 	return s, nil
 }
 
-// element is where an element's quantities stand among the readings of one instant; −1: not read.
+// element is where an element's quantities stand among those that are read; −1: not read.
 type element struct{ source, slope, sense int }
 
 // layReadings decides what is read at each instant that is looked at: the watched nodes, each element's source, and
@@ -256,14 +292,14 @@ func (s *simulator) layReadings(top float64) {
 			sense:  next(!math.IsInf(b.SenseLow, -1) || !math.IsInf(b.SenseHigh, 1)),
 		})
 	}
-	s.perInstant = at
+	s.quantities = at
 }
 
 // lift makes the maps.
 func (s *simulator) lift(lanes []*lane) {
 	g := s.grid
 	scale := 1 << g.plan.Doublings
-	var advance, inspect []bilinear.Reading
+	var advance []bilinear.Reading
 	for k := range g.conversions {
 		last := (k+1)*g.plan.Steps() - 1
 		for _, p := range s.ports {
@@ -271,22 +307,23 @@ func (s *simulator) lift(lanes []*lane) {
 		}
 		advance = append(advance, bilinear.Reading{Step: last - 1, Of: bilinear.Node, Item: s.ports[0]})
 	}
-	for i := range g.base {
-		instant := make([]bilinear.Reading, s.perInstant)
-		put := func(at int, of bilinear.Quantity, item int) {
-			if at >= 0 {
-				instant[at] = bilinear.Reading{Step: (i+1)*scale - 1, Of: of, Item: item}
-			}
+	// A row of readings for each quantity: its values at the block's instants.
+	inspect := make([]bilinear.Reading, s.quantities*g.base)
+	put := func(at int, of bilinear.Quantity, item int) {
+		if at < 0 {
+			return
 		}
-		for w := range s.watch {
-			put(w, bilinear.Node, w)
+		for i := range g.base {
+			inspect[at*g.base+i] = bilinear.Reading{Step: (i+1)*scale - 1, Of: of, Item: item}
 		}
-		for k, e := range s.elements {
-			put(e.source, bilinear.Source, k)
-			put(e.slope, bilinear.Slope, k)
-			put(e.sense, bilinear.Sense, k)
-		}
-		inspect = append(inspect, instant...)
+	}
+	for w := range s.watch {
+		put(w, bilinear.Node, w)
+	}
+	for k, e := range s.elements {
+		put(e.source, bilinear.Source, k)
+		put(e.slope, bilinear.Slope, k)
+		put(e.sense, bilinear.Sense, k)
 	}
 	s.coarse, s.fine = make([]inputMaps, s.inputs), make([]inputMaps, s.inputs)
 	states := s.circuit.States()
@@ -326,7 +363,19 @@ func (s *simulator) lift(lanes []*lane) {
 			s.fineSums[u] = make([]float64, g.steps)
 		}
 	}
-	s.cellMeans = make([]float64, g.base)
+	s.cellMeans, s.inputMost = make([][]float64, s.inputs), make([]float64, s.inputs)
+	s.isRead, s.most = make([]bool, s.quantities), make([]float64, s.quantities)
+	s.reach.coarse, s.reach.fine = make([]float64, s.inputs*s.quantities), make([]float64, s.inputs*s.quantities)
+	s.reach.state = s.reachOf(s.inspectState, true)
+	for u := range s.inputs {
+		if s.coarse[u].present {
+			copy(s.reach.coarse[u*s.quantities:], s.reachOf(s.coarse[u].inspect, false))
+		}
+		if s.fine[u].present {
+			copy(s.reach.fine[u*s.quantities:], s.reachOf(s.fine[u].inspect, false))
+			s.cellMeans[u] = make([]float64, g.base)
+		}
+	}
 }
 
 // below returns a matrix without its first rows.
@@ -353,22 +402,8 @@ func (s *simulator) run(c *chunk, o *conversions) {
 // block takes the circuit through the chunk's b-th block, whose first internal step is given.
 func (s *simulator) block(c *chunk, o *conversions, b int, step int64) {
 	s.gather(c, b)
-	clear(s.looked)
-	bilinear.Apply(s.looked, s.inspectState, s.linear)
-	for u := range s.inputs {
-		if s.coarse[u].present {
-			bilinear.Apply(s.looked, s.coarse[u].inspect, s.sums[u])
-		}
-		if s.fine[u].present {
-			s.grid.means(s.cellMeans, s.fineSums[u])
-			bilinear.Apply(s.looked, s.fine[u].inspect, s.cellMeans)
-		}
-	}
-	clear(s.moved)
-	if s.parted {
-		bilinear.Apply(s.moved, s.inspectState, s.difference)
-	}
-	near := s.near()
+	s.size()
+	near := s.look()
 	first := b * s.grid.conversions
 	if near || s.held || s.always {
 		s.stepBlock(o, first, step)
@@ -377,6 +412,69 @@ func (s *simulator) block(c *chunk, o *conversions, b int, step int64) {
 	}
 	s.held = near
 	s.advanceLanes(c, o, b)
+}
+
+// size bounds how far each quantity can go in the block.
+func (s *simulator) size() {
+	clear(s.most)
+	states := len(s.linear)
+	for q := range s.most {
+		sum := 0.
+		for k, a := range s.reach.state[q*states : (q+1)*states] {
+			sum += a * (math.Abs(s.linear[k]) + math.Abs(s.difference[k]))
+		}
+		s.most[q] = sum
+	}
+	for u := range s.inputs {
+		s.inputMost[u] = 0
+		if s.coarse[u].present {
+			m := largest(s.sums[u])
+			s.inputMost[u] += m
+			for q := range s.most {
+				s.most[q] += s.reach.coarse[u*s.quantities+q] * m
+			}
+		}
+		if s.fine[u].present {
+			m := largest(s.fineSums[u])
+			s.inputMost[u] += m
+			for q := range s.most {
+				s.most[q] += s.reach.fine[u*s.quantities+q] * m
+			}
+			s.grid.means(s.cellMeans[u], s.fineSums[u])
+		}
+	}
+}
+
+// read puts a quantity's values at the block's instants into looked, those of the linear run, and into moved, by how
+// much the limited one differs; it returns both.
+func (s *simulator) read(q int) (linear, moved []float64) {
+	from, to := q*s.grid.base, (q+1)*s.grid.base
+	linear, moved = s.looked[from:to], s.moved[from:to]
+	if s.isRead[q] {
+		return linear, moved
+	}
+	s.isRead[q] = true
+	clear(linear)
+	clear(moved)
+	bilinear.Apply(linear, rows(s.inspectState, from, to), s.linear)
+	for u := range s.inputs {
+		if s.coarse[u].present {
+			bilinear.Apply(linear, rows(s.coarse[u].inspect, from, to), s.sums[u])
+		}
+		if s.fine[u].present {
+			bilinear.Apply(linear, rows(s.fine[u].inspect, from, to), s.cellMeans[u])
+		}
+	}
+	if s.parted {
+		bilinear.Apply(moved, rows(s.inspectState, from, to), s.difference)
+	}
+	return linear, moved
+}
+
+// rows returns a matrix of some of a matrix's rows.
+func rows(m blas64.General, from, to int) blas64.General {
+	m.Data, m.Rows = m.Data[from*m.Stride:], to-from
+	return m
 }
 
 // gather sums the lanes' values over a block by input, and their states.
@@ -408,41 +506,36 @@ func (s *simulator) valuesOf(c *chunk, lane, b int) []float64 {
 	return c.lanes[lane][b*s.grid.base : b*s.grid.base+s.grid.window()]
 }
 
-// near tells whether the block could touch a limit.
-func (s *simulator) near() bool {
-	supply := 0.
+// look tells whether the block could touch a limit. A quantity is read only where its bound does not settle it.
+func (s *simulator) look() bool {
+	clear(s.isRead)
 	for u, clip := range s.clip {
-		if u != circuit.SupplyInput && math.IsInf(clip, 1) {
-			continue
-		}
-		most := (largest(s.sums[u]) + largest(s.fineSums[u])) * margin
-		if most >= clip {
+		if s.inputMost[u]*margin >= clip {
 			return true
 		}
-		if u == circuit.SupplyInput {
-			supply = most
+	}
+	rails := s.inputMost[circuit.SupplyInput] * margin // the supply moves the amplifiers' limits
+	for k := range s.bounds {
+		b, e := &s.bounds[k], s.elements[k]
+		if k >= len(s.n.Amplifiers) {
+			rails = 0
+		}
+		if s.passes(e.source, b.SourceLow+rails, b.SourceHigh-rails) || s.passes(e.slope, -b.Slew, b.Slew) || s.passes(e.sense, b.SenseLow, b.SenseHigh) {
+			return true
 		}
 	}
-	n := s.perInstant
-	for at := 0; at < len(s.looked); at += n {
-		z, d := s.looked[at:at+n], s.moved[at:at+n]
-		for k := range s.bounds {
-			b, e := &s.bounds[k], s.elements[k]
-			rails := 0. // the supply moves the amplifiers' limits
-			if k < len(s.n.Amplifiers) {
-				rails = supply
-			}
-			if v := (z[e.source] + d[e.source]) * margin; v >= b.SourceHigh-rails || v <= b.SourceLow+rails {
-				return true
-			}
-			if e.slope >= 0 && math.Abs(z[e.slope]+d[e.slope])*margin >= b.Slew {
-				return true
-			}
-			if e.sense >= 0 {
-				if v := (z[e.sense] + d[e.sense]) * margin; v >= b.SenseHigh || v <= b.SenseLow {
-					return true
-				}
-			}
+	return false
+}
+
+// passes tells whether a quantity comes nearer to a bound than the margin.
+func (s *simulator) passes(q int, low, high float64) bool {
+	if q < 0 || s.most[q]*margin < math.Min(high, -low) {
+		return false
+	}
+	linear, moved := s.read(q)
+	for i, v := range linear {
+		if v = (v + moved[i]) * margin; v >= high || v <= low {
+			return true
 		}
 	}
 	return false
@@ -464,23 +557,23 @@ func largest(x []float64) float64 {
 // passBlock takes the limited run through a block in which no limit is near: it differs from the linear run by what
 // is left of the difference.
 func (s *simulator) passBlock(o *conversions, first int, step int64) {
-	n := s.perInstant
-	scale := int64(1) << s.grid.plan.Doublings
-	for i, at := 0, 0; at < len(s.looked); i, at = i+1, at+n {
-		z, d := s.looked[at:at+n], s.moved[at:at+n]
-		for k := range s.asked {
-			s.asked[k].see(z[s.elements[k].source])
-		}
-		if s.parted {
-			for j := range z {
-				z[j] += d[j]
+	for k := range s.asked {
+		if q := s.elements[k].source; s.asked[k].within(s.most[q]) {
+			linear, _ := s.read(q)
+			for _, v := range linear {
+				s.asked[k].see(v)
 			}
 		}
-		for k := range s.stages {
-			s.stages[k].see(z[s.stageIndex[k]])
-		}
-		s.watchers.watch(z, func(k int) float64 { return z[s.elements[k].source] }, step+int64(i+1)*scale-1, scale)
 	}
+	for k, q := range s.stageIndex {
+		if s.stages[k].within(s.most[q]) {
+			linear, moved := s.read(q)
+			for i, v := range linear {
+				s.stages[k].see(v + moved[i])
+			}
+		}
+	}
+	s.watchBlock(step)
 	for p := range s.ports {
 		clear(o.overload[p][first : first+s.grid.conversions])
 	}
@@ -500,6 +593,28 @@ func (s *simulator) passBlock(o *conversions, first int, step int64) {
 	}
 	copy(s.difference, s.change)
 	s.settleDifference()
+}
+
+// watchBlock notes amplifiers outside their common-mode range or beyond their output current in a block that is not
+// stepped.
+func (s *simulator) watchBlock(step int64) {
+	scale := int64(1) << s.grid.plan.Doublings
+	for k := range s.watchers.amplifiers {
+		a := &s.watchers.amplifiers[k]
+		q := s.elements[k].source
+		if s.most[a.plus] < a.plusRoom && s.most[a.minus] < a.minusRoom && (s.most[q]+s.most[a.out])*a.conductance < a.currentRoom {
+			continue
+		}
+		var value, moves [4][]float64
+		for j, q := range [...]int{a.plus, a.minus, a.out, q} {
+			linear, moved := s.read(q)
+			value[j], moves[j] = linear, moved
+		}
+		for i := range s.grid.base {
+			at := func(j int) float64 { return value[j][i] + moves[j][i] }
+			a.watch(at(0), at(1), at(2), at(3), step+int64(i+1)*scale-1, scale)
+		}
+	}
 }
 
 // settleDifference drops a difference that no longer is one.
@@ -543,7 +658,10 @@ func (s *simulator) stepBlock(o *conversions, first int, step int64) {
 		if touched {
 			s.watchers.touched(s, step+int64(j))
 		}
-		s.watchers.watch(s.y, func(k int) float64 { return s.limitedRun.E[k] }, step+int64(j), 1)
+		for k := range s.watchers.amplifiers {
+			a := &s.watchers.amplifiers[k]
+			a.watch(s.y[a.plus], s.y[a.minus], s.y[a.out], s.limitedRun.E[k], step+int64(j), 1)
+		}
 		if (j+1)%perConversion == 0 {
 			k := first + j/perConversion
 			for p, i := range s.ports {
@@ -635,6 +753,8 @@ type amplifierWatch struct {
 	restCurrent, conductance             float64 // A out of the output at rest; S, 1/Ro
 	source, sink                         float64 // A
 	slewStep                             float64 // V, the slew rate times half a step
+	// What the two inputs (V) and the output's current (A) may move by from rest without a word.
+	plusRoom, minusRoom, currentRoom float64
 }
 
 type capsuleWatch struct {
@@ -667,6 +787,8 @@ func newWatchers(n *circuit.Network, at bilinear.Operating, indexOf map[int]int,
 			aw.conductance = 1 / m.OutputResistance
 			aw.restCurrent = (e - at.Volts[a.Out]) / m.OutputResistance
 		}
+		aw.plusRoom, aw.minusRoom = math.Min(aw.plusHigh, -aw.plusLow), math.Min(aw.minusHigh, -aw.minusLow)
+		aw.currentRoom = math.Min(aw.source-aw.restCurrent, aw.sink+aw.restCurrent)
 		w.amplifiers = append(w.amplifiers, aw)
 	}
 	element := len(n.Amplifiers)
@@ -711,17 +833,14 @@ func (w *watchers) touched(s *simulator, step int64) {
 	}
 }
 
-// watch notes amplifiers outside their common-mode range or beyond their output current at a step that stands for
-// several. source gives the internal source of an amplifier, y the watched nodes, both from rest.
-func (w *watchers) watch(y []float64, source func(k int) float64, step, several int64) {
-	for k := range w.amplifiers {
-		a := &w.amplifiers[k]
-		if p, m := y[a.plus], y[a.minus]; p > a.plusHigh || p < a.plusLow || m > a.minusHigh || m < a.minusLow {
-			a.commonMode.touch(step, 0, several)
-		}
-		if i := a.restCurrent + (source(k)-y[a.out])*a.conductance; i > a.source || -i > a.sink {
-			a.current.touch(step, math.Max(i/a.source, -i/a.sink), several)
-		}
+// watch notes an amplifier outside its common-mode range or beyond its output current at a step that stands for
+// several, by the voltages from rest of its inputs, its output and its internal source.
+func (a *amplifierWatch) watch(plus, minus, out, source float64, step, several int64) {
+	if plus > a.plusHigh || plus < a.plusLow || minus > a.minusHigh || minus < a.minusLow {
+		a.commonMode.touch(step, 0, several)
+	}
+	if i := a.restCurrent + (source-out)*a.conductance; i > a.source || -i > a.sink {
+		a.current.touch(step, math.Max(i/a.source, -i/a.sink), several)
 	}
 }
 
