@@ -110,7 +110,7 @@ type sincStage struct {
 
 func newSincStage(src signals.Stream, from, to float64, srcFirst, first int64) *sincStage {
 	s := &sincStage{src: src, ratio: from / to, next: first}
-	s.reach = taps(2*math.Pi*(1-2*PassBand)) / 2
+	s.reach = taps(interpolatorStop, 2*math.Pi*(1-2*PassBand)) / 2
 	s.num, s.den = fraction(s.ratio)
 	phases := int64(tablePhases)
 	if s.den > 0 {
@@ -140,10 +140,11 @@ func newSincStage(src signals.Stream, from, to float64, srcFirst, first int64) *
 // kernel returns the weights of the 2·reach samples around a point at the given phase behind the middle left one.
 func (s *sincStage) kernel(phase float64) []float64 {
 	w := make([]float64, 2*s.reach)
+	beta := shape(interpolatorStop)
 	sum := 0.
 	for i := range w {
 		x := float64(i-s.reach+1) - phase
-		w[i] = sinc(x) * kaiser(x/float64(s.reach))
+		w[i] = sinc(x) * kaiser(beta, x/float64(s.reach))
 		sum += w[i]
 	}
 	for i := range w { // a constant stays what it is
@@ -274,19 +275,44 @@ func newHalfStage(src stage, taps []float64, first int64) *halfStage {
 func halfBand(share float64) []float64 {
 	// The source's sound ends at (1 − PassBand) of the original's rate; its image begins that far below its own rate.
 	top := (1 - PassBand) * share
-	// At the doubled rate the filter may fall from top/2 to (1−top)/2.
-	pairs := max(2, (taps(2*math.Pi*(0.5-top))+3)/4)
-	w := make([]float64, pairs)
-	sum := 0.
-	for i := range w {
-		x := float64(i) + 0.5
-		w[i] = sinc(x) * kaiser(x/float64(pairs))
-		sum += 2 * w[i]
+	// At the doubled rate the filter may fall from top/2 to (1−top)/2. That is wide, the filter is short, and β after
+	// Kaiser's formula is not the best: it is searched.
+	for pairs := 2; ; pairs++ {
+		if w, leak := leastLeaking(pairs, top); leak <= math.Pow(10, -halfBandStop/20.) {
+			return w
+		}
 	}
-	for i := range w {
-		w[i] /= sum
+}
+
+// leastLeaking returns the half-band filter of so many pairs that leaks least, and how much, from (1−top)/2 of the
+// doubled rate to half of it.
+func leastLeaking(pairs int, top float64) (best []float64, leak float64) {
+	const points, gentlest, steepest = 128, 4, 18
+	cosines := make([][]float64, points)
+	for p := range cosines {
+		f := 0.5 - top/2*float64(p)/(points-1)
+		cosines[p] = make([]float64, pairs)
+		for i := range cosines[p] {
+			cosines[p][i] = math.Cos(2 * math.Pi * f * float64(2*i+1))
+		}
 	}
-	return w
+	leak = math.Inf(1)
+	for beta := float64(gentlest); beta <= steepest; beta += 0.25 {
+		w := make([]float64, pairs)
+		for i := range w {
+			x := float64(i) + 0.5
+			w[i] = sinc(x) * kaiser(beta, x/(float64(pairs)+0.25))
+		}
+		floats.Scale(0.5/floats.Sum(w), w) // a constant stays what it is
+		most := 0.
+		for _, c := range cosines {
+			most = math.Max(most, math.Abs(0.5+floats.Dot(w, c)))
+		}
+		if most < leak {
+			best, leak = w, most
+		}
+	}
+	return best, leak
 }
 
 func (h *halfStage) fill(dst []float64) error {

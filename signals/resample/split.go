@@ -40,7 +40,7 @@ type Split struct {
 func NewSplit(src signals.Stream, rate, edge float64, lead int) *Split {
 	s := &Split{src: src, lead: lead}
 	if edge < rate/2 {
-		s.half = taps(2*math.Pi*0.02*edge/rate)/2 + 1
+		s.half = taps(splitStop, 2*math.Pi*0.02*edge/rate)/2 + 1
 	}
 	if src == nil {
 		return s
@@ -55,10 +55,10 @@ func NewSplit(src signals.Stream, rate, edge float64, lead int) *Split {
 		return s
 	}
 	impulse := make([]float64, 2*s.half+1)
-	cut := 2 * edge / rate
+	cut, beta := 2*edge/rate, shape(splitStop)
 	for i := range impulse {
 		x := float64(i - s.half)
-		impulse[i] = sinc(cut*x) * kaiser(x/float64(s.half+1))
+		impulse[i] = sinc(cut*x) * kaiser(beta, x/float64(s.half+1))
 	}
 	// A constant lies below, all of it. The transform there and back multiplies by its length.
 	scale := 1 / (floats.Sum(impulse) * float64(size))
