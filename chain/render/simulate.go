@@ -138,10 +138,10 @@ type simulator struct {
 	looked, moved      []float64   // readings of a block: of the linear run, and by how much the limited one differs
 	change             []float64
 
-	limitedRun, linearRun *bilinear.State
-	u, uLimited           []float64
-	y, yLinear            []float64
-	steps                 [][]float64 // of each input, a block's internal steps
+	limitedRun *bilinear.State // the limited run, in a block that is stepped
+	touched    bool            // whether it touched a limit there
+	u, y       []float64
+	steps      [][]float64 // of each input, a block's internal steps
 
 	stages   []excursion // of each stage's output, limited run
 	asked    []excursion // of each amplifier's internal source, linear run
@@ -244,9 +244,8 @@ func newSimulator(n *circuit.Network, at bilinear.Operating, g grid, settle sett
 	}
 	s.bounds = s.circuit.Bounds()
 	s.always = s.circuit.RestsOnLimit()
-	s.limitedRun, s.linearRun = s.circuit.Start(), s.circuit.Start()
-	s.u, s.uLimited = make([]float64, s.inputs), make([]float64, s.inputs)
-	s.y, s.yLinear = make([]float64, len(s.watch)), make([]float64, len(s.watch))
+	s.limitedRun = s.circuit.Start()
+	s.u, s.y = make([]float64, s.inputs), make([]float64, len(s.watch))
 	s.clip = make([]float64, s.inputs)
 	s.clip[circuit.SupplyInput] = math.Inf(1)
 	for i, in := range n.Inputs {
@@ -405,13 +404,17 @@ func (s *simulator) block(c *chunk, o *conversions, b int, step int64) {
 	s.size()
 	near := s.look()
 	first := b * s.grid.conversions
-	if near || s.held || s.always {
+	stepped := near || s.held || s.always
+	s.held = near
+	if stepped {
 		s.stepBlock(o, first, step)
 	} else {
 		s.passBlock(o, first, step)
 	}
-	s.held = near
-	s.advanceLanes(c, o, b)
+	s.advanceLanes(c, o, b, stepped)
+	if stepped {
+		s.compare(o, first)
+	}
 }
 
 // size bounds how far each quantity can go in the block.
@@ -559,10 +562,7 @@ func largest(x []float64) float64 {
 func (s *simulator) passBlock(o *conversions, first int, step int64) {
 	for k := range s.asked {
 		if q := s.elements[k].source; s.asked[k].within(s.most[q]) {
-			linear, _ := s.read(q)
-			for _, v := range linear {
-				s.asked[k].see(v)
-			}
+			s.peaks(k)
 		}
 	}
 	for k, q := range s.stageIndex {
@@ -625,61 +625,110 @@ func (s *simulator) settleDifference() {
 	}
 }
 
-// stepBlock steps the linear and the limited run through a block.
+// stepBlock steps the limited run through a block. What its overload is at the conversions is known once the lanes have
+// been taken through the block too: [simulator.compare] tells it.
 func (s *simulator) stepBlock(o *conversions, first int, step int64) {
+	g := s.grid
 	for u := range s.inputs {
 		clear(s.steps[u])
 		if s.coarse[u].present {
-			s.grid.refine(s.steps[u], s.sums[u])
+			g.refine(s.steps[u], s.sums[u])
 		}
 		for j, v := range s.fineSums[u] {
 			s.steps[u][j] += v
 		}
 	}
-	s.circuit.Unpack(s.linearRun, s.linear)
+	for k := range s.asked {
+		s.peaks(k)
+	}
 	for i, d := range s.difference {
 		s.change[i] = s.linear[i] + d
 	}
 	s.circuit.Unpack(s.limitedRun, s.change[:len(s.difference)])
-	everTouched := false
-	perConversion := s.grid.plan.Steps()
-	for j := range s.grid.steps {
+	s.touched = false
+	perConversion := g.plan.Steps()
+	scale := 1 << g.plan.Doublings
+	every := max(1, scale/watchedPerBase)
+	for j := range g.steps {
 		clipped := s.inputsAt(j, step)
-		before := s.y[s.ports[0]] - s.yLinear[s.ports[0]]
-		touched := s.circuit.Step(s.limitedRun, s.uLimited, s.y) || clipped
-		s.circuit.StepLinear(s.linearRun, s.u, s.yLinear)
-		everTouched = everTouched || touched
-		for k := range s.asked {
-			s.asked[k].see(s.linearRun.E[k])
+		y := s.y
+		if (j+1)%every != 0 && (j+2)%perConversion != 0 {
+			y = nil
 		}
-		for k := range s.stages {
-			s.stages[k].see(s.y[s.stageIndex[k]])
-		}
+		touched := s.circuit.Step(s.limitedRun, s.u, y) || clipped
 		if touched {
-			s.watchers.touched(s, step+int64(j))
+			s.touched = true
+			s.watchers.touched(s, j, step+int64(j))
+		}
+		if y == nil {
+			continue
+		}
+		for k, q := range s.stageIndex {
+			s.stages[k].see(y[q])
 		}
 		for k := range s.watchers.amplifiers {
 			a := &s.watchers.amplifiers[k]
-			a.watch(s.y[a.plus], s.y[a.minus], s.y[a.out], s.limitedRun.E[k], step+int64(j), 1)
+			a.watch(y[a.plus], y[a.minus], y[a.out], s.limitedRun.E[k], step+int64(j), int64(every))
 		}
-		if (j+1)%perConversion == 0 {
-			k := first + j/perConversion
+		k := first + j/perConversion
+		switch (j + 1) % perConversion {
+		case 0:
 			for p, i := range s.ports {
-				o.overload[p][k] = 0
-				if everTouched || s.parted {
-					o.overload[p][k] = s.y[i] - s.yLinear[i]
-				}
+				o.overload[p][k] = y[i]
 			}
-			o.slope[k] = (s.y[s.ports[0]] - s.yLinear[s.ports[0]] - before) * s.grid.plan.Rate
+			o.slope[k] = (y[s.ports[0]] - o.slope[k]) * g.plan.Rate
+		case perConversion - 1:
+			o.slope[k] = y[s.ports[0]]
 		}
 	}
-	if everTouched || s.parted {
-		s.circuit.Pack(s.difference, s.limitedRun)
-		s.circuit.Pack(s.change, s.linearRun)
-		for i := range s.difference {
-			s.difference[i] -= s.change[i]
+}
+
+// watchedPerBase is how often a base sample's steps are looked at for excursions while the limited run is stepped: at
+// least 16 times to a period of the tracks' highest frequency.
+const watchedPerBase = 8
+
+// compare takes the linear run, which the lanes have made of a block that was stepped, from the limited one.
+func (s *simulator) compare(o *conversions, first int) {
+	parted := s.parted || s.touched
+	for k := first; k < first+s.grid.conversions; k++ {
+		for p := range s.ports {
+			linear := 0.
+			for part := range o.parts {
+				linear += o.parts[part][p][k]
+			}
+			if parted {
+				o.overload[p][k] -= linear
+			} else {
+				o.overload[p][k] = 0
+			}
 		}
-		s.settleDifference()
+	}
+	if !parted {
+		return
+	}
+	s.circuit.Pack(s.difference, s.limitedRun)
+	for _, l := range s.lanes {
+		for i := range s.difference {
+			s.difference[i] -= l.state[i]
+		}
+	}
+	s.settleDifference()
+}
+
+// peaks sees how far the linear run takes an amplifier's source in the block: by a parabola through each three instants.
+func (s *simulator) peaks(k int) {
+	x, _ := s.read(s.elements[k].source)
+	e := &s.asked[k]
+	for i, v := range x {
+		e.see(v)
+		if i+1 == len(x) || i == 0 {
+			continue
+		}
+		before, after := x[i-1], x[i+1]
+		if (v-before)*(after-v) < 0 {
+			d := after - before
+			e.see(v - d*d/(8*(before-2*v+after)))
+		}
 	}
 }
 
@@ -687,18 +736,18 @@ func (s *simulator) stepBlock(o *conversions, first int, step int64) {
 func (s *simulator) inputsAt(j int, step int64) (clipped bool) {
 	for u := range s.u {
 		v := s.steps[u][j]
-		s.u[u], s.uLimited[u] = v, v
 		if clip := s.clip[u]; math.Abs(v) > clip {
 			s.watchers.loud[u-1].touch(step+int64(j), math.Abs(v)/clip, 1)
-			s.uLimited[u] = math.Copysign(clip, v)
+			v = math.Copysign(clip, v)
 			clipped = true
 		}
+		s.u[u] = v
 	}
 	return clipped
 }
 
-// advanceLanes takes every lane through a block.
-func (s *simulator) advanceLanes(c *chunk, o *conversions, b int) {
+// advanceLanes takes every lane through a block. In a block that was stepped the slope is known already.
+func (s *simulator) advanceLanes(c *chunk, o *conversions, b int, stepped bool) {
 	states := len(s.linear)
 	first := b * s.grid.conversions
 	for i, l := range s.lanes {
@@ -715,7 +764,9 @@ func (s *simulator) advanceLanes(c *chunk, o *conversions, b int) {
 			for p := range s.ports {
 				rows[p][first+k] += r[p]
 			}
-			o.slope[first+k] += (r[0] - r[len(s.ports)]) * s.grid.plan.Rate
+			if !stepped {
+				o.slope[first+k] += (r[0] - r[len(s.ports)]) * s.grid.plan.Rate
+			}
 		}
 		l.state, l.next = l.next, l.state
 	}
@@ -806,20 +857,31 @@ func newWatchers(n *circuit.Network, at bilinear.Operating, indexOf map[int]int,
 	return w
 }
 
-// touched notes which limits hold at a step.
-func (w *watchers) touched(s *simulator, step int64) {
+// touched notes which limits hold at a block's j-th step. By how much the linear run passes them is told by its nearest
+// instant at the base rate.
+func (w *watchers) touched(s *simulator, j int, step int64) {
 	w.union++
-	linear := s.linearRun
+	near := min((j+1)>>s.grid.plan.Doublings, s.grid.base-1)
+	linear := func(q int) float64 {
+		x, _ := s.read(q)
+		if near > 0 && math.Abs(x[near-1]) > math.Abs(x[near]) {
+			return x[near-1]
+		}
+		return x[near]
+	}
 	for k := range w.amplifiers {
-		a := &w.amplifiers[k]
+		a, e := &w.amplifiers[k], s.elements[k]
 		switch s.limitedRun.Pieces[k] {
 		case bilinear.High:
-			a.high.touch(step, linear.E[k]/a.highest, 1)
+			a.high.touch(step, linear(e.source)/a.highest, 1)
 		case bilinear.Low:
-			a.low.touch(step, linear.E[k]/a.lowest, 1)
+			a.low.touch(step, linear(e.source)/a.lowest, 1)
 		case bilinear.SlewUp, bilinear.SlewDown:
-			// Twice what is left to the history is half a step's slope.
-			a.slew.touch(step, math.Abs(linear.H[k]-linear.E[k])/a.slewStep, 1)
+			ratio := 0.
+			if e.slope >= 0 {
+				ratio = math.Abs(linear(e.slope)) / a.slewStep
+			}
+			a.slew.touch(step, ratio, 1)
 		}
 	}
 	for i := range w.capsules {
