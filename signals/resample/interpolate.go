@@ -18,22 +18,23 @@ const (
 	// mostPhases is the largest denominator of a ratio of rates that gets exact phases.
 	mostPhases = 4096
 	// tablePhases is the number of phases between which the kernel is interpolated for all other ratios: the error
-	// of a straight line, (π/tablePhases)²/8, is −143 dB.
-	tablePhases = 4096
+	// of a straight line, (2π·0.23/tablePhases)²/8 at the end of the pass band, is −144 dB.
+	tablePhases = 2048
 )
 
 // Interpolator takes a stream to a higher rate by band-limited interpolation on an absolute time grid, without delay:
-// a windowed sinc to between two and four times the source's rate, then half-band filters, each doubling. Flat within
+// a windowed sinc to twice the source's rate, a shorter one to between two and four times of it, then half-band
+// filters, each doubling. Flat within
 // 0.001 dB to 0.46 of the source's rate, and the images of all that is there, from 0.54 on, are at least 120 dB down.
 // What the source holds between 0.46 and half of its rate passes on the filter's slope, −6 dB at half the rate, and its
 // images between half and 0.54 of the rate on the other side of the slope.
 type Interpolator struct {
-	stage
+	source   *source
+	last     stage
 	from, to float64
 	srcFirst int64
 	next     int64 // grid index of the next output
 	tail     int64
-	base     *sincStage
 }
 
 // stage is one step of the interpolation: fill puts the next values into dst, zeros without end after the source's.
@@ -51,31 +52,44 @@ func New(src signals.Stream, from, to float64, srcFirst, first, tail int64) *Int
 	for to/float64(int64(2)<<doublings) >= 2*from {
 		doublings++
 	}
-	// Each half-band stage begins where the one after it needs its first value.
+	base := to / float64(int64(1)<<doublings)
+	// Each stage begins where the one after it needs its first value.
 	start := first
-	starts := make([]int64, doublings)
-	halves := make([][]float64, doublings)
-	for i := doublings - 1; i >= 0; i-- {
-		starts[i] = start
-		halves[i] = halfBand(from / (to / float64(int64(1)<<(doublings-i))))
-		start = floorHalf(start) - int64(len(halves[i])) + 1
+	halves := make([]*halfStage, doublings)
+	for i := range halves {
+		h := newHalfStage(halfBand(from/(to/float64(int64(2)<<i))), start)
+		halves[i], start = h, h.origin
 	}
-	base := newSincStage(src, from, to/float64(int64(1)<<doublings), srcFirst, start)
-	var last stage = base
-	for i := range doublings {
-		last = newHalfStage(last, halves[i], starts[i])
+	var shift *sincStage
+	if base != 2*from {
+		shift = newSincStage(2*from, base, (1-PassBand)/2, start)
+		start = shift.origin
 	}
-	return &Interpolator{stage: last, from: from, to: to, srcFirst: srcFirst, next: first, tail: tail, base: base}
+	double := newSincStage(from, 2*from, PassBand, start)
+	if double.origin > srcFirst {
+		panic("resample: interpolation begins behind the source's first sample")
+	}
+	p := &Interpolator{from: from, to: to, srcFirst: srcFirst, next: first, tail: tail}
+	p.source = &source{src: src, before: srcFirst - double.origin}
+	double.src = p.source
+	p.last = double
+	if shift != nil {
+		shift.src, p.last = p.last, shift
+	}
+	for _, h := range slices.Backward(halves) {
+		h.src, p.last = p.last, h
+	}
+	return p
 }
 
 // Read implements [signals.Stream].
 func (p *Interpolator) Read(dst []float64) (int, error) {
-	if err := p.fill(dst); err != nil {
+	if err := p.last.fill(dst); err != nil {
 		return 0, err
 	}
 	n := int64(len(dst))
-	if p.base.ended {
-		end := p.srcFirst + p.base.read + p.tail
+	if p.source.ended {
+		end := p.srcFirst + p.source.read + p.tail
 		// The first grid index at or after the end.
 		last := int64(float64(end) * p.to / p.from)
 		for float64(last)*p.from < float64(end)*p.to {
@@ -92,12 +106,34 @@ func (p *Interpolator) Read(dst []float64) (int, error) {
 
 func floorHalf(i int64) int64 { return i >> 1 }
 
-// sincStage interpolates to the base rate.
-type sincStage struct {
-	src   signals.Stream
-	ended bool
-	read  int64
+// source is a stream as a stage: with zeros before it and, without end, after it.
+type source struct {
+	src    signals.Stream
+	before int64 // zeros still to come before the stream
+	read   int64 // values of the stream
+	ended  bool
+}
 
+func (s *source) fill(dst []float64) error {
+	n := int(min(s.before, int64(len(dst))))
+	clear(dst[:n])
+	s.before -= int64(n)
+	if n < len(dst) && !s.ended {
+		more, err := s.src.Read(dst[n:])
+		n += more
+		s.read += int64(more)
+		if err != nil && !errors.Is(err, io.EOF) {
+			return err
+		}
+		s.ended = err != nil
+	}
+	clear(dst[n:])
+	return nil
+}
+
+// sincStage interpolates from one rate to another by a windowed sinc.
+type sincStage struct {
+	src    stage
 	reach  int       // the kernel reaches this many source samples to either side
 	buffer []float64 // source samples from index origin on
 	origin int64
@@ -108,17 +144,19 @@ type sincStage struct {
 	phases [][]float64
 }
 
-func newSincStage(src signals.Stream, from, to float64, srcFirst, first int64) *sincStage {
-	s := &sincStage{src: src, ratio: from / to, next: first}
-	s.reach = taps(interpolatorStop, 2*math.Pi*(1-2*PassBand)) / 2
+// newSincStage takes a source that holds something up to top of its rate, top being below ½; value first is the first
+// one wanted.
+func newSincStage(from, to, top float64, first int64) *sincStage {
+	s := &sincStage{ratio: from / to, next: first}
+	s.reach = (taps(interpolatorStop, 2*math.Pi*(1-2*top)) + 1) / 2
 	s.num, s.den = fraction(s.ratio)
-	phases := int64(tablePhases)
+	phases := tablePhases
 	if s.den > 0 {
-		phases = s.den
+		phases = int(s.den)
 	}
 	s.phases = make([][]float64, phases+1)
 	for i := range s.phases {
-		mirrored := int(phases) - i
+		mirrored := phases - i
 		if mirrored >= i {
 			s.phases[i] = s.kernel(float64(i) / float64(phases))
 			continue
@@ -126,14 +164,8 @@ func newSincStage(src signals.Stream, from, to float64, srcFirst, first int64) *
 		s.phases[i] = slices.Clone(s.phases[mirrored])
 		slices.Reverse(s.phases[i])
 	}
-	// Source samples from −reach around the first output on; those before srcFirst are zeros.
 	at, _ := s.place(first)
 	s.origin = at - int64(s.reach) + 1
-	before := srcFirst - s.origin
-	if before < 0 {
-		panic("resample: interpolation begins behind the source's first sample")
-	}
-	s.buffer = make([]float64, before)
 	return s
 }
 
@@ -238,20 +270,9 @@ func (s *sincStage) need(end int64) error {
 	if have >= end {
 		return nil
 	}
-	missing := int(end - have)
 	old := len(s.buffer)
-	s.buffer = append(s.buffer, make([]float64, missing)...)
-	if s.ended {
-		return nil
-	}
-	n, err := s.src.Read(s.buffer[old:])
-	s.read += int64(n)
-	if err != nil && !errors.Is(err, io.EOF) {
-		return err
-	}
-	clear(s.buffer[old+n:])
-	s.ended = err != nil
-	return nil
+	s.buffer = append(s.buffer, make([]float64, end-have)...)
+	return s.src.fill(s.buffer[old:])
 }
 
 // halfStage doubles the rate: every second value is the source's own, the ones between are interpolated.
@@ -263,11 +284,11 @@ type halfStage struct {
 	next   int64 // index at this stage's rate
 }
 
-// newHalfStage takes the weights of pairs as halfBand gives them.
-func newHalfStage(src stage, taps []float64, first int64) *halfStage {
+// newHalfStage takes the weights of pairs as halfBand gives them; value first is the first one wanted.
+func newHalfStage(taps []float64, first int64) *halfStage {
 	mirrored := slices.Clone(taps)
 	slices.Reverse(mirrored)
-	return &halfStage{src: src, taps: append(mirrored, taps...), origin: floorHalf(first) - int64(len(taps)) + 1, next: first}
+	return &halfStage{taps: append(mirrored, taps...), origin: floorHalf(first) - int64(len(taps)) + 1, next: first}
 }
 
 // halfBand returns the weights of the pairs of samples around a point midway, nearest first, for a source that holds

@@ -1,7 +1,6 @@
 package resample
 
 import (
-	"errors"
 	"io"
 	"math"
 
@@ -15,8 +14,8 @@ import (
 // complementary: they sum to the stream. The lower one is −6 dB at the edge, flat up to 1 % below it and 120 dB down
 // from 1 % above it.
 type Split struct {
-	src  signals.Stream
-	half int // half the filter's length; 0: everything lies below
+	source source
+	half   int // half the filter's length; 0: everything lies below
 
 	response []complex128 // empty where everything lies below
 	work     []complex128
@@ -25,11 +24,8 @@ type Split struct {
 	fresh    int       // where the new ones begin
 
 	low, high []float64 // parted, not yet read
-	zeros     int       // still to come before the source's first sample
 	given     int64     // values parted
-	read      int64     // values of the source
 	lead      int
-	ended     bool
 	err       error
 }
 
@@ -38,14 +34,14 @@ type Split struct {
 // source's last sample comes as much again. Where the edge is half the rate or more, everything lies below and nothing
 // follows. src may be nil if only HalfLength is wanted.
 func NewSplit(src signals.Stream, rate, edge float64, lead int) *Split {
-	s := &Split{src: src, lead: lead}
+	s := &Split{lead: lead}
 	if edge < rate/2 {
 		s.half = taps(splitStop, 2*math.Pi*0.02*edge/rate)/2 + 1
 	}
 	if src == nil {
 		return s
 	}
-	s.zeros = lead + s.half
+	s.source = source{src: src, before: int64(lead + s.half)}
 	size := 4096
 	for size < 6*s.half {
 		size *= 4
@@ -96,7 +92,7 @@ func (s *Split) Read(low, high []float64) (int, error) {
 
 // more parts one block. Blocks lie on a grid of their own, so that the values do not depend on how they are read.
 func (s *Split) more() {
-	if err := s.fill(s.input[s.fresh:]); err != nil {
+	if err := s.source.fill(s.input[s.fresh:]); err != nil {
 		s.err = err
 		return
 	}
@@ -104,8 +100,8 @@ func (s *Split) more() {
 	if s.half > 0 {
 		low = s.filter()
 	}
-	if s.ended {
-		if left := int64(s.lead) + s.read + int64(s.half) - s.given; left <= int64(len(low)) {
+	if s.source.ended {
+		if left := int64(s.lead) + s.source.read + int64(s.half) - s.given; left <= int64(len(low)) {
 			low, s.err = low[:left], io.EOF
 		}
 	}
@@ -134,22 +130,4 @@ func (s *Split) filter() []float64 {
 		s.result[i], s.result[step+i] = real(z), imag(z)
 	}
 	return s.result
-}
-
-// fill takes the next values: zeros before the source's first sample, the source, zeros after its last.
-func (s *Split) fill(dst []float64) error {
-	n := min(s.zeros, len(dst))
-	clear(dst[:n])
-	s.zeros -= n
-	if n < len(dst) && !s.ended {
-		more, err := s.src.Read(dst[n:])
-		n += more
-		s.read += int64(more)
-		if err != nil && !errors.Is(err, io.EOF) {
-			return err
-		}
-		s.ended = err != nil
-	}
-	clear(dst[n:])
-	return nil
 }
