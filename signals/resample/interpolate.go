@@ -24,10 +24,9 @@ const (
 
 // Interpolator takes a stream to a higher rate by band-limited interpolation on an absolute time grid, without delay:
 // a windowed sinc to twice the source's rate, a shorter one to between two and four times of it, then half-band
-// filters, each doubling. Flat within
-// 0.001 dB to 0.46 of the source's rate, and the images of all that is there, from 0.54 on, are at least 120 dB down.
-// What the source holds between 0.46 and half of its rate passes on the filter's slope, −6 dB at half the rate, and its
-// images between half and 0.54 of the rate on the other side of the slope.
+// filters, each doubling. Flat within 0.001 dB to 0.46 of the source's rate, and the images of all that is there, from
+// 0.54 on, are at least 120 dB down. What the source holds between 0.46 and half of its rate passes on the filter's
+// slope, −6 dB at half the rate, and its images, between half and 0.54 of the rate, on the other side of the slope.
 type Interpolator struct {
 	source   *source
 	last     stage
@@ -41,9 +40,9 @@ type Interpolator struct {
 type stage interface{ fill(dst []float64) error }
 
 // New interpolates src: its sample j is at time (srcFirst+j)/from; value k read is the sound at time (first+k)/to.
-// Around the source's samples are zeros. Values come up to the time (srcFirst+N+tail)/from,
-// N being the source's length. Rates are in Hz, to at least 2·from; first must not lie behind the source's first
-// sample. It panics where they are otherwise.
+// Around the source's samples are zeros. Values come up to, but not at, the time (srcFirst+N+tail)/from, N being the
+// source's length. Rates are in Hz, to at least 2·from; first must not lie behind the source's first sample. It panics
+// where they are otherwise.
 func New(src signals.Stream, from, to float64, srcFirst, first, tail int64) *Interpolator {
 	if !(to >= 2*from) {
 		panic("resample: an interpolator must at least double the rate")

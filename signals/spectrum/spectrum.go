@@ -94,7 +94,7 @@ func (w *Welch) Write(x []float64) {
 }
 
 // add adds the periodograms of two segments, as the real and the imaginary part of one transform:
-// |Z(k)|² + |Z(−k)|² = 2·|A(k)|² + 2·|B(k)|². b may be nil.
+// |Z(k)|² + |Z(−k)|² = 2·|A(k)|² + 2·|B(k)|². b may be nil; all segments of a tally are of the same length.
 func (t *tally) add(a, b, window []float64) {
 	t.segments++
 	if b == nil {
@@ -109,7 +109,6 @@ func (t *tally) add(a, b, window []float64) {
 	for i, w := range window {
 		t.work[i] = complex((a[i]-meanA)*w, (b[i]-meanB)*w)
 	}
-	clear(t.work[len(window):])
 	z := fourier.CoefficientsRadix4(t.work)
 	last := len(t.power) - 1
 	t.power[0] += square(z[0])
@@ -134,7 +133,7 @@ func square(z complex128) float64 { return float64(real(z)*real(z)) + float64(im
 // and overlaps the one before it by more than half, unless the stream's length fits. A stream shorter than one segment
 // is one segment of its own length; one of less than four values has no density.
 func (w *Welch) Result() Density {
-	t := tally{work: slices.Clone(w.tally.work), power: slices.Clone(w.tally.power), segments: w.tally.segments}
+	t := tally{work: make([]complex128, 2*w.half), power: slices.Clone(w.tally.power), segments: w.tally.segments}
 	win := w.window
 	h, end := w.half, w.filled
 	switch {
