@@ -83,12 +83,20 @@ type sine struct {
 	cycles float64 // a step
 }
 
+// stretch is how many steps a tone is turned on from one exact value, on a grid of its own.
+const stretch = 64
+
 func (s sine) add(dst []float64, first int64) {
-	_, phase := math.Modf(s.cycles * float64(first))
-	now := cmplx.Rect(s.level, 2*math.Pi*phase)
 	turn := cmplx.Rect(1, 2*math.Pi*s.cycles)
-	for i := range dst {
-		dst[i] += imag(now)
+	var now complex128
+	for at := first &^ (stretch - 1); at < first+int64(len(dst)); at++ {
+		if at%stretch == 0 {
+			_, phase := math.Modf(s.cycles * float64(at))
+			now = cmplx.Rect(s.level, 2*math.Pi*phase)
+		}
+		if at >= first {
+			dst[at-first] += imag(now)
+		}
 		now *= turn
 	}
 }

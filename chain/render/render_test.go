@@ -325,17 +325,20 @@ func TestNothingTouchedIsNoOverload(t *testing.T) {
 	}
 }
 
-func TestSameBytesOnOneCoreAndSeveral(t *testing.T) {
+func TestSameBytesWhateverTheCoresAndChunks(t *testing.T) {
 	n := demoNetwork(t)
-	run := func(cores int) *sound {
+	run := func(cores, chunk int) *sound {
 		defer runtime.GOMAXPROCS(runtime.GOMAXPROCS(cores))
-		return renderAll(t, n, Options{Noise: noise.At(n), Seed: 9}, hostile(48000)["speech-like"])
+		return renderAll(t, n, Options{Noise: noise.At(n), Seed: 9, chunk: chunk}, hostile(48000)["speech-like"])
 	}
-	one, four := run(1), run(4)
-	for l := range one.layers {
-		for i, v := range one.layers[l] {
-			if v != four.layers[l][i] {
-				t.Fatalf("%v differs at %d", Layer(l), i)
+	want := run(1, 0)
+	for _, c := range []struct{ cores, chunk int }{{4, 0}, {2, 1}, {2, 600}} {
+		got := run(c.cores, c.chunk)
+		for l := range want.layers {
+			for i, v := range want.layers[l] {
+				if v != got.layers[l][i] {
+					t.Fatalf("%d cores, chunks of %d: %v differs at %d", c.cores, c.chunk, Layer(l), i)
+				}
 			}
 		}
 	}
@@ -389,3 +392,144 @@ bits = 10
 low = 0
 high = 2
 `
+
+// interfered returns the line chain with an interferer.
+func interfered(t *testing.T, into, frequency, level, rest string, set ...string) *circuit.Network {
+	return parse(t, lineChain+fmt.Sprintf("[[interferer]]\ninto = %q\nfrequency = %q\nlevel = %q\n%s\n", into, frequency, level, rest), set...)
+}
+
+func silence(seconds float64) signals.Track { return tone.Silence(48000, seconds) }
+
+func TestInterferingTonesComeOutAsTheCircuitResponds(t *testing.T) {
+	for _, c := range []struct {
+		into      string
+		f, folds  float64
+		frequency string
+	}{{"line", 1000, 1000, "1kHz"}, {"line", 9000, 7000, "9kHz"}, {"supply", 700, 700, "700Hz"}, {"line", 301000, 3000, "301kHz"}} {
+		n := interfered(t, c.into, c.frequency, "0.2Vp", "")
+		s := renderAll(t, n, Options{}, silence(0.6))
+		u := circuit.SoundInput(0)
+		if c.into == "supply" {
+			u = circuit.SupplyInput
+		}
+		want := 0.2 * cmplx.Abs(n.At(c.f).Into(n.Output).Input(u)) / s.result.Span.Unit()
+		got, rest := fit(s.layers[Interference], c.folds, 16000, 3200)
+		// At 300 kHz, with sixteen steps to a period, warping is 0.1 dB a pole: this chain has three there.
+		tolerance := linearTolerance
+		if c.f > 24000 {
+			tolerance = 0.5
+		}
+		if db := 20 * math.Log10(cmplx.Abs(got)/want); !(math.Abs(db) <= tolerance) {
+			t.Errorf("%s into %s is %.4f dB off", c.frequency, c.into, db)
+		}
+		if !(rest < 1e-6) {
+			t.Errorf("%s into %s leaves %.3g", c.frequency, c.into, rest)
+		}
+		if folded, _ := fit(s.folded, c.folds, 16000, 3200); (cmplx.Abs(folded) > want/2) != (c.f > 8000) {
+			t.Errorf("%s into %s: %.3g of it said to be folded", c.frequency, c.into, cmplx.Abs(folded))
+		}
+	}
+}
+
+// A square wave's harmonics are 4/(π·k) of its peak, k odd; those above half the rate fold.
+func TestInterferingSquareHasItsHarmonics(t *testing.T) {
+	n := interfered(t, "line", "1.1kHz", "0.4Vpp", `shape = "square"`)
+	s := renderAll(t, n, Options{}, silence(0.6))
+	for _, c := range []struct{ k, at float64 }{{1, 1100}, {3, 3300}, {5, 5500}, {7, 7700}, {9, 6100}, {11, 3900}, {13, 1700}} {
+		want := 0.2 * 4 / (math.Pi * c.k) * cmplx.Abs(n.At(c.k*1100).Into(n.Output).Input(circuit.SoundInput(0))) / s.result.Span.Unit()
+		got, _ := fit(s.layers[Interference], c.at, 16000, 3200)
+		if db := 20 * math.Log10(cmplx.Abs(got)/want); !(math.Abs(db) <= 0.05) {
+			t.Errorf("harmonic %g is %.4f dB off", c.k, db)
+		}
+	}
+}
+
+// A band of noise comes out with the power that the response's mean square over the band lets through.
+func TestInterferingNoiseHasItsPower(t *testing.T) {
+	n := interfered(t, "line", "3kHz", "0.1Vrms", "shape = \"noise\"\nbandwidth = \"1kHz\"")
+	s := renderAll(t, n, Options{Seed: 5}, silence(4))
+	power := 0.
+	for f := 2505.; f < 3500; f += 10 {
+		power += square2(cmplx.Abs(n.At(f).Into(n.Output).Input(circuit.SoundInput(0)))) / 100
+	}
+	want := 0.1 * math.Sqrt(power) / s.result.Span.Unit()
+	// 4000 independent values in four seconds of a band 1 kHz wide: 1.6 % for one sigma of the RMS; three allowed, and the
+	// band's Butterworth skirts.
+	if got := rms(s.layers[Interference]); !(math.Abs(got/want-1) <= 0.05) {
+		t.Errorf("RMS %.4g, want %.4g", got, want)
+	}
+}
+
+func square2(x float64) float64 { return x * x }
+
+func rms(x []float64) float64 {
+	sum := 0.
+	for _, v := range x {
+		sum += v * v
+	}
+	return math.Sqrt(sum / float64(len(x)))
+}
+
+// The noise drawn has the power that the budget adds up.
+func TestNoiseDrawnIsTheBudgets(t *testing.T) {
+	n := parse(t, lineChain, "converter.enob=10.5")
+	budget := noise.At(n)
+	s := renderAll(t, n, Options{Noise: budget, Seed: 2}, silence(4))
+	want := math.Sqrt(budget.Power) / s.result.Span.Unit()
+	// 64 000 values: 0.3 % for one sigma.
+	if got := rms(s.layers[Noise]); !(math.Abs(got/want-1) <= 0.015) {
+		t.Errorf("RMS %.5g, budget %.5g", got, want)
+	}
+}
+
+// Aperture jitter: SNR = −20·log10(2πf·σ) (the standard formula, from memory).
+func TestJitterIsTheFormulas(t *testing.T) {
+	n := parse(t, wireChain, "converter.jitter=1us", "converter.bits=16")
+	s := renderAll(t, n, Options{Seed: 4}, tone.Sine(48000, 2, 3001, -1))
+	want := math.Pow(10, -1./20) / math.Sqrt2 * 2 * math.Pi * 3001 * 1e-6
+	if got := rms(s.layers[Noise]); !(math.Abs(got/want-1) <= 0.03) {
+		t.Errorf("RMS %.5g, want %.5g", got, want)
+	}
+}
+
+// A sampling capacitor that settles to ε of its last sample is a low-pass (1−ε)/(1 − ε·z⁻¹); one that comes grounded
+// loses ε of everything, the rest included.
+func TestIncompleteSettling(t *testing.T) {
+	// 10 kΩ behind the input and 10 pF for 0.2 µs: two time constants.
+	set := []string{"line.output_resistance=10k", "converter.sampling_capacitor=10p", "converter.acquisition=0.2us", "converter.switch_resistance=0"}
+	epsilon := math.Exp(-2)
+	f := 1000.
+	own := renderAll(t, parse(t, wireChain, set...), Options{}, tone.Sine(48000, 0.5, f, -6))
+	got, _ := fit(own.layers[Wanted], f, 16000, 800)
+	z := cmplx.Exp(complex(0, -2*math.Pi*f/16000))
+	want := math.Pow(10, -6./20) * cmplx.Abs(complex(1-epsilon, 0)/(1-complex(epsilon, 0)*z))
+	if db := 20 * math.Log10(cmplx.Abs(got)/want); !(math.Abs(db) <= 0.02) {
+		t.Errorf("after its own sample: %.4f dB off", db)
+	}
+	grounded := renderAll(t, parse(t, wireChain, append(set, "converter.shares_with=ground")...), Options{}, tone.Sine(48000, 0.5, f, -6))
+	got, _ = fit(grounded.layers[Wanted], f, 16000, 800)
+	want = math.Pow(10, -6./20) * (1 - epsilon)
+	if db := 20 * math.Log10(cmplx.Abs(got)/want); !(math.Abs(db) <= 0.02) {
+		t.Errorf("after ground: %.4f dB off", db)
+	}
+	// The rest, 1 V on a span of 2 V, is 0 in full scale and falls by ε of 1 V.
+	if want := -epsilon; !(math.Abs(grounded.result.Rest-want) <= 2e-3) {
+		t.Errorf("rests at %.4f, want %.4f", grounded.result.Rest, want)
+	}
+}
+
+// A microphone passes no more than its maximum level.
+func TestMicrophoneClipsAtItsMaximumLevel(t *testing.T) {
+	n := parse(t, wireChain, "line.maximum_level=84.9691001300805dBSPL") // 6 dB below full scale
+	s := renderAll(t, n, Options{}, tone.Sine(48000, 0.3, 440, -3))
+	most := 0.
+	for i := range s.layers[Wanted][1000:4000] {
+		most = math.Max(most, math.Abs(s.layers[Wanted][1000+i]+s.layers[Overloaded][1000+i]))
+	}
+	if want := math.Pow(10, -6./20); !(math.Abs(most-want) <= 1e-3) {
+		t.Errorf("passes %.4f, want %.4f", most, want)
+	}
+	if len(s.result.Overloads) != 1 || s.result.Overloads[0].Kind != TooLoud || !(math.Abs(s.result.Overloads[0].Worst.Over-3) < 0.01) {
+		t.Errorf("overloads: %+v", s.result.Overloads)
+	}
+}

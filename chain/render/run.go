@@ -1,6 +1,7 @@
 package render
 
 import (
+	"cmp"
 	"context"
 	"errors"
 	"math"
@@ -46,6 +47,7 @@ type Options struct {
 	Progress func(conversions int64) // called now and then, from one goroutine; may be nil
 
 	plain bool // step every block
+	chunk int  // base samples in a chunk; 0: chunkBase
 }
 
 // Result is what a run found beside the sound.
@@ -125,7 +127,7 @@ func Run(ctx context.Context, n *circuit.Network, feeds []Feed, o Options, sink 
 	sim.always = sim.always || o.plain
 	p := &pipeline{
 		feed: feed, sim: sim, conv: newConverter(n, at, settle, o),
-		conversion: first + 1, blocks: max(1, chunkBase/g.base),
+		conversion: first + 1, blocks: max(1, cmp.Or(o.chunk, chunkBase)/g.base),
 	}
 	p.conv.sink, p.conv.progress = sink, o.Progress
 	if err := p.run(ctx); err != nil {
