@@ -48,8 +48,7 @@ func samples(n int, f func(j int) float64) *signals.Samples {
 	return &s
 }
 
-// Tones at these fractions of half the source's rate, off whole periods, are the usual ones for judging a resampler
-// (ITU-T and AES practice, no single source); 0.913 of half the rate is where good resamplers end their pass band.
+// Tones at these fractions of half the source's rate, off whole periods, judge a resampler (common practice, no source).
 var fractions = []float64{0.01, 0.1, 0.25, 0.5, 0.75, 0.9, 0.913}
 
 // A tone comes out as the same tone, at the right times and with nothing beside it.
