@@ -209,8 +209,7 @@ func (n *Network) unreached() []int {
 	for i := range parent {
 		parent[i] = i
 	}
-	var find func(i int) int
-	find = func(i int) int {
+	find := func(i int) int {
 		for parent[i] != i {
 			parent[i] = parent[parent[i]]
 			i = parent[i]

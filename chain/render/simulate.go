@@ -188,7 +188,6 @@ func (s *simulator) reachOf(m blas64.General, byColumn bool) []float64 {
 type laneRun struct {
 	*lane
 	state, next []float64
-	into        func(*conversions) [][]float64
 }
 
 // excursion is how far a voltage went from rest.

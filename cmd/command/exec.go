@@ -72,8 +72,8 @@ type usageError struct{ error }
 // refusal is something that is not done for the user's sake.
 type refusal struct{ error }
 
-// limitsBroken says that the work is done and a limit does not hold.
-var limitsBroken = errors.New("a limit is broken")
+// errBroken says that the work is done and a limit does not hold.
+var errBroken = errors.New("a limit is broken")
 
 // status prints what err says, and returns the exit status that goes with it.
 func (s streams) status(err error) int {
@@ -84,7 +84,7 @@ func (s streams) status(err error) int {
 	switch {
 	case err == nil:
 		return Done
-	case errors.Is(err, limitsBroken):
+	case errors.Is(err, errBroken):
 		return Broken
 	case errors.As(err, &faults):
 		fmt.Fprintln(s.err, faults)

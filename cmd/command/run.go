@@ -120,7 +120,7 @@ func run(ctx context.Context, s streams, f runFlags, args []string) error {
 		}
 	}
 	if broken {
-		return limitsBroken
+		return errBroken
 	}
 	return nil
 }
