@@ -6,6 +6,7 @@ import (
 	"errors"
 	"math"
 	"math/rand/v2"
+	"time"
 
 	"midrail/bilinear"
 	"midrail/chain/circuit"
@@ -65,6 +66,15 @@ type Result struct {
 	Overloads   []Overload // for each owner and kind that saw any
 	Events      []Event    // the largest, in the order of time
 	EventCount  int64
+	Times       Times
+}
+
+// Times are how long the parts of a run were at work; all but the first go on beside each other.
+type Times struct {
+	Preparing time.Duration // rest point, internal rate, maps
+	Tracks    time.Duration // reading, parting, interpolating
+	Circuit   time.Duration
+	Converter time.Duration // layers and codes, and what the caller does with them
 }
 
 // StageRange is where a stage's output went.
@@ -108,6 +118,7 @@ func Run(ctx context.Context, n *circuit.Network, feeds []Feed, o Options, sink 
 	if top == 0 {
 		return nil, ErrNoSound
 	}
+	begun := time.Now()
 	at, err := n.Rest()
 	if err != nil {
 		return nil, err
@@ -130,6 +141,7 @@ func Run(ctx context.Context, n *circuit.Network, feeds []Feed, o Options, sink 
 		conversion: first + 1, blocks: max(1, cmp.Or(o.chunk, chunkBase)/g.base),
 	}
 	p.conv.sink, p.conv.progress = sink, o.Progress
+	p.times.Preparing = time.Since(begun)
 	if err := p.run(ctx); err != nil {
 		return nil, err
 	}
@@ -146,6 +158,14 @@ type pipeline struct {
 	conv       *converter
 	conversion int64 // the next chunk's first
 	blocks     int   // in a chunk
+	times      Times // each part's is its goroutine's
+}
+
+// timed adds the time that work takes to a total.
+func timed(total *time.Duration, work func()) {
+	begun := time.Now()
+	work()
+	*total += time.Since(begun)
 }
 
 // work is a chunk on its way.
@@ -172,7 +192,7 @@ func (p *pipeline) run(ctx context.Context) error {
 				return
 			case w := <-free:
 				w.chunk.first = p.conversion
-				w.err = p.feed.fill(w.chunk)
+				timed(&p.times.Tracks, func() { w.err = p.feed.fill(w.chunk) })
 				p.conversion += int64(len(w.out.slope))
 				fed <- w
 				if w.err != nil || w.chunk.end >= 0 && p.conversion >= w.chunk.end {
@@ -185,7 +205,7 @@ func (p *pipeline) run(ctx context.Context) error {
 		defer close(stepped)
 		for w := range fed {
 			if w.err == nil && ctx.Err() == nil {
-				p.sim.run(w.chunk, w.out)
+				timed(&p.times.Circuit, func() { p.sim.run(w.chunk, w.out) })
 			}
 			stepped <- w
 		}
@@ -196,7 +216,7 @@ func (p *pipeline) run(ctx context.Context) error {
 			failed = errors.Join(ctx.Err(), w.err)
 		}
 		if failed == nil {
-			failed = p.conv.take(w.out)
+			timed(&p.times.Converter, func() { failed = p.conv.take(w.out) })
 		}
 		if failed != nil {
 			stop()
@@ -236,7 +256,7 @@ func (p *pipeline) newWork() *work {
 }
 
 func (p *pipeline) result(at bilinear.Operating, plan Plan) *Result {
-	r := &Result{Plan: plan, At: at, Span: p.conv.span, Rest: p.conv.rest, Conversions: p.conv.count, Saturated: p.conv.saturated, Seconds: p.feed.seconds()}
+	r := &Result{Plan: plan, At: at, Span: p.conv.span, Rest: p.conv.rest, Conversions: p.conv.count, Saturated: p.conv.saturated, Seconds: p.feed.seconds(), Times: p.times}
 	for i, e := range p.sim.stages {
 		rest := at.Volts[p.sim.n.StageNode(i)]
 		r.Stages = append(r.Stages, StageRange{Rest: rest, Lowest: rest + e.lowest, Highest: rest + e.highest})

@@ -8,6 +8,7 @@ import (
 	"math"
 	"os"
 	"strings"
+	"time"
 
 	"github.com/vbauerster/mpb/v8"
 	"github.com/vbauerster/mpb/v8/decor"
@@ -99,11 +100,14 @@ func execute(ctx context.Context, s streams, f runFlags, n *circuit.Network, j j
 	if err != nil {
 		return nil, err
 	}
+	clock := stopwatch{on: f.times, last: time.Now()}
 	budget := noise.At(n)
+	clock.lap("adding up the noise")
 	result, res, err := renderInto(ctx, s, f, n, j, tracks, budget, out)
 	if err != nil {
 		return nil, errors.Join(err, out.discard())
 	}
+	clock.laps(result.Times)
 	run, pictures, err := describe(n, j, tracks, result, res, budget)
 	if err == nil {
 		err = errors.Join(
@@ -120,6 +124,8 @@ func execute(ctx context.Context, s streams, f runFlags, n *circuit.Network, j j
 	if err := out.finish(); err != nil {
 		return nil, err
 	}
+	clock.lap("writing the report")
+	clock.tell(s.err, result.Seconds)
 	return &finished{run, j.folder}, nil
 }
 

@@ -33,6 +33,7 @@ type runFlags struct {
 	out    string
 	json   bool
 	seed   uint64
+	times  bool
 }
 
 func newRun(s streams) *cobra.Command {
@@ -59,6 +60,7 @@ Caution: the layers can be loud; start with the volume low.`,
 	cmd.Flags().StringVarP(&f.out, "out", "o", "", "output `folder` (default: named after chain and track, in this one)")
 	cmd.Flags().BoolVar(&f.json, "json", false, "print the result as JSON and nothing else")
 	cmd.Flags().Uint64Var(&f.seed, "seed", 1, "seed of all that is drawn by chance")
+	cmd.Flags().BoolVar(&f.times, "times", false, "tell on standard error where the time went")
 	return cmd
 }
 
