@@ -102,6 +102,7 @@ type watcher struct {
 	kind  EventKind
 	list  *eventList
 	dt    float64 // s, a step
+	scope *scope  // that is told; nil: none
 
 	open        bool
 	first, last int64 // steps of the open event
@@ -116,6 +117,9 @@ type watcher struct {
 // have passed it.
 func (w *watcher) touch(step int64, ratio float64, several int64) {
 	w.Steps += several
+	if w.scope != nil {
+		w.scope.note(w.owner, w.kind, step, ratio)
+	}
 	if w.open && float64(step-w.last)*w.dt > math.Max(joined, 1.5*float64(several)*w.dt) {
 		w.close()
 	}

@@ -66,6 +66,7 @@ type Result struct {
 	Overloads   []Overload // for each owner and kind that saw any
 	Events      []Event    // the largest, in the order of time
 	EventCount  int64
+	Waveforms   []Waveform // around the largest overloads, the largest first
 	Times       Times
 }
 
@@ -273,6 +274,7 @@ func (p *pipeline) result(at bilinear.Operating, plan Plan) *Result {
 	}
 	r.Overloaded = math.Min(r.Overloaded, r.Seconds)
 	r.Events, r.EventCount = p.sim.list.inTime(), p.sim.list.count
+	r.Waveforms = p.sim.scope.result()
 	return r
 }
 

@@ -147,6 +147,8 @@ type simulator struct {
 	asked    []excursion // of each amplifier's internal source, linear run
 	watchers watchers
 	list     eventList
+	scope    *scope
+	span     [2]float64 // V from rest at the output, the converter's ends
 }
 
 // inputMaps are what a block's values at one input add.
@@ -252,7 +254,6 @@ func newSimulator(n *circuit.Network, at bilinear.Operating, g grid, settle sett
 	}
 	s.stages = make([]excursion, len(n.Chain.Stages))
 	s.asked = make([]excursion, len(n.Amplifiers))
-	s.watchers = newWatchers(n, at, s.indexOf, 1/g.plan.Rate, &s.list)
 	top := 2 * g.plan.To * (1 - resample.PassBand) // what interpolation lets through
 	for _, x := range n.Chain.Interferers {
 		if x.Shape == "sine" {
@@ -263,6 +264,10 @@ func newSimulator(n *circuit.Network, at bilinear.Operating, g grid, settle sett
 	}
 	s.layReadings(top)
 	s.lift(lanes)
+	s.scope = newScope(s, at)
+	s.watchers = newWatchers(n, at, s.indexOf, 1/g.plan.Rate, &s.list, s.scope)
+	rest := at.Volts[n.Output]
+	s.span = [2]float64{n.Chain.Converter.Low - rest, n.Chain.Converter.High - rest}
 	return s, nil
 }
 
@@ -401,6 +406,7 @@ func (s *simulator) run(c *chunk, o *conversions) {
 func (s *simulator) block(c *chunk, o *conversions, b int, step int64) {
 	s.gather(c, b)
 	s.size()
+	s.scope.open(step)
 	near := s.look()
 	first := b * s.grid.conversions
 	stepped := near || s.held || s.always
@@ -413,6 +419,23 @@ func (s *simulator) block(c *chunk, o *conversions, b int, step int64) {
 	s.advanceLanes(c, o, b, stepped)
 	if stepped {
 		s.compare(o, first)
+	}
+	s.range_(o, first, step)
+	s.scope.close(step + int64(s.grid.steps))
+}
+
+// range_ tells the scope of conversions beyond the converter's span.
+func (s *simulator) range_(o *conversions, first int, step int64) {
+	for k := range s.grid.conversions {
+		v := o.overload[0][first+k]
+		for part := range o.parts {
+			v += o.parts[part][0][first+k]
+		}
+		for _, end := range s.span {
+			if ratio := v / end; ratio > 1 {
+				s.scope.note("converter", ConverterRange, step+int64((k+1)*s.grid.plan.Steps())-1, ratio)
+			}
+		}
 	}
 }
 
@@ -458,19 +481,26 @@ func (s *simulator) read(q int) (linear, moved []float64) {
 	s.isRead[q] = true
 	clear(linear)
 	clear(moved)
-	bilinear.Apply(linear, rows(s.inspectState, from, to), s.linear)
-	for u := range s.inputs {
-		if s.coarse[u].present {
-			bilinear.Apply(linear, rows(s.coarse[u].inspect, from, to), s.sums[u])
-		}
-		if s.fine[u].present {
-			bilinear.Apply(linear, rows(s.fine[u].inspect, from, to), s.cellMeans[u])
-		}
-	}
+	s.readFrom(linear, q, s.linear, s.sums, s.cellMeans)
 	if s.parted {
 		bilinear.Apply(moved, rows(s.inspectState, from, to), s.difference)
 	}
 	return linear, moved
+}
+
+// readFrom adds a quantity's values at a block's instants to dst, by the linear state that the block begins with and
+// what its inputs are given: sums, and means of the fine lanes.
+func (s *simulator) readFrom(dst []float64, q int, state []float64, sums, means [][]float64) {
+	from, to := q*s.grid.base, (q+1)*s.grid.base
+	bilinear.Apply(dst, rows(s.inspectState, from, to), state)
+	for u := range s.inputs {
+		if s.coarse[u].present {
+			bilinear.Apply(dst, rows(s.coarse[u].inspect, from, to), sums[u])
+		}
+		if s.fine[u].present {
+			bilinear.Apply(dst, rows(s.fine[u].inspect, from, to), means[u])
+		}
+	}
 }
 
 // rows returns a matrix of some of a matrix's rows.
@@ -662,6 +692,9 @@ func (s *simulator) stepBlock(o *conversions, first int, step int64) {
 		if y == nil {
 			continue
 		}
+		if (j+1)%scale == 0 {
+			s.scope.see((j+1)/scale-1, y)
+		}
 		for k, q := range s.stageIndex {
 			s.stages[k].see(y[q])
 		}
@@ -814,10 +847,14 @@ type capsuleWatch struct {
 	current           float64
 }
 
-func newWatchers(n *circuit.Network, at bilinear.Operating, indexOf map[int]int, dt float64, list *eventList) watchers {
+func newWatchers(n *circuit.Network, at bilinear.Operating, indexOf map[int]int, dt float64, list *eventList, scope *scope) watchers {
 	var w watchers
 	one := func(owner string, kind EventKind) *watcher {
-		return &watcher{owner: owner, kind: kind, list: list, dt: dt}
+		w := &watcher{owner: owner, kind: kind, list: list, dt: dt}
+		if kind.Limits() {
+			w.scope = scope
+		}
+		return w
 	}
 	for k, a := range n.Amplifiers {
 		m := a.Model
