@@ -200,6 +200,7 @@ func (t *table) amplifier(name string, supply float64) Amplifier {
 		{"noise_voltage_corner", quantity.Frequency, 0, 1e6, &m.NoiseVoltageCorner},
 		{"noise_current", quantity.NoiseCurrent, 0, 1e-8, &m.NoiseCurrent},
 		{"noise_current_corner", quantity.Frequency, 0, 1e6, &m.NoiseCurrentCorner},
+		{"phase_margin", quantity.Angle, 5, 90, &m.PhaseMargin},
 	} {
 		if v, ok := t.quantity(k.key, May, k.kind, k.low, k.high); ok {
 			*k.into = v.SI

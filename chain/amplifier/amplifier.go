@@ -28,4 +28,5 @@ type Model struct {
 	NoiseVoltageCorner float64 // Hz, of the 1/f part
 	NoiseCurrent       float64 // A/√Hz
 	NoiseCurrentCorner float64 // Hz
+	PhaseMargin        float64 // degrees that a follower of it has left, from a second pole, 5 to 90; for loop margins alone
 }

@@ -17,6 +17,38 @@ type Exact struct {
 // At returns the network's equations at f ≥ 0 Hz, factored. It panics where they are singular, which they are at
 // no frequency for a network that has a rest point.
 func (n *Network) At(f float64) *Exact {
+	e := &Exact{n: n}
+	if !e.lu.factor(n.equations(f)) {
+		panic("circuit: singular equations")
+	}
+	return e
+}
+
+// Feedback returns the share β of the k-th amplifier's internal source that comes back to its inputs at f Hz, with the
+// loop opened there and every other one closed: β = −(v+ − v−)/e.
+func (n *Network) Feedback(k int, f float64) complex128 {
+	m := n.equations(f)
+	row := len(n.Nodes) - 1 + k
+	m.clearRow(row)
+	m.add(row, row, 1)
+	var e lu
+	if !e.factor(m) {
+		panic("circuit: singular equations")
+	}
+	b := make([]complex128, m.size)
+	b[row] = 1
+	e.solve(b)
+	at := func(node int) complex128 {
+		if node == Ground {
+			return 0
+		}
+		return b[node-1]
+	}
+	return at(n.Amplifiers[k].Minus) - at(n.Amplifiers[k].Plus)
+}
+
+// equations returns the matrix of the network's equations at f Hz.
+func (n *Network) equations(f float64) matrix {
 	s := complex(0, 2*math.Pi*f)
 	nodes := len(n.Nodes) - 1 // unknowns: the nodes but ground, then each amplifier's e
 	size := nodes + len(n.Amplifiers)
@@ -67,11 +99,7 @@ func (n *Network) At(f float64) *Exact {
 		m.clearRow(node - 1)
 		m.add(node-1, node-1, 1)
 	}
-	e := &Exact{n: n}
-	if !e.lu.factor(m) {
-		panic("circuit: singular equations")
-	}
-	return e
+	return m
 }
 
 // driveNode returns the node that input u of the network sets.

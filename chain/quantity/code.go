@@ -144,6 +144,8 @@ func Format(k Kind, si float64) string {
 		return minus(digits(si*100)) + " %"
 	case Decibels:
 		return minus(digits(si)) + " dB"
+	case Angle:
+		return minus(digits(si)) + "°"
 	case Temperature:
 		return minus(digits(si-273.15)) + " °C"
 	default:

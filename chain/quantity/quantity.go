@@ -27,6 +27,7 @@ const (
 	Ratio                    // 1: percent, or dB of an amplitude
 	Decibels                 // dB
 	Temperature              // K
+	Angle                    // degrees
 )
 
 // Value is a value read.
@@ -118,6 +119,9 @@ func kindTable(k Kind) kindOf {
 	case Temperature:
 		return kindOf{"a temperature", []unit{{name: "°C", spelled: []string{"°C", "C"}, factor: 1}, {name: "K", spelled: []string{"K"}, factor: 1}}, false, `"25C" or "298K"`, false}
 	}
+	if k == Angle {
+		return kindOf{"an angle", []unit{{name: "°", spelled: []string{"°", "deg"}, factor: 1}}, true, `"60deg" or 60`, false}
+	}
 	panic("quantity: no such kind")
 }
 
@@ -180,7 +184,7 @@ func Parse(k Kind, text string) (Value, error) {
 			return u.value(k, number, x, exponent)
 		}
 	}
-	if exponent, ok := prefixOf(rest); ok && kind.bare && k != Ratio && k != Decibels && k != Temperature {
+	if exponent, ok := prefixOf(rest); ok && kind.bare && k != Ratio && k != Decibels && k != Temperature && k != Angle {
 		return Value{SI: scaled(number, exponent)}, nil
 	}
 	return wrong(fmt.Sprintf("%q is no unit of it", rest))

@@ -5,15 +5,12 @@ import (
 	_ "embed"
 	"errors"
 	"fmt"
-	"io"
-	"os"
 	"path/filepath"
 	"strings"
 
 	"github.com/spf13/cobra"
 
 	"midrail/chain"
-	"midrail/chain/circuit"
 	"midrail/cmd/report"
 	"midrail/signals"
 	"midrail/signals/tone"
@@ -80,24 +77,15 @@ func demoRecording() recording {
 }
 
 func run(ctx context.Context, s streams, f runFlags, args []string) error {
-	name, data := demoName, demoChain
+	path := ""
 	if len(args) > 0 {
-		var err error
-		if name, data, err = readChain(args[0]); err != nil {
-			return err
-		}
+		path = args[0]
 	}
-	c, err := chain.Read(name, data, f.set)
+	n, err := s.open(path, f.set)
 	if err != nil {
 		return err
 	}
-	for _, w := range c.Warnings {
-		fmt.Fprintln(s.err, "warning:", w)
-	}
-	n := circuit.New(c)
-	if err := stable(n); err != nil {
-		return err
-	}
+	c := n.Chain
 	jobs, err := jobsOf(c, f, args)
 	if err != nil {
 		return err
@@ -125,20 +113,6 @@ func run(ctx context.Context, s streams, f runFlags, args []string) error {
 		return errBroken
 	}
 	return nil
-}
-
-// mostChain is the largest chain file that is read.
-const mostChain = 1 << 20
-
-// readChain reads a chain file, of which no more than mostChain+1 bytes are taken.
-func readChain(path string) (string, []byte, error) {
-	file, err := os.Open(path)
-	if err != nil {
-		return "", nil, err
-	}
-	defer file.Close()
-	data, err := io.ReadAll(io.LimitReader(file, mostChain+1))
-	return path, data, err
 }
 
 // job is one run: a recording for each of the chain's inputs, and the folder it goes to.
