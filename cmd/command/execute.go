@@ -46,7 +46,11 @@ func (s streams) tell(f *finished) error {
 	if err := report.Summary(s.out, f.run, report.Options{Color: isTerminal(s.out)}); err != nil {
 		return err
 	}
-	_, err := fmt.Fprintf(s.out, "written to %s; start with report.html and heard.wav, the volume low\n", f.folder)
+	first := "report.html and heard.wav"
+	if f.run.Listen == nil { // no page
+		first = "heard.wav"
+	}
+	_, err := fmt.Fprintf(s.out, "written to %s; start with %s, the volume low\n", f.folder, first)
 	return err
 }
 
@@ -82,11 +86,14 @@ func execute(ctx context.Context, s streams, f runFlags, n *circuit.Network, j j
 		return nil, errors.Join(err, out.discard())
 	}
 	clock.laps(result.Times)
-	run, pictures, err := describe(n, j, tracks, result, res, budget)
+	run, err := describe(n, tracks, result, res, budget)
+	if err == nil && !f.noPage {
+		err = writePage(n, j, out, run, result, res, budget)
+	}
 	if err == nil {
 		err = errors.Join(
 			writeFile(out.file("report.json"), func(w io.Writer) error { return report.WriteJSON(w, run) }),
-			writeFile(out.file("report.html"), func(w io.Writer) error { return report.WriteHTML(w, run, pictures) }),
+			writeFile(out.file("parts.csv"), func(w io.Writer) error { return report.WritePartsCSV(w, run.Parts) }),
 		)
 	}
 	if err == nil {
@@ -378,7 +385,7 @@ func (b *bar) end(complete bool) {
 }
 
 // describe puts a run's results into the form of reports.
-func describe(n *circuit.Network, j job, tracks *openedTracks, r *render.Result, res *residue.Residue, budget *noise.Budget) (*report.Run, *report.Pictures, error) {
+func describe(n *circuit.Network, tracks *openedTracks, r *render.Result, res *residue.Residue, budget *noise.Budget) (*report.Run, error) {
 	c := n.Chain
 	of := report.Of
 	first := tracks.list[0]
@@ -412,20 +419,24 @@ func describe(n *circuit.Network, j job, tracks *openedTracks, r *render.Result,
 	for _, e := range r.Events {
 		run.Events = append(run.Events, report.Event{Stage: e.Owner, Kind: string(e.Kind), FromS: of(e.From), ToS: of(e.To), OverDB: of(e.Over)})
 	}
+	for _, w := range r.Waveforms {
+		run.Waveforms = append(run.Waveforms, report.Waveform{Stage: w.Owner, Kind: string(w.Kind), AtS: of(w.At), OverDB: of(w.Over)})
+	}
 	settling := rest.Settling{OnePercent: math.NaN(), LSB: math.NaN()}
 	if c.Limits.Settling != nil {
 		var err error
 		if settling, err = rest.Settle(n, r.At); err != nil {
-			return nil, nil, err
+			return nil, err
 		}
 	}
+	run.Rest, run.Noise, run.Parts = restOf(n, r.At, settling), noiseOf(c, r.Span, budget), partsOf(c)
 	for _, l := range residue.Limits(n, r, res, settling.OnePercent) {
 		run.Limits = append(run.Limits, report.Limit{Name: l.Name, Limit: of(l.Limit), Value: of(l.Value), Holds: l.Holds})
 	}
 	for _, f := range residue.Findings(n, r, res) {
 		run.Findings = append(run.Findings, report.Finding{Severity: string(f.Severity), About: f.About, Text: f.Text})
 	}
-	return run, picturesOf(n, r, res), nil
+	return run, nil
 }
 
 // overloadOf gathers the overloads of one owner, or of all for "". What is only watched is no overload.
@@ -510,47 +521,4 @@ func assumptions(c *chain.Chain, budget *noise.Budget) []string {
 		}
 	}
 	return append(list, "playing residue files loud can hurt ears: start low")
-}
-
-// picturesOf returns what the plots of a report are drawn from.
-func picturesOf(n *circuit.Network, r *render.Result, res *residue.Residue) *report.Pictures {
-	half := n.Chain.Converter.Rate / 2
-	p := &report.Pictures{HalfRate: half, Duration: r.Seconds, Spectrum: report.Spectrum{Per: "third octave"}}
-	const points = 240
-	top := math.Max(4*n.Chain.Converter.Rate, 40e3)
-	for i := range n.Inputs {
-		line := report.Response{Input: n.Chain.Inputs[i].Name}
-		for k := range points {
-			f := 10 * math.Pow(top/10, float64(k)/(points-1))
-			h := n.At(f).Into(n.Output).Input(circuit.SoundInput(i))
-			line.Frequency = append(line.Frequency, f)
-			line.Gain = append(line.Gain, circuit.Gain(h)+20*math.Log10(math.Abs(n.Inputs[i].Scale)/r.Span.Unit()))
-		}
-		p.Responses = append(p.Responses, line)
-	}
-	for i, reading := range res.Layers {
-		name := render.Layer(i).String()
-		line := report.Line{Layer: name}
-		for _, t := range reading.Thirds {
-			line.Frequency = append(line.Frequency, t.Middle)
-			line.Level = append(line.Level, t.Level)
-		}
-		p.Spectrum.Layers = append(p.Spectrum.Layers, line)
-		p.Levels = append(p.Levels, timelineOf(name, reading.Time))
-	}
-	p.Levels = append(p.Levels, timelineOf(report.Heard, res.Heard.Time))
-	for _, e := range r.Events {
-		if e.Kind.Limits() {
-			p.Spans = append(p.Spans, report.Span{Stage: e.Owner, From: e.From, To: e.To})
-		}
-	}
-	return p
-}
-
-func timelineOf(name string, t level.Timeline) report.Level {
-	l := report.Level{Layer: name, RMS: t.RMS, Peak: t.Peak}
-	for i := range t.RMS {
-		l.Time = append(l.Time, (float64(i)+0.5)*t.Step)
-	}
-	return l
 }

@@ -5,6 +5,7 @@ import (
 	_ "embed"
 	"errors"
 	"fmt"
+	"io"
 	"path/filepath"
 	"strings"
 
@@ -31,6 +32,8 @@ type runFlags struct {
 	json   bool
 	seed   uint64
 	times  bool
+	noPage bool
+	open   bool
 }
 
 func newRun(s streams) *cobra.Command {
@@ -39,8 +42,8 @@ func newRun(s streams) *cobra.Command {
 		Use:   "run [CHAIN [TRACK...]]",
 		Short: "Run recordings through a chain and hear what the converter hears",
 		Long: `run takes each recording through the chain and writes a folder with what the converter hears (heard.wav), the
-layers that sum to it (wanted, fold-back, interference, overload, noise, rounding), report.html and report.json.
-Without arguments it runs the demo. Several tracks get a folder each within one.
+layers that sum to it (wanted, fold-back, interference, overload, noise, rounding), report.html, report.json and parts.csv.
+Without arguments it runs the demo. Several tracks get a folder each within one, and overview.html beside them.
 
 Exit status: 0 done, 1 a limit of the chain file is broken, 2 the input is wrong, 3 the machine failed.
 Caution: the layers can be loud; start with the volume low.`,
@@ -57,6 +60,8 @@ Caution: the layers can be loud; start with the volume low.`,
 	cmd.Flags().StringVarP(&f.out, "out", "o", "", "output `folder` (default: named after chain and track, in this one)")
 	cmd.Flags().BoolVar(&f.json, "json", false, "print the result as JSON and nothing else")
 	cmd.Flags().Uint64Var(&f.seed, "seed", 1, "seed of all that is drawn by chance")
+	cmd.Flags().BoolVar(&f.noPage, "no-html", false, "write no report.html")
+	cmd.Flags().BoolVar(&f.open, "open", false, "open the report in the browser")
 	cmd.Flags().BoolVar(&f.times, "times", false, "tell on standard error where the time went")
 	return cmd
 }
@@ -93,12 +98,17 @@ func run(ctx context.Context, s streams, f runFlags, args []string) error {
 	if f.json && len(jobs) > 1 {
 		return usageError{errors.New("--json takes one track")}
 	}
+	if f.open && f.noPage {
+		return usageError{errors.New("--open needs the report that --no-html leaves out")}
+	}
 	broken := false
+	var done []*finished
 	for _, j := range jobs {
 		result, err := execute(ctx, s, f, n, j)
 		if err != nil {
 			return err
 		}
+		done = append(done, result)
 		broken = broken || !result.holds()
 		if f.json {
 			err = report.WriteJSON(s.out, result.run)
@@ -109,8 +119,32 @@ func run(ctx context.Context, s streams, f runFlags, args []string) error {
 			return err
 		}
 	}
+	if !f.noPage {
+		if err := present(done, f.open); err != nil {
+			return err
+		}
+	}
 	if broken {
 		return errBroken
+	}
+	return nil
+}
+
+// present writes the overview of several tracks, and opens it, or the only report, where that is wanted.
+func present(done []*finished, open bool) error {
+	page := filepath.Join(done[0].folder, "report.html")
+	if len(done) > 1 {
+		var entries []report.Entry
+		for _, d := range done {
+			entries = append(entries, report.Entry{Run: d.run, Folder: filepath.Base(d.folder)})
+		}
+		page = filepath.Join(filepath.Dir(done[0].folder), "overview.html")
+		if err := writeFile(page, func(w io.Writer) error { return report.WriteOverview(w, entries) }); err != nil {
+			return err
+		}
+	}
+	if open {
+		return openPage(page)
 	}
 	return nil
 }

@@ -83,6 +83,31 @@ func bare(n Number, decimals int) string {
 	return people(n, func(x float64) string { return fixed(x, decimals) })
 }
 
+// signed returns a change in decibels, with its sign.
+func signed(n Number) string {
+	return people(n, func(x float64) string {
+		if s := fixed(x, 1); x < 0 || s == "0.0" {
+			return s + " dB"
+		}
+		return "+" + fixed(x, 1) + " dB"
+	})
+}
+
+// lsb returns a length in steps of the converter.
+func lsb(n Number) string {
+	return people(n, func(x float64) string { return trimmed(significant(x, 3)) + " LSB" })
+}
+
+// slug returns a name as an identifier: letters, digits and hyphens.
+func slug(name string) string {
+	return strings.Map(func(r rune) rune {
+		if r < unicode.MaxASCII && (unicode.IsLetter(r) || unicode.IsDigit(r)) {
+			return r
+		}
+		return '-'
+	}, name)
+}
+
 // errorDB returns a difference that may be far below a tenth of a decibel.
 func errorDB(n Number) string {
 	return people(n, func(x float64) string { return significant(x, 2) + " dB" })
@@ -185,24 +210,6 @@ func times(n int) string {
 	return count(int64(n)) + " times"
 }
 
-// between returns a range of voltage, both ends in volts unless both are small.
-func between(low, high Number) string {
-	a, isLow := low.Value()
-	b, isHigh := high.Value()
-	switch {
-	case !isLow && !isHigh:
-		return absent
-	case !isLow:
-		return "up to " + volts(high)
-	case !isHigh:
-		return "from " + volts(low)
-	}
-	if math.Max(math.Abs(a), math.Abs(b)) < 0.09995 {
-		return volts(low) + " to " + volts(high)
-	}
-	return fixed(a, 2) + " to " + fixed(b, 2) + " V"
-}
-
 // limitForm is how a limit of the chain file is told.
 type limitForm struct {
 	words string // its name, in words
@@ -236,8 +243,12 @@ func formOf(name string) limitForm {
 }
 
 func limitName(l Limit) string  { return formOf(l.Name).words }
-func limitBound(l Limit) string { f := formOf(l.Name); return f.bound + " " + f.say(l.Limit) }
 func limitValue(l Limit) string { return formOf(l.Name).say(l.Value) }
+
+// limitWord returns which way a limit bounds, limitFigure what it is, and limitBound both.
+func limitWord(l Limit) string   { return formOf(l.Name).bound }
+func limitFigure(l Limit) string { return formOf(l.Name).say(l.Limit) }
+func limitBound(l Limit) string  { return limitWord(l) + " " + limitFigure(l) }
 
 // verdict is the answer in words.
 type verdict struct {
@@ -246,6 +257,7 @@ type verdict struct {
 	Limits   []string // sentences about the limits that are broken
 	Overload []string // sentences about overload, or the room left
 	Layers   []string // sentences about fold-back and noise
+	Settling []string // a sentence about how long it takes after power-up
 }
 
 // judge puts the run in words; every figure in them is one of the run's.
@@ -298,6 +310,9 @@ func judge(run *Run) verdict {
 		if l.Name == FoldBack || l.Name == Noise {
 			v.Layers = append(v.Layers, sentence("%s", layerWords(l)))
 		}
+	}
+	if _, there := run.Rest.Settling.ToPercentS.Value(); there {
+		v.Settling = append(v.Settling, sentence("settles to 1 %% in %s.", seconds(run.Rest.Settling.ToPercentS)))
 	}
 	return v
 }
@@ -362,21 +377,26 @@ func layerWords(l Layer) string {
 // mostEvents is how many overloads the page lists: what fits on a printed page.
 const mostEvents = 25
 
-// worstEvents returns at most n events, the farthest over first, then the longest, then the earliest.
-func worstEvents(events []Event, n int) []Event {
-	sorted := append([]Event(nil), events...)
-	sort.SliceStable(sorted, func(i, j int) bool {
-		a, aThere := sorted[i].OverDB.Value()
-		b, bThere := sorted[j].OverDB.Value()
+// worstEvents returns where at most n events stand in the list, the farthest over first, then the longest, then the
+// earliest.
+func worstEvents(events []Event, n int) []int {
+	order := make([]int, len(events))
+	for i := range order {
+		order[i] = i
+	}
+	sort.SliceStable(order, func(i, j int) bool {
+		x, y := events[order[i]], events[order[j]]
+		a, aThere := x.OverDB.Value()
+		b, bThere := y.OverDB.Value()
 		if aThere != bThere {
 			return aThere
 		}
 		if a != b {
 			return a > b
 		}
-		return lengthOf(sorted[i]).value > lengthOf(sorted[j]).value
+		return lengthOf(x).value > lengthOf(y).value
 	})
-	return sorted[:min(n, len(sorted))]
+	return order[:min(n, len(order))]
 }
 
 // lengthOf returns how long an event is, in seconds; not there where its ends are not.

@@ -5,14 +5,17 @@ import (
 	"crypto/sha256"
 	"embed"
 	"encoding/base64"
+	"encoding/binary"
+	"fmt"
+	"html"
 	"html/template"
 	"io"
-	"math"
+	"net/url"
 	"sort"
 	"strings"
 )
 
-// parts are the templates and the style sheet of the page.
+// parts are the templates, the style sheet and the script of the page.
 //
 //go:embed page
 var parts embed.FS
@@ -20,72 +23,143 @@ var parts embed.FS
 // page is what the templates are filled from.
 type page struct {
 	*Run
-	Head    template.HTML // the policy and the style sheet
-	Title   string
-	Verdict verdict
-	First   *Finding // the finding to put right first; nil where there is none
-	Figures []drawn
-	Worst   []Event
-	Thirds  *thirds // nil where no layer has them
+	Head     template.HTML // the policy, the style sheet and the script
+	Title    string
+	Verdict  verdict
+	First    *Finding // the finding to put right first; nil where there is none
+	Figures  figures
+	Players  []player
+	Marks    []soundMark
+	Loudest  []int   // of Events: those that the page lists
+	Thirds   *thirds // nil where no layer has them
+	Purchase []bought
+	CutShort bool // whether the players hold passages only
 }
 
-// drawn is one figure as the page has it.
-type drawn struct {
-	Caption string
-	Drawing template.HTML
+// player is one sound as the page has it.
+type player struct {
+	Player
+	Source  template.URL
+	Caution bool
+}
+
+// soundMark is an overload that the players can be taken to.
+type soundMark struct {
+	Index int // of Run.Events
+	Event
+	At float64 // s, in the players
 }
 
 // thirds are the third-octave levels of all layers as one table.
 type thirds struct {
-	Layers []string
+	Layers []int // of Run.Layers
 	Rows   []thirdRow
 }
 
 // thirdRow is one third octave.
 type thirdRow struct {
 	Hz     Number
-	Levels []Number // one for each of thirds.Layers
+	Levels []thirdCell // one for each of thirds.Layers
 }
 
-// WriteHTML writes the run as one self-contained page: it asks nothing of the network and runs no
-// script, and every name in it is escaped. Pictures may be nil: then there are no plots. It
-// returns the error of w.
+// thirdCell is one level and where it stands in the run.
+type thirdCell struct {
+	DBFS  Number
+	Layer int
+	Third int // of the layer's thirds; −1: it has none there
+}
+
+// WriteHTML writes the run as one self-contained page: it asks nothing of the network, runs no
+// script but its own, and every name in it is escaped. Pictures may be nil: then there are neither
+// plots nor players. It returns the error of w.
 func WriteHTML(w io.Writer, run *Run, pictures *Pictures) error {
+	p := page{
+		Run: run, Title: title(run), Verdict: judge(run), First: first(run.Findings),
+		Loudest: worstEvents(run.Events, mostEvents), Thirds: gather(run.Layers), Purchase: purchase(run.Parts),
+	}
+	var err error
+	if pictures != nil {
+		if p.Figures, err = draw(run, pictures); err != nil {
+			return err
+		}
+		p.listen(pictures)
+	}
+	return fill(w, "page.html", func(head template.HTML) any { p.Head = head; return p })
+}
+
+// fill writes the named template, filled with what data returns for the head that the page needs.
+func fill(w io.Writer, name string, data func(head template.HTML) any) error {
 	style, err := parts.ReadFile("page/style.css")
 	if err != nil {
 		return err
 	}
-	t, err := template.New("page.html").Funcs(template.FuncMap{
-		"clean": clean, "dbfs": dbfs, "db": decibels, "errorDB": errorDB, "volts": volts, "between": between,
-		"hertz": hertz, "seconds": seconds, "clock": clock, "percent": percent, "scaled": scaled, "count": count,
-		"times": times, "plural": plural, "limitName": limitName, "limitValue": limitValue, "limitBound": limitBound,
-		"lengthOf": lengthOf,
+	script, err := parts.ReadFile("page/script.js")
+	if err != nil {
+		return err
+	}
+	t, err := template.New(name).Funcs(template.FuncMap{
+		"clean": clean, "dbfs": dbfs, "db": decibels, "signed": signed, "errorDB": errorDB, "volts": volts,
+		"hertz": hertz, "seconds": seconds, "clock": clock, "percent": percent, "scaled": scaled, "count": count, "lsb": lsb,
+		"times": times, "plural": plural, "limitName": limitName, "limitValue": limitValue, "limitWord": limitWord, "limitFigure": limitFigure,
+		"lengthOf": lengthOf, "partValue": partValue, "plusMinus": plusMinus, "slug": slug,
+		"fig": fig, "whole": whole, "between": between, "href": href,
 	}).ParseFS(parts, "page/*.html")
 	if err != nil {
 		return err
 	}
-	p := page{
-		Run: run, Head: head(string(style)), Title: title(run), Verdict: judge(run), First: first(run.Findings),
-		Worst: worstEvents(run.Events, mostEvents), Thirds: gather(run.Layers),
-	}
-	if pictures != nil {
-		p.Figures = figures(run, pictures)
-	}
 	var b bytes.Buffer
-	if err := t.Execute(&b, p); err != nil {
+	if err := t.Execute(&b, data(head(string(style), string(script)))); err != nil {
 		return err
 	}
 	_, err = w.Write(b.Bytes())
 	return err
 }
 
-// head returns the style sheet, and a policy that allows it and nothing else (Content Security
-// Policy Level 3, W3C: a hash source names the text that may be used).
-func head(style string) template.HTML {
-	sum := sha256.Sum256([]byte(style))
-	policy := "default-src 'none'; style-src 'sha256-" + base64.StdEncoding.EncodeToString(sum[:]) + "'; base-uri 'none'; form-action 'none'"
-	return template.HTML(`<meta http-equiv="Content-Security-Policy" content="` + policy + "\">\n<style>" + style + "</style>")
+// head returns the style sheet and the script, and a policy that allows them, what the page holds
+// itself, and nothing else (Content Security Policy Level 3, W3C: a hash source names the text that
+// may be used).
+func head(style, script string) template.HTML {
+	hash := func(text string) string {
+		sum := sha256.Sum256([]byte(text))
+		return "'sha256-" + base64.StdEncoding.EncodeToString(sum[:]) + "'"
+	}
+	policy := "default-src 'none'; style-src " + hash(style) + "; script-src " + hash(script) + "; img-src data:; media-src data:; base-uri 'none'; form-action 'none'"
+	return template.HTML(`<meta http-equiv="Content-Security-Policy" content="` + policy + "\">\n<style>" + style + "</style>\n<script type=\"module\">" + script + "</script>")
 }
+
+// at returns the place of a figure in report.json: "stages.0.rest_v".
+func at(path ...any) string {
+	s := make([]string, len(path))
+	for i, p := range path {
+		s[i] = fmt.Sprint(p)
+	}
+	return strings.Join(s, ".")
+}
+
+// fig returns a figure with its text, its exact value, and its place in report.json.
+func fig(text string, n Number, path ...any) template.HTML {
+	return template.HTML(`<data value="` + n.Exact() + `" data-at="` + html.EscapeString(at(path...)) + `">` + html.EscapeString(text) + "</data>")
+}
+
+// whole returns a whole number, an int or an int64, as fig does.
+func whole(n any, path ...any) template.HTML {
+	x, is := n.(int64)
+	if !is {
+		x = int64(n.(int))
+	}
+	return fig(count(x), Of(float64(x)), path...)
+}
+
+// between returns a range of voltage, low and high being at path with those ends.
+func between(low, high Number, lowKey, highKey string, path ...any) template.HTML {
+	if low == (Number{}) && high == (Number{}) {
+		return absent
+	}
+	return fig(bare(low, 2), low, append(append([]any{}, path...), lowKey)...) + " to " + fig(volts(high), high, append(append([]any{}, path...), highKey)...)
+}
+
+// href returns a file beside the page as a link's target.
+func href(file string) template.URL { return template.URL((&url.URL{Path: "./" + file}).String()) }
 
 // title returns the chain's title, or the name of its file where it has none.
 func title(run *Run) string {
@@ -107,15 +181,87 @@ func first(findings []Finding) *Finding {
 	return nil
 }
 
+// loudGain is the gain in dB from which on a player comes with a caution of its own.
+const loudGain = 12
+
+// listen puts the players together, and the marks of the overloads that they hold.
+func (p *page) listen(pictures *Pictures) {
+	l := p.Run.Listen
+	if l == nil {
+		return
+	}
+	for i, sound := range pictures.Sounds {
+		if i >= len(l.Players) {
+			break
+		}
+		gain, _ := l.Players[i].GainDB.Value()
+		p.Players = append(p.Players, player{l.Players[i], "data:audio/wav;base64," + template.URL(base64.StdEncoding.EncodeToString(waveFile(sound))), gain >= loudGain})
+	}
+	held := 0.
+	for _, passage := range l.Passages {
+		held += passage.ToS.value - passage.FromS.value
+	}
+	p.CutShort = held < p.Track.Seconds.value-1e-3
+	for _, i := range p.Loudest {
+		if at, there := l.place(p.Events[i].FromS); there && len(p.Marks) < mostMarks {
+			p.Marks = append(p.Marks, soundMark{i, p.Events[i], at})
+		}
+	}
+	sort.Slice(p.Marks, func(i, j int) bool { return p.Marks[i].At < p.Marks[j].At })
+}
+
+// mostMarks is how many overloads the players have marks for.
+const mostMarks = 12
+
+// place returns where a time on the track lies in the players.
+func (l *Listen) place(t Number) (at float64, there bool) {
+	x, known := t.Value()
+	if !known {
+		return 0, false
+	}
+	for _, p := range l.Passages {
+		if x >= p.FromS.value && x < p.ToS.value {
+			return at + x - p.FromS.value, true
+		}
+		at += p.ToS.value - p.FromS.value
+	}
+	return 0, false
+}
+
+// waveFile returns a sound as a WAV file of 16 bits and one channel.
+func waveFile(s PlayerSound) []byte {
+	const header = 44
+	size := 2 * len(s.Codes)
+	b := make([]byte, 0, header+size)
+	order := binary.LittleEndian
+	b = append(b, "RIFF"...)
+	b = order.AppendUint32(b, uint32(header-8+size))
+	b = append(b, "WAVEfmt "...)
+	b = order.AppendUint32(b, 16)
+	b = order.AppendUint16(b, 1) // integers
+	b = order.AppendUint16(b, 1) // channel
+	rate := uint32(s.Rate + 0.5)
+	b = order.AppendUint32(b, rate)
+	b = order.AppendUint32(b, 2*rate)
+	b = order.AppendUint16(b, 2)
+	b = order.AppendUint16(b, 16)
+	b = append(b, "data"...)
+	b = order.AppendUint32(b, uint32(size))
+	for _, c := range s.Codes {
+		b = order.AppendUint16(b, uint16(c))
+	}
+	return b
+}
+
 // gather puts the third octaves of all layers side by side; nil where there are none.
 func gather(layers []Layer) *thirds {
 	var t thirds
 	at := map[float64]int{}
-	for _, l := range layers {
+	for i, l := range layers {
 		if len(l.Thirds) == 0 {
 			continue
 		}
-		t.Layers = append(t.Layers, l.Name)
+		t.Layers = append(t.Layers, i)
 		for _, third := range l.Thirds {
 			hz, there := third.Hz.Value()
 			if _, known := at[hz]; there && !known {
@@ -129,207 +275,15 @@ func gather(layers []Layer) *thirds {
 	}
 	sort.Slice(t.Rows, func(i, j int) bool { return t.Rows[i].Hz.value < t.Rows[j].Hz.value })
 	for i := range t.Rows {
-		for _, l := range layers {
-			if len(l.Thirds) > 0 {
-				t.Rows[i].Levels = append(t.Rows[i].Levels, levelAt(l.Thirds, t.Rows[i].Hz))
+		for _, l := range t.Layers {
+			cell := thirdCell{Layer: l, Third: -1}
+			for k, third := range layers[l].Thirds {
+				if third.Hz == t.Rows[i].Hz {
+					cell.DBFS, cell.Third = third.DBFS, k
+				}
 			}
+			t.Rows[i].Levels = append(t.Rows[i].Levels, cell)
 		}
 	}
 	return &t
-}
-
-// levelAt returns the level in the third octave at hz.
-func levelAt(list []Third, hz Number) Number {
-	for _, third := range list {
-		if third.Hz == hz {
-			return third.DBFS
-		}
-	}
-	return Number{}
-}
-
-// line adds a curve to the figure, if it has any value.
-func (f *figure) line(c curve, levels *reach) {
-	var own reach
-	own.of(c.y)
-	if own.some {
-		f.curves = append(f.curves, c)
-		levels.of(c.y)
-	}
-}
-
-// figures draws the plots that there is data for.
-func figures(run *Run, p *Pictures) []drawn {
-	var list []drawn
-	add := func(f figure, caption string) {
-		if len(f.curves)+len(f.rows) > 0 {
-			list = append(list, drawn{caption, f.draw()})
-		}
-	}
-	f := responseFigure(p)
-	add(f, "Response from each input to the converter. What lies in the shaded part, above half the converter rate, folds back below it. "+
-		"0 dB: a full-scale tone in the track just fills the converter's span.")
-	f = spectrumFigure(p)
-	add(f, "What the converter hears, layer by layer, up to half its rate: level in each "+clean(p.Spectrum.Per)+".")
-	f = levelFigure(run, p)
-	add(f, "Level along time. Thick lines: RMS; thin: peak. The bars above show when each stage overloads.")
-	return list
-}
-
-// responseFigure draws the gain from each input to the converter.
-func responseFigure(p *Pictures) figure {
-	f := figure{title: "Response from each input to the converter", x: axis{label: "frequency, Hz", log: true}, y: axis{label: "gain, dB"}}
-	var ends, levels reach
-	for i, r := range p.Responses {
-		f.line(curve{clean(r.Input), class(i), r.Frequency, r.Gain}, &levels)
-		ends.of(r.Frequency)
-	}
-	f.x.lo, f.x.hi = ends.within(10, 100e3)
-	f.y.lo, f.y.hi = levels.rounded(100, 10)
-	if p.HalfRate > 0 {
-		f.bands = []band{{label: "folds back", from: p.HalfRate, to: math.Inf(1), upright: true}}
-		f.marks = []mark{{label: "half the rate, " + hertz(Of(p.HalfRate)), x: p.HalfRate}}
-	}
-	f.text = f.words()
-	return f
-}
-
-// spectrumFigure draws the spectrum of each layer at the converter.
-func spectrumFigure(p *Pictures) figure {
-	f := figure{title: "Spectrum of the layers at the converter", x: axis{label: "frequency, Hz", log: true},
-		y: axis{label: "dBFS per " + clean(p.Spectrum.Per)}}
-	var ends, levels reach
-	for i, l := range p.Spectrum.Layers {
-		f.line(curve{clean(l.Layer), classOf(l.Layer, i), l.Frequency, l.Level}, &levels)
-		ends.of(l.Frequency)
-	}
-	f.x.lo, f.x.hi = ends.within(10, math.Max(p.HalfRate, 20))
-	f.y.lo, f.y.hi = levels.rounded(140, 20)
-	f.text = f.words()
-	return f
-}
-
-// levelFigure draws the level of each layer along time, with the overloads.
-func levelFigure(run *Run, p *Pictures) figure {
-	f := figure{title: "Level along time, and overloads", x: axis{label: "time on the track", time: true, hi: p.Duration}, y: axis{label: "dBFS"}}
-	var levels reach
-	levels.of([]float64{0})
-	for i, l := range p.Levels {
-		f.line(curve{"", classOf(l.Layer, i) + " thin", l.Time, l.Peak}, &levels)
-	}
-	for i, l := range p.Levels {
-		f.line(curve{clean(l.Layer), classOf(l.Layer, i), l.Time, l.RMS}, &levels)
-	}
-	for _, name := range stagesOf(run, p.Spans) {
-		r := row{label: clean(name)}
-		for _, s := range p.Spans {
-			if s.Stage == name {
-				r.spans = append(r.spans, [2]float64{s.From, s.To})
-			}
-		}
-		sort.Slice(r.spans, func(i, j int) bool { return r.spans[i][0] < r.spans[j][0] })
-		f.rows = append(f.rows, r)
-	}
-	if f.x.hi <= 0 {
-		f.x.hi = 1
-	}
-	f.y.lo, f.y.hi = levels.rounded(140, 20)
-	f.y.hi = math.Max(f.y.hi, 6)
-	f.bands = []band{{label: "beyond full scale", from: 0, to: math.Inf(1)}}
-	f.text = f.words()
-	return f
-}
-
-// stagesOf returns the stages that have spans: those of the run in its order, then any others.
-func stagesOf(run *Run, spans []Span) []string {
-	with := map[string]bool{}
-	for _, s := range spans {
-		with[s.Stage] = true
-	}
-	var names []string
-	take := func(name string) {
-		if with[name] {
-			names = append(names, name)
-			delete(with, name)
-		}
-	}
-	for _, s := range run.Stages {
-		take(s.Name)
-	}
-	for _, s := range spans {
-		take(s.Stage)
-	}
-	return names
-}
-
-// words tells in words what the figure shows.
-func (f figure) words() string {
-	var names []string
-	for _, c := range f.curves {
-		if c.label != "" {
-			names = append(names, c.label)
-		}
-	}
-	s := "Lines: " + strings.Join(names, ", ") + "."
-	for _, m := range f.marks {
-		s += " A mark: " + m.label + "."
-	}
-	for _, r := range f.rows {
-		s += " Bars: when " + r.label + " overloads."
-	}
-	return s + " The figures are in the tables of this page."
-}
-
-// class returns the style of the i-th line.
-func class(i int) string { return "line-" + string(rune('1'+i%6)) }
-
-// classOf returns the style of a layer's line: always the same one for the same layer.
-func classOf(layer string, i int) string {
-	for k, name := range []string{Wanted, FoldBack, Interference, Overloaded, Noise, Rounding} {
-		if layer == name {
-			return class(k)
-		}
-	}
-	if layer == Heard {
-		return "line-0"
-	}
-	return class(i)
-}
-
-// reach is the range of some values. The zero reach is of none.
-type reach struct {
-	lo, hi float64
-	some   bool
-}
-
-// of takes more values in; NaN and the infinities are passed over.
-func (r *reach) of(values []float64) {
-	for _, v := range values {
-		if gap(v) {
-			continue
-		}
-		if !r.some {
-			r.lo, r.hi, r.some = v, v, true
-		}
-		r.lo, r.hi = math.Min(r.lo, v), math.Max(r.hi, v)
-	}
-}
-
-// within returns the range of positive values, or lo and hi where there is none.
-func (r *reach) within(lo, hi float64) (float64, float64) {
-	if !r.some || r.lo <= 0 || r.lo >= r.hi {
-		return lo, hi
-	}
-	return r.lo, r.hi
-}
-
-// rounded returns the range widened to multiples of step, its lower end at most depth below the
-// upper one: what is deeper is of no use in a picture.
-func (r *reach) rounded(depth, step float64) (float64, float64) {
-	hi := math.Ceil(r.hi/step) * step
-	lo := math.Floor(math.Max(r.lo, hi-depth)/step) * step
-	if lo >= hi {
-		lo = hi - step
-	}
-	return lo, hi
 }

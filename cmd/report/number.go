@@ -4,6 +4,7 @@ import (
 	"bytes"
 	"encoding/json"
 	"math"
+	"strconv"
 )
 
 // Number is a figure that may not be there. The zero Number is not there. It is null in JSON when
@@ -23,6 +24,17 @@ func Of(x float64) Number {
 
 // Value returns the figure and whether it is there; 0 and false where it is not.
 func (n Number) Value() (float64, bool) { return n.value, n.there }
+
+// There tells whether the figure is there.
+func (n Number) There() bool { return n.there }
+
+// Exact returns the shortest text that reads back as the figure; empty where it is not there.
+func (n Number) Exact() string {
+	if !n.there {
+		return ""
+	}
+	return strconv.FormatFloat(n.value, 'g', -1, 64)
+}
 
 // MarshalJSON writes the figure, or null.
 func (n Number) MarshalJSON() ([]byte, error) {

@@ -63,6 +63,20 @@ func example() *Run {
 			{"capsule amp", "low", n(12.5), n(12.5012), n(2.1)},
 			{"capsule amp", "slew", n(12.6), n(12.60004), Number{}},
 		},
+		Waveforms: []Waveform{{"capsule amp", "high", n(3.2125), n(6.2)}},
+		Noise: Budget{NoiseTotal{n(0.00031), n(-66.1), n(0.176)}, []NoiseSource{
+			{"capsule amp.r_in", "thermal", n(0.0003), n(0.94)}, {"capsule amp", "amplifier voltage", n(0.00008), n(0.06)},
+		}},
+		Rest: Rest{n(3.3), []Node{{"supply", n(3.3)}, {"half", n(0.9)}, {"capsule amp", n(0.897)}}, Settling{n(0.84), n(1.9)}},
+		Parts: []Part{
+			{"R1", "half", "divider, upper resistor", "top", n(150e3), Ohm, "E24", n(0.05)},
+			{"", "half", "bypass capacitor", "bypass", n(10e-6), Farad, "E12", n(0.1)},
+			{"R6", "capsule amp", "feedback resistor", "r_f", n(150e3), Ohm, "E24", n(0.05)},
+			{"", "capsule amp", "amplifier quad", "amplifier", Number{}, Piece, "bipolar single-supply", Number{}},
+		},
+		Listen: &Listen{[]Passage{{n(2), n(4)}, {n(12), n(13)}}, []Player{
+			{TrackSound, "track.wav", n(11025), n(3), n(-1.5)}, {Heard, "heard.wav", n(8000), n(3), n(0)}, {FoldBack, "fold-back.wav", n(8000), n(3), n(24.5)},
+		}},
 		Limits: []Limit{
 			{"overload_time", n(0), n(1.84 / 42), false},
 			{"fold_back_below_wanted", n(40), n(36.8), false},
@@ -79,7 +93,7 @@ func example() *Run {
 
 // samplePictures returns plots to go with example.
 func samplePictures() *Pictures {
-	p := &Pictures{HalfRate: 4000, Duration: 42, Spectrum: Spectrum{Per: "third octave"}}
+	p := &Pictures{HalfRate: 4000, Kept: 3000, Duration: 42, Spectra: []Spectrum{{Per: "third octave"}}}
 	r := Response{Input: "brood"}
 	for f := 10.0; f <= 100e3; f *= math.Pow(10, 1.0/50) {
 		r.Frequency = append(r.Frequency, f)
@@ -107,8 +121,35 @@ func samplePictures() *Pictures {
 				level.Peak = append(level.Peak, y+9)
 			}
 		}
-		p.Spectrum.Layers = append(p.Spectrum.Layers, line)
+		p.Spectra[0].Layers = append(p.Spectra[0].Layers, line)
 		p.Levels = append(p.Levels, level)
+	}
+	p.Densities = []Line{{"at the converter", r.Frequency, make([]float64, len(r.Frequency))}}
+	for i, f := range r.Frequency {
+		p.Densities[0].Level[i] = 1e-6 / math.Hypot(1, f/2700)
+	}
+	scope := Scope{From: 3.2025, Step: 0.0005}
+	for k := range 3 {
+		var asked, real []float64
+		for i := range 41 {
+			x := 0.9 + float64(k+1)*0.5*math.Sin(float64(i)/4)
+			asked, real = append(asked, x), append(real, math.Max(0.02, math.Min(1.8, x)))
+		}
+		scope.Asked, scope.Real = append(scope.Asked, asked), append(scope.Real, real)
+	}
+	p.Scopes = []Scope{scope}
+	gram := Gram{Layer: Heard, Duration: 42, Top: 4000}
+	for i := range 20 {
+		column := make([]float64, 9)
+		for k := range column {
+			column[k] = -20 - float64((i*k)%50)
+		}
+		gram.Level = append(gram.Level, column)
+	}
+	p.Grams = []Gram{gram}
+	for _, player := range example().Listen.Players {
+		rate, _ := player.RateHz.Value()
+		p.Sounds = append(p.Sounds, PlayerSound{Rate: rate, Codes: make([]int16, 12)})
 	}
 	p.Spans = []Span{{"capsule amp", 3.2125, 3.6}, {"capsule amp", 12.5, 12.51}, {"capsule amp", 30, 31.2}}
 	return p
@@ -233,7 +274,18 @@ func TestNumber(t *testing.T) {
 // The keys are those of the published form of report.json; a key that changes breaks its readers.
 func TestJSONKeys(t *testing.T) {
 	keys := map[string]string{
-		"":                "tool chain track internal overload stages converter layers events limits findings assumptions",
+		"":                "tool chain track internal overload stages converter layers events waveforms noise rest parts listen limits findings assumptions",
+		"waveforms":       "stage kind at_s over_db",
+		"noise":           "total sources",
+		"noise.total":     "v dbfs lsb",
+		"noise.sources":   "name kind v share",
+		"rest":            "supply_v nodes settling",
+		"rest.nodes":      "name volts",
+		"rest.settling":   "to_1_percent_s to_1_lsb_s",
+		"parts":           "ref stage role key value unit series tolerance",
+		"listen":          "passages players",
+		"listen.passages": "from_s to_s",
+		"listen.players":  "name file rate_hz seconds gain_db",
 		"tool":            "name version",
 		"chain":           "file title",
 		"track":           "file rate_hz channels seconds peak_dbfs rms_dbfs",
@@ -326,7 +378,15 @@ func TestPageEscapes(t *testing.T) {
 // The page asks nothing of the network and runs no script.
 func TestPageSelfContained(t *testing.T) {
 	text := string(made(t, func(w io.Writer) error { return WriteHTML(w, example(), samplePictures()) }))
-	for _, word := range []string{"http:", "https:", "src=", "url(", "@import", "<script", "<link", " style="} {
+	if n := strings.Count(text, "<script"); n != 1 {
+		t.Errorf("%d scripts, want ours alone", n)
+	}
+	for _, m := range regexp.MustCompile(`(?:src|href)="([^#][^"]{0,40})`).FindAllStringSubmatch(text, -1) {
+		if !strings.HasPrefix(m[1], "data:audio/wav;base64,") && !strings.HasPrefix(m[1], "data:image/png;base64,") && !strings.HasPrefix(m[1], "./") && m[1] != "parts.csv" {
+			t.Errorf("the page refers to %s", m[1])
+		}
+	}
+	for _, word := range []string{"http:", "https:", "url(", "@import", "<link", " style=", "fetch(", "XMLHttp", "import("} {
 		if strings.Contains(text, word) {
 			t.Errorf("the page has %q", word)
 		}
@@ -342,7 +402,7 @@ func TestPageSelfContained(t *testing.T) {
 	if a, b := strings.Count(text, "<table>"), strings.Count(text, "<caption"); a != b {
 		t.Errorf("%d tables, %d captions", a, b)
 	}
-	if a, b := strings.Count(text, "<svg class"), strings.Count(text, `role="img">`+"\n<title>"); a != b {
+	if a, b := strings.Count(text, `<svg class="figure`), len(regexp.MustCompile(`role="img"[^>]*>\n<title>`).FindAllString(text, -1)); a != b {
 		t.Errorf("%d figures, %d with a title", a, b)
 	}
 	ids := map[string]bool{}
@@ -413,8 +473,10 @@ func TestFigures(t *testing.T) {
 		{seconds(Of(0)), "0 s"}, {seconds(Of(125)), "125.0 s"}, {clock(Of(3.2125)), "0:03.2"}, {clock(Of(59.96)), "1:00.0"},
 		{clock(Of(3723.25)), "1:02:03.3"}, {percent(Of(0.0438)), "4.38 %"}, {percent(Of(0)), "0 %"}, {percent(Of(1)), "100 %"},
 		{times(0), "never"}, {times(1), "once"}, {times(214), "214 times"}, {times(12345), "12 345 times"}, {count(1344000), "1 344 000"},
-		{errorDB(Of(0.00421)), "0.0042 dB"}, {significant(9.996, 3), "10.0"}, {between(Of(0.02), Of(1.8)), "0.02 to 1.80 V"}, {between(Of(-0.02), Of(0.001)), "−20.0 mV to 1.00 mV"},
-		{between(Number{}, Number{}), "–"}, {engineering(20000), "20k"}, {engineering(50), "50"}, {engineering(1e6), "1M"},
+		{errorDB(Of(0.00421)), "0.0042 dB"}, {significant(9.996, 3), "10.0"}, {partValue(Part{Value: Of(4700), Unit: Ohm}), "4.7 kΩ"},
+		{partValue(Part{Value: Of(100e-9), Unit: Farad}), "100 nF"}, {partValue(Part{Value: Of(4.7e-3), Unit: Farad}), "4700 µF"}, {partValue(Part{}), "–"},
+		{plusMinus(Of(0.05)), "±5 %"}, {signed(Of(3.21)), "+3.2 dB"}, {signed(Of(-0.5)), "−0.5 dB"}, {signed(Of(0)), "0.0 dB"},
+		{engineering(20000), "20k"}, {engineering(50), "50"}, {engineering(1e6), "1M"},
 	} {
 		if c.got != c.want {
 			t.Errorf("got %s, want %s", c.got, c.want)
@@ -452,7 +514,7 @@ func TestWorstEvents(t *testing.T) {
 	e := func(from, to, over float64) Event { return Event{"a", "high", Of(from), Of(to), Of(over)} }
 	list := []Event{e(1, 2, 3), e(3, 3.5, math.NaN()), e(5, 8, 3), e(9, 9.1, 7)}
 	got := worstEvents(list, 3)
-	if want := []Event{list[3], list[2], list[0]}; !reflect.DeepEqual(got, want) {
+	if want := []int{3, 2, 0}; !reflect.DeepEqual(got, want) {
 		t.Errorf("got %v, want %v", got, want)
 	}
 }

@@ -17,10 +17,15 @@ type Run struct {
 	Layers    []Layer   `json:"layers"` // in the order they are to be shown; rest aside
 	// Events are the overloads in order of time: all, or the largest where there are too many to
 	// keep (Overload.Events counts them all).
-	Events      []Event   `json:"events"`
-	Limits      []Limit   `json:"limits"`
-	Findings    []Finding `json:"findings"` // the weightiest first
-	Assumptions []string  `json:"assumptions"`
+	Events      []Event    `json:"events"`
+	Waveforms   []Waveform `json:"waveforms"` // the overloads whose waveforms the page shows, the largest first
+	Noise       Budget     `json:"noise"`     // at the converter's input, folding included
+	Rest        Rest       `json:"rest"`
+	Parts       []Part     `json:"parts"` // in the order of the chain file
+	Listen      *Listen    `json:"listen,omitempty"`
+	Limits      []Limit    `json:"limits"`
+	Findings    []Finding  `json:"findings"` // the weightiest first
+	Assumptions []string   `json:"assumptions"`
 }
 
 // Tool names the program that made the result.
@@ -134,6 +139,97 @@ type Event struct {
 	OverDB Number `json:"over_db"` // how far beyond the limit the linear chain asks
 }
 
+// Waveform is an overload whose waveforms the page shows.
+type Waveform struct {
+	Stage  string `json:"stage"`
+	Kind   string `json:"kind"`
+	AtS    Number `json:"at_s"`
+	OverDB Number `json:"over_db"`
+}
+
+// Budget is the noise of the chain, source by source.
+type Budget struct {
+	Total   NoiseTotal    `json:"total"`
+	Sources []NoiseSource `json:"sources"` // the largest first
+}
+
+// NoiseTotal is all the noise.
+type NoiseTotal struct {
+	V    Number `json:"v"` // RMS
+	DBFS Number `json:"dbfs"`
+	LSB  Number `json:"lsb"` // RMS, in steps of the converter
+}
+
+// NoiseSource is what one source adds.
+type NoiseSource struct {
+	Name  string `json:"name"`
+	Kind  string `json:"kind"`
+	V     Number `json:"v"`     // RMS
+	Share Number `json:"share"` // of the total's power, 0 to 1
+}
+
+// Rest is the chain without sound.
+type Rest struct {
+	SupplyV  Number   `json:"supply_v"`
+	Nodes    []Node   `json:"nodes"`
+	Settling Settling `json:"settling"`
+}
+
+// Node is the voltage that a node rests at.
+type Node struct {
+	Name  string `json:"name"`
+	Volts Number `json:"volts"`
+}
+
+// Settling is how long the converter's input takes to come to rest after power-up.
+type Settling struct {
+	ToPercentS Number `json:"to_1_percent_s"`
+	ToLSBS     Number `json:"to_1_lsb_s"`
+}
+
+// Units of parts.
+const (
+	Ohm   = "ohm"
+	Farad = "farad"
+	Piece = "" // an amplifier: it has no value
+)
+
+// Part is one component on the board.
+type Part struct {
+	Ref       string `json:"ref"`   // as in "R7"; may be empty
+	Stage     string `json:"stage"` // or bias or input that it belongs to
+	Role      string `json:"role"`  // in words
+	Key       string `json:"key"`   // of the chain file
+	Value     Number `json:"value"` // in Unit
+	Unit      string `json:"unit"`
+	Series    string `json:"series"`    // preferred series; of an amplifier, its class
+	Tolerance Number `json:"tolerance"` // of the series, a fraction
+}
+
+// Listen is what there is to listen to on the page.
+type Listen struct {
+	Passages []Passage `json:"passages"` // of the track, in order; one after another in each player
+	Players  []Player  `json:"players"`
+}
+
+// Passage is a stretch of the track.
+type Passage struct {
+	FromS Number `json:"from_s"`
+	ToS   Number `json:"to_s"`
+}
+
+// Player is one sound on the page.
+type Player struct {
+	Name    string `json:"name"` // TrackSound, Heard or a layer
+	File    string `json:"file"` // that holds all of it; empty for none beside the page
+	RateHz  Number `json:"rate_hz"`
+	Seconds Number `json:"seconds"`
+	GainDB  Number `json:"gain_db"` // that was applied for listening
+}
+
+// TrackSound is the player of the track itself.
+const TrackSound = "track"
+
 // Limit is one of the owner's limits. Its unit goes with its name, as in the chain file:
 // overload_time is a fraction; fold_back, interference and noise are dBFS; fold_back_below_wanted,
 // room and droop are dB; settling is seconds.
@@ -163,10 +259,36 @@ type Finding struct {
 type Pictures struct {
 	Responses []Response // from each input to the converter
 	HalfRate  float64    // Hz, half the converter rate; drawn as a mark
-	Spectrum  Spectrum
+	Kept      float64    // Hz, up to which the chain is meant to pass sound; 0: not told
+	Spectra   []Spectrum
 	Levels    []Level
 	Spans     []Span  // overloads, in any order
 	Duration  float64 // s, of the track
+	Scopes    []Scope // one for each of Run.Waveforms
+	Grams     []Gram
+	Densities []Line        // noise at the converter's input, in V/√Hz
+	Sounds    []PlayerSound // one for each of Run.Listen.Players
+}
+
+// Scope is the voltage of each stage around an overload.
+type Scope struct {
+	From, Step float64     // s
+	Asked      [][]float64 // V, for each of Run.Stages: the linear chain's output
+	Real       [][]float64 // V, for each of Run.Stages
+}
+
+// Gram is a spectrogram.
+type Gram struct {
+	Layer    string
+	Duration float64     // s
+	Top      float64     // Hz
+	Level    [][]float64 // dBFS of each cell, columns in the order of time, each from 0 Hz up
+}
+
+// PlayerSound is the sound of a player.
+type PlayerSound struct {
+	Rate  float64 // Hz
+	Codes []int16
 }
 
 // Response is the gain from one input to the converter.
@@ -210,6 +332,10 @@ func WriteJSON(w io.Writer, run *Run) error {
 	r.Stages = filled(r.Stages)
 	r.Layers = filled(r.Layers)
 	r.Events = filled(r.Events)
+	r.Waveforms = filled(r.Waveforms)
+	r.Noise.Sources = filled(r.Noise.Sources)
+	r.Rest.Nodes = filled(r.Rest.Nodes)
+	r.Parts = filled(r.Parts)
 	r.Limits = filled(r.Limits)
 	r.Findings = filled(r.Findings)
 	r.Assumptions = filled(r.Assumptions)

@@ -27,8 +27,8 @@ const (
 	green  = "\x1b[32m"
 )
 
-// Summary writes the run as one terminal screen: the verdict, then stages, layers, as many of the
-// findings as there is room for (at least one), and limits. It returns the error of w, and panics
+// Summary writes the run as one terminal screen, in the order of the page: the verdict with the limits and as many of
+// the findings as there is room for (at least one), then stages and layers. It returns the error of w, and panics
 // where the width is below 40 and not 0.
 func Summary(w io.Writer, run *Run, o Options) error {
 	if o.Width == 0 {
@@ -45,19 +45,15 @@ func Summary(w io.Writer, run *Run, o Options) error {
 		mark = bold + green
 	}
 	lines := []string{subject, o.marked(mark, text.Snip(v.Headline, o.Width, "…"))}
-	if len(v.Overload) > 0 {
-		lines = append(lines, wrapped(strings.Join(v.Overload, " "), o.Width)...)
+	if words := append(v.Overload, v.Settling...); len(words) > 0 {
+		lines = append(lines, wrapped(strings.Join(words, " "), o.Width)...)
 	}
-	lines = append(lines, "")
-	lines = append(lines, o.stages(run)...)
-	lines = append(lines, "")
-	lines = append(lines, o.layers(run)...)
 	limits := o.limits(run)
-	if len(run.Findings)+len(limits) > 0 {
-		lines = append(lines, "")
-	}
-	lines = append(lines, o.findings(run, screen-len(lines)-len(limits))...)
+	rest := append([]string{""}, o.stages(run)...)
+	rest = append(append(rest, ""), o.layers(run)...)
 	lines = append(lines, limits...)
+	lines = append(lines, o.findings(run, screen-len(lines)-len(rest))...)
+	lines = append(lines, rest...)
 	_, err := io.WriteString(w, strings.Join(lines, "\n")+"\n")
 	return err
 }

@@ -16,6 +16,7 @@ import (
 // axis is one axis of a figure.
 type axis struct {
 	label  string
+	unit   string  // of the data, for read-outs
 	lo, hi float64 // ends, in the unit of the data; lo < hi, and 0 < lo where log
 	log    bool
 	time   bool // ticks are clock times
@@ -27,6 +28,19 @@ func (a axis) at(x float64) float64 {
 		return math.Log(x/a.lo) / math.Log(a.hi/a.lo)
 	}
 	return (x - a.lo) / (a.hi - a.lo)
+}
+
+// data returns the axis as the page's script reads it: its ends, how it is divided, and its unit.
+func (a axis) data() string {
+	kind := "even"
+	switch {
+	case a.log:
+		kind = "log"
+	case a.time:
+		kind = "clock"
+	}
+	number := func(x float64) string { return strconv.FormatFloat(x, 'g', 8, 64) }
+	return html.EscapeString(number(a.lo) + " " + number(a.hi) + " " + kind + " " + a.unit)
 }
 
 // tick is one line of the grid; without text it is a minor one.
@@ -128,6 +142,7 @@ type band struct {
 type mark struct {
 	label string
 	x     float64
+	high  bool // its label is at the top
 }
 
 // row is a row of spans of x, above the curves.
@@ -144,6 +159,10 @@ type figure struct {
 	marks       []mark
 	curves      []curve
 	rows        []row
+	image       *picture // under the curves
+	scale       []string // levels of the ends of the image's colours
+	low         bool     // drawn less high
+	seeks       bool     // a click plays the sound from there
 }
 
 // Sizes, in the SVG's own unit: a pixel where it is shown at full size.
@@ -172,7 +191,11 @@ func px(x float64) string { return trimmed(strconv.FormatFloat(x, 'f', 1, 64)) }
 
 // draw returns the figure as SVG, at two sizes of which the style sheet shows the one that fits.
 func (f figure) draw() template.HTML {
-	return f.sized(760, 300, "wide") + f.sized(350, 250, "narrow")
+	wide, narrow := 300., 250.
+	if f.low {
+		wide, narrow = 140, 130
+	}
+	return f.held() + f.sized(760, wide, "wide") + f.sized(350, narrow, "narrow")
 }
 
 // sized returns the figure with a plot area of the given height, as an SVG of the given class.
@@ -186,6 +209,9 @@ func (f figure) sized(width, height float64, class string) template.HTML {
 		longest = max(longest, len([]rune(r.label)))
 	}
 	right := 12.0
+	if f.x.time {
+		right = 24 // half of the last tick's text
+	}
 	if beside && longest > 0 {
 		right = 20 + letter*float64(min(longest, 24))
 	}
@@ -196,21 +222,35 @@ func (f figure) sized(width, height float64, class string) template.HTML {
 	across := width - left - right
 	key := f.key(width, beside)
 	total := top + height + foot + rowStep*float64(len(key))
+	if f.image != nil {
+		total += rowStep
+	}
 
 	p := &pen{}
-	p.put(`<svg class="figure %s" viewBox="0 0 %s %s" role="img">`+"\n", class, px(width), px(total))
+	p.put(`<svg class="figure %s" viewBox="0 0 %s %s" role="img" data-area="%s %s %s %s" data-x="%s" data-y="%s"`, class, px(width), px(total),
+		px(left), px(top), px(across), px(height), f.x.data(), f.y.data())
+	if f.seeks {
+		p.WriteString(` data-seeks=""`)
+	}
+	p.WriteString(">\n")
 	p.WriteString("<title>" + html.EscapeString(f.title) + "</title>\n<desc>" + html.EscapeString(f.text) + "</desc>\n")
 	f.grid(p, left, top, across, height)
 	f.spans(p, left, across, beside, width)
 	// A nested svg cuts off what runs beyond the plot area.
 	p.put(`<svg x="%s" y="%s" width="%s" height="%s">`+"\n", px(left), px(top), px(across), px(height))
+	if f.image != nil {
+		f.image.use(p, across, height)
+	}
 	for _, c := range f.curves {
-		p.put(`<path class="curve %s" d="%s"/>`+"\n", c.class, f.path(c, across, height))
+		p.put(`<path class="curve %s" data-name="%s" d="%s"/>`+"\n", c.class, html.EscapeString(c.label), f.path(c, across, height))
 	}
 	p.put("</svg>\n")
 	f.notes(p, left, top, across, height)
 	if beside {
 		f.labels(p, left+across, top, height, across)
+	}
+	if f.image != nil {
+		f.ramps(p, left, top+height+foot)
 	}
 	for i, line := range key {
 		for _, k := range line {
@@ -283,13 +323,16 @@ func (f figure) notes(p *pen, left, top, across, height float64) {
 		if at < 0 || at > 1 {
 			continue
 		}
-		x := left + across*at
+		x, y := left+across*at, top+height-8
+		if m.high {
+			y = top + 30
+		}
 		p.put(`<path class="mark" d="M%s %sv%s"/>`+"\n", px(x), px(top), px(height))
 		wide := letter*float64(len([]rune(m.label))) + 12
 		if x-wide > left {
-			p.words(x-6, top+height-8, "note", "end", m.label)
+			p.words(x-6, y, "note", "end", m.label)
 		} else {
-			p.words(x+6, top+height-8, "note", "start", m.label)
+			p.words(x+6, y, "note", "start", m.label)
 		}
 	}
 }

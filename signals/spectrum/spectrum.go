@@ -60,13 +60,18 @@ func Length(rate, resolution float64) int {
 // NewWelch starts an estimate for a stream at a rate in Hz from segments of the given length. It panics where the
 // length is not a power of four, 4 or more.
 func NewWelch(rate float64, length int) *Welch {
-	if length < shortest || bits.OnesCount(uint(length)) != 1 || bits.TrailingZeros(uint(length))%2 != 0 {
-		panic("spectrum: a segment's length must be a power of four")
-	}
+	check(length)
 	half := length / 2
 	return &Welch{
 		rate: rate, half: half, window: hann(length), values: make([]float64, 4*half), filled: half,
 		tally: tally{work: make([]complex128, length), power: make([]float64, half+1)},
+	}
+}
+
+// check panics where no segment can have the length.
+func check(length int) {
+	if length < shortest || bits.OnesCount(uint(length)) != 1 || bits.TrailingZeros(uint(length))%2 != 0 {
+		panic("spectrum: a segment's length must be a power of four")
 	}
 }
 

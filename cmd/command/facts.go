@@ -1,0 +1,96 @@
+package command
+
+import (
+	"math"
+	"strings"
+
+	"midrail/bilinear"
+	"midrail/chain"
+	"midrail/chain/circuit"
+	"midrail/chain/noise"
+	"midrail/chain/preferred"
+	"midrail/chain/render"
+	"midrail/chain/rest"
+	"midrail/cmd/report"
+	"midrail/signals/level"
+)
+
+// restOf returns the chain without sound.
+func restOf(n *circuit.Network, at bilinear.Operating, settling rest.Settling) report.Rest {
+	r := report.Rest{
+		SupplyV:  report.Of(n.Chain.Supply.Voltage),
+		Settling: report.Settling{ToPercentS: report.Of(settling.OnePercent), ToLSBS: report.Of(settling.LSB)},
+	}
+	current := map[int]bool{} // nodes that stand for a capsule's current, not for a voltage
+	for i := range n.Inputs {
+		current[n.Inputs[i].Drive] = n.Chain.Inputs[i].Kind == chain.Electret
+	}
+	for i, name := range n.Nodes {
+		if i != circuit.Ground && !current[i] {
+			r.Nodes = append(r.Nodes, report.Node{Name: name, Volts: report.Of(at.Volts[i])})
+		}
+	}
+	return r
+}
+
+// noiseOf returns the noise budget.
+func noiseOf(c *chain.Chain, span render.Span, b *noise.Budget) report.Budget {
+	v := math.Sqrt(b.Power)
+	step := (c.Converter.High - c.Converter.Low) / math.Exp2(float64(c.Converter.Bits))
+	out := report.Budget{Total: report.NoiseTotal{V: report.Of(v), DBFS: report.Of(level.DBFS(v / span.Unit())), LSB: report.Of(v / step)}}
+	for _, s := range b.Sources {
+		out.Sources = append(out.Sources, report.NoiseSource{Name: s.Name, Kind: string(s.Kind), V: report.Of(math.Sqrt(s.Power)), Share: report.Of(s.Power / b.Power)})
+	}
+	return out
+}
+
+// tolerances of the series of preferred values, a fraction: IEC 60063:2015; E3 has more than E6.
+var tolerances = map[preferred.Series]float64{
+	preferred.E6: 0.2, preferred.E12: 0.1, preferred.E24: 0.05, preferred.E48: 0.02, preferred.E96: 0.01, preferred.E192: 0.005,
+}
+
+// roles are what parts do, by their keys.
+var roles = map[string]string{
+	"r_f": "feedback resistor", "c_f": "feedback capacitor", "r_in": "input resistor", "c_in": "coupling capacitor",
+	"r_g": "gain resistor", "c_g": "gain capacitor", "r_bias": "bias resistor", "r_1": "filter resistor", "r_2": "filter resistor",
+	"r_3": "filter resistor", "c_1": "filter capacitor", "c_2": "filter capacitor", "r_a": "gain resistor to the bias",
+	"r_b": "gain resistor to the output", "r": "resistor", "c": "capacitor", "r_top": "upper resistor", "r_bottom": "lower resistor",
+	"c_top": "upper capacitor", "c_bottom": "lower capacitor", "top": "divider, upper resistor", "bottom": "divider, lower resistor",
+	"bypass": "bypass capacitor", "load": "capsule load", "r_load": "load resistor",
+}
+
+// partsOf returns everything on the board: the parts of the chain file, then the amplifiers.
+func partsOf(c *chain.Chain) []report.Part {
+	var list []report.Part
+	for _, p := range c.Parts() {
+		owner := strings.TrimSuffix(p.Name, "."+p.Key)
+		one := report.Part{Ref: p.Ref, Stage: owner, Role: roles[p.Key], Key: p.Key, Value: report.Of(p.Value), Unit: report.Ohm, Series: p.Series}
+		series := preferred.DefaultResistors
+		if p.Unit == chain.Farad {
+			one.Unit, series = report.Farad, preferred.DefaultCapacitors
+		}
+		if owner, filter := strings.CutSuffix(owner, ".supply_filter"); filter {
+			one.Stage, one.Role = owner, "supply filter "+one.Role
+		}
+		if s, err := preferred.Parse(p.Series); err == nil {
+			series = s
+		}
+		one.Series = series.String()
+		if t, there := tolerances[series]; there {
+			one.Tolerance = report.Of(t)
+		}
+		list = append(list, one)
+	}
+	amplifier := func(owner, name string) {
+		if a := c.AmplifierNamed(name); a != nil {
+			list = append(list, report.Part{Stage: owner, Role: "amplifier " + name, Key: "amplifier", Series: a.Model.Class, Unit: report.Piece})
+		}
+	}
+	for i := range c.Biases {
+		amplifier(c.Biases[i].Name, c.Biases[i].Buffer)
+	}
+	for i := range c.Stages {
+		amplifier(c.Stages[i].Name, c.Stages[i].Amplifier)
+	}
+	return list
+}

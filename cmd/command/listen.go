@@ -1,0 +1,263 @@
+package command
+
+import (
+	"errors"
+	"io"
+	"math"
+	"sort"
+
+	"midrail/chain/render"
+	"midrail/cmd/report"
+	"midrail/signals"
+	"midrail/signals/level"
+	"midrail/signals/resample"
+	"midrail/signals/wav"
+)
+
+const (
+	// soundBytes is how much sound a report holds, before it is written in base64: a page stays under 6 MB.
+	soundBytes = 3_300_000
+	// clearRate is the rate in Hz that the track is halved down to, so long as it stays at or above.
+	clearRate = 22050
+	// around is how much of the track comes with an overload, before and after it, in s.
+	around = 1.5
+	// listenLevel is the A-weighted level in dBFS that sounds are brought to, at the most.
+	listenLevel = -20
+	// listenPeak is what their peaks may reach, in dB of full scale.
+	listenPeak = -1
+	// mostGain is by how much a sound is raised for listening, at the most, in dB.
+	mostGain = 60
+	// fade is how long a passage takes to begin and to end, in s.
+	fade = 5e-3
+)
+
+// listen puts together what there is to listen to in a report: the track, heard, and every layer that is not silent.
+func listen(out *folder, j job, r *render.Result, run *report.Run) (*report.Listen, []report.PlayerSound, error) {
+	rate, _ := run.Converter.RateHz.Value()
+	trackRate, _ := run.Track.RateHz.Value()
+	shownRate := trackRate
+	for shownRate >= 2*clearRate {
+		shownRate /= 2
+	}
+	players := []report.Player{{Name: report.TrackSound}, {Name: report.Heard}}
+	for _, l := range run.Layers {
+		if _, there := l.RMSDBFS.Value(); there {
+			players = append(players, report.Player{Name: l.Name})
+		}
+	}
+	passages := passagesOf(r, soundBytes/2/(shownRate+float64(len(players)-1)*rate))
+	l := &report.Listen{}
+	for _, p := range passages {
+		l.Passages = append(l.Passages, report.Passage{FromS: report.Of(p[0]), ToS: report.Of(p[1])})
+	}
+	var sounds []report.PlayerSound
+	var samples [][]float64
+	for i := range players {
+		p := &players[i]
+		var x []float64
+		var err error
+		if i == 0 {
+			if j.demo() {
+				p.File = "track.wav"
+			}
+			x, err = cutTrack(j, shownRate, passages)
+			p.RateHz = report.Of(shownRate)
+			sounds = append(sounds, report.PlayerSound{Rate: shownRate})
+		} else {
+			p.File = p.Name + ".wav"
+			x, err = cutFile(out.file(p.File), passages)
+			p.RateHz = report.Of(rate)
+			sounds = append(sounds, report.PlayerSound{Rate: rate})
+		}
+		if err != nil {
+			return nil, nil, err
+		}
+		samples = append(samples, x)
+	}
+	gains := loudness(samples, sounds)
+	for i, x := range samples {
+		p := &players[i]
+		p.Seconds, p.GainDB = report.Of(float64(len(x))/math.Round(sounds[i].Rate)), report.Of(gains[i])
+		sounds[i].Codes = codesOf(x, math.Pow(10, gains[i]/20))
+		l.Players = append(l.Players, *p)
+	}
+	return l, sounds, nil
+}
+
+// passagesOf chooses the stretches of the track, in s, that a report holds: all of it where it is no longer than most
+// seconds; else those around the worst overloads, and where none are left the beginning.
+func passagesOf(r *render.Result, most float64) [][2]float64 {
+	if r.Seconds <= most {
+		return [][2]float64{{0, r.Seconds}}
+	}
+	events := append([]render.Event(nil), r.Events...)
+	sort.SliceStable(events, func(i, k int) bool { return events[i].Over > events[k].Over })
+	var list [][2]float64
+	for _, e := range append(events, render.Event{From: around}) {
+		if !e.Kind.Limits() {
+			continue
+		}
+		p := [2]float64{math.Max(0, e.From-around), math.Min(r.Seconds, e.From+around)}
+		with, total := joined(append(list, p))
+		if total > most {
+			continue
+		}
+		list = with
+	}
+	return list
+}
+
+// joined returns stretches in order of time, those that touch as one, and how long they are together.
+func joined(list [][2]float64) (merged [][2]float64, total float64) {
+	sorted := append([][2]float64(nil), list...)
+	sort.Slice(sorted, func(i, k int) bool { return sorted[i][0] < sorted[k][0] })
+	for _, p := range sorted {
+		if n := len(merged); n > 0 && p[0] <= merged[n-1][1] {
+			merged[n-1][1] = math.Max(merged[n-1][1], p[1])
+		} else {
+			merged = append(merged, p)
+		}
+	}
+	for _, p := range merged {
+		total += p[1] - p[0]
+	}
+	return merged, total
+}
+
+// cutFile takes the passages out of a file of one channel.
+func cutFile(path string, passages [][2]float64) ([]float64, error) {
+	f, err := wav.Open(path)
+	if err != nil {
+		return nil, err
+	}
+	x, err := cut(signals.Channels(f, 1)[0], f.Rate(), passages)
+	return x, errors.Join(err, f.Close())
+}
+
+// cutTrack takes the passages out of the job's track, all of its channels as one, at the given rate: its own or that
+// halved some times, without what lies above half of it. Of several tracks it takes the first.
+func cutTrack(j job, rate float64, passages [][2]float64) ([]float64, error) {
+	for _, r := range j.tracks {
+		if r.open == nil {
+			continue
+		}
+		t, err := r.open()
+		if err != nil {
+			return nil, err
+		}
+		x, err := cut(signals.Channels(t, signals.Mix)[0], t.Rate(), passages)
+		if err := errors.Join(err, t.Close()); err != nil {
+			return nil, err
+		}
+		for at := t.Rate(); at > rate; at /= 2 {
+			if x, err = halve(x, at); err != nil {
+				return nil, err
+			}
+		}
+		return x, nil
+	}
+	return nil, render.ErrNoSound
+}
+
+// halve returns samples at half their rate.
+func halve(x []float64, rate float64) ([]float64, error) {
+	const edge = 0.98 / 4 // of the rate; 1 % above it nothing is left
+	n := (len(x) + 1) / 2
+	samples := signals.Samples(x)
+	split := resample.NewSplit(&samples, rate, edge*rate, 0)
+	low, high := make([]float64, 2*n), make([]float64, 2*n)
+	if _, err := split.Read(low, high); err != nil && !errors.Is(err, io.EOF) {
+		return nil, err
+	}
+	for i := range n {
+		low[i] = low[2*i]
+	}
+	return low[:n], nil
+}
+
+// cut takes the passages out of a stream, one after another. They begin and end softly where they do not with the track.
+func cut(s signals.Stream, rate float64, passages [][2]float64) ([]float64, error) {
+	var all []float64
+	block := make([]float64, 4096)
+	at := 0     // the block's first sample
+	begun := -1 // where in all the passage began
+	for len(passages) > 0 {
+		n, err := s.Read(block)
+		if err != nil && !errors.Is(err, io.EOF) {
+			return nil, err
+		}
+		for i, v := range block[:n] {
+			for len(passages) > 0 && at+i >= int(math.Round(passages[0][1]*rate)) {
+				if begun >= 0 {
+					soften(all[begun:], passages[0][0] > 0, true, rate)
+				}
+				passages, begun = passages[1:], -1
+			}
+			if len(passages) == 0 {
+				return all, nil
+			}
+			if at+i >= int(math.Round(passages[0][0]*rate)) {
+				if begun < 0 {
+					begun = len(all)
+				}
+				all = append(all, v)
+			}
+		}
+		at += n
+		if err != nil {
+			if begun >= 0 {
+				soften(all[begun:], passages[0][0] > 0, false, rate)
+			}
+			break
+		}
+	}
+	return all, nil
+}
+
+// soften fades a passage in and out.
+func soften(x []float64, in, out bool, rate float64) {
+	n := min(int(fade*rate), len(x)/2)
+	for i := range n {
+		gain := (float64(i) + 0.5) / float64(n)
+		if in {
+			x[i] *= gain
+		}
+		if out {
+			x[len(x)-1-i] *= gain
+		}
+	}
+}
+
+// loudness returns the gains in dB that bring sounds to one A-weighted level, the track and heard, which are the first
+// two, to the same; no peak goes beyond listenPeak.
+func loudness(samples [][]float64, sounds []report.PlayerSound) []float64 {
+	type measured struct{ level, most float64 }
+	var all []measured
+	target := float64(listenLevel)
+	for i, x := range samples {
+		m := level.NewMeter(sounds[i].Rate)
+		m.Write(x)
+		r := m.Result()
+		one := measured{r.A, math.Min(listenPeak-r.Peak, mostGain)}
+		if math.IsInf(r.A, -1) {
+			one = measured{listenLevel, 0} // silence stays as it is
+		} else if i < 2 {
+			target = math.Min(target, one.level+one.most)
+		}
+		all = append(all, one)
+	}
+	var gains []float64
+	for _, m := range all {
+		gains = append(gains, math.Min(target-m.level, m.most))
+	}
+	return gains
+}
+
+// codesOf returns samples under a gain as 16-bit codes.
+func codesOf(x []float64, gain float64) []int16 {
+	codes := make([]int16, len(x))
+	for i, v := range x {
+		codes[i] = int16(math.Round(math.Max(-1, math.Min(1, v*gain)) * math.MaxInt16))
+	}
+	return codes
+}
