@@ -221,7 +221,7 @@ func (c *Compiled) compileLaws(n *Network, at Operating, rate float64) {
 		l.low, l.high = l.lowRail+a.LowMargin-e, l.hiRail-a.HighMargin-e
 		l.middle = (l.lowRail+l.hiRail)/2 - e
 		if e <= low || e >= high {
-			l.residual = at.Volts[a.Plus] - at.Volts[a.Minus] + a.Offset - (e-(low+high)/2)*leak
+			l.residual = a.senseAt(at.Volts) + a.Offset - e*leak + leakOf(leak, low, high)
 			c.residual = c.residual || l.residual != 0
 		}
 		// The rails carry Vref, and through the finite gain a little of their movement into the sense.
@@ -243,6 +243,15 @@ func (c *Compiled) compileLaws(n *Network, at Operating, rate float64) {
 		c.diodes = append(c.diodes, diodeLaw{forward: d.Forward - v + d.Resistance*rest, resist: d.Resistance, off: -rest, conducts: rest > 0})
 		i++
 	}
+}
+
+// senseAt returns v+ − v− with all its terms.
+func (a *Amplifier) senseAt(volts []float64) float64 {
+	sum := volts[a.Plus] - volts[a.Minus]
+	for _, t := range a.Terms {
+		sum += t.Gain * volts[t.Node]
+	}
+	return sum
 }
 
 // limits returns the limits of e with the rails at the given voltages.

@@ -43,6 +43,13 @@ type Amplifier struct {
 	HighRail, LowRail     int     // driven nodes, or ground
 	HighMargin, LowMargin float64 // V
 	Offset                float64 // V
+	Terms                 []Term  // what else adds to v+ − v−
+}
+
+// Term is a share of a node's voltage.
+type Term struct {
+	Node int
+	Gain float64
 }
 
 // Capsule is an electret capsule's transistor: it draws Current + u[Signal] from Drain to ground, never less than
@@ -135,6 +142,9 @@ func (n *Network) check() {
 		node(a.Plus, a.Minus, a.Out)
 		if !rail[a.HighRail] || !rail[a.LowRail] {
 			panic("bilinear: amplifier's rail is not driven")
+		}
+		for _, t := range a.Terms {
+			node(t.Node)
 		}
 		if a.OutputResistance == 0 {
 			if rail[a.Out] {

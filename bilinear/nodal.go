@@ -187,11 +187,16 @@ func (n *Network) sense(m mat.Matrix) *mat.Dense {
 	k := 0
 	put := func(plus, minus int) {
 		for j := range width {
-			s.Set(k, j, m.At(plus, j)-m.At(minus, j))
+			s.Set(k, j, s.At(k, j)+m.At(plus, j)-m.At(minus, j))
 		}
 		k++
 	}
 	for _, a := range n.Amplifiers {
+		for _, t := range a.Terms {
+			for j := range width {
+				s.Set(k, j, s.At(k, j)+t.Gain*m.At(t.Node, j))
+			}
+		}
 		put(a.Plus, a.Minus)
 	}
 	for _, c := range n.Capsules {

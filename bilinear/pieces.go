@@ -72,8 +72,8 @@ func (l *law) proper(p Piece, e, s float64) Piece {
 			if s < l.floor-slack*(1+math.Abs(l.floor)) {
 				return Saturated
 			}
-		case CutOff: // it belongs here while it asks for no more than nothing
-			if l.num > l.least {
+		case CutOff: // it belongs here while it asks for no more than nothing, or its drain lies too low to draw
+			if l.num > l.least && s > l.floor {
 				return Linear
 			}
 		case Saturated: // while it asks for more than the drain can give

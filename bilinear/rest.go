@@ -56,10 +56,10 @@ func (n *Network) restLaws(volts, u []float64) (laws []law, s0 []float64) {
 		low, high := a.limits(volts[a.LowRail], volts[a.HighRail])
 		leak := 1 / a.OpenLoopGain
 		laws = append(laws, law{
-			kind: amplifierElement, den: leak, num: a.Offset + leak*(low+high)/2,
+			kind: amplifierElement, den: leak, num: a.Offset + leakOf(leak, low, high),
 			low: low, high: high, down: math.Inf(-1), up: math.Inf(1),
 		})
-		s0 = append(s0, volts[a.Plus]-volts[a.Minus])
+		s0 = append(s0, a.senseAt(volts))
 	}
 	for _, c := range n.Capsules {
 		laws = append(laws, law{kind: capsuleElement, num: c.Current + u[c.Signal], floor: c.Minimum})
@@ -70,4 +70,12 @@ func (n *Network) restLaws(volts, u []float64) (laws []law, s0 []float64) {
 		s0 = append(s0, volts[d.Anode]-volts[d.Cathode])
 	}
 	return laws, s0
+}
+
+// leakOf is what the middle between the limits adds to an amplifier's sense; without a leak its limits may be infinite.
+func leakOf(leak, low, high float64) float64 {
+	if leak == 0 {
+		return 0
+	}
+	return leak * (low + high) / 2
 }

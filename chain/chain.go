@@ -26,8 +26,10 @@ type Chain struct {
 
 // Supply is the one supply that feeds the dividers and every amplifier.
 type Supply struct {
-	Voltage float64 // V, 0.5 to 60; the amplifiers' supply, too
-	Pos     Pos
+	Voltage    float64 // V, 0.5 to 60; the amplifiers' supply, too
+	Resistance float64 // Ω, 0 to 10k, between the supply and what it feeds but the amplifiers' own pins
+	Noise      float64 // V/√Hz, 0 to 1e-3, white
+	Pos        Pos
 }
 
 // Conditions are those the chain works in.
@@ -130,7 +132,31 @@ type Stage struct {
 	Leg       string   // non-inverting: "ground", also where not given, or "bias", where r_g ends; else empty
 	To        string   // rc high-pass and divider: "ground", also where not given, or "bias"; else empty
 	Pick      string   // select: the one of From that is passed on
-	Pos       Pos
+
+	// clamp
+	Forward            float64 // V, 0 to 2, at which a diode begins to conduct
+	ToSupply, ToGround bool    // which diodes there are
+
+	// transfer function, coefficients in s, highest first
+	Numerator, Denominator []float64
+
+	// network
+	Branches []Branch
+	Uses     []Use
+
+	Pos Pos
+}
+
+// Branch is a part of a network stage, between two of its nodes.
+type Branch struct {
+	Part    Part
+	Between [2]string
+}
+
+// Use is an amplifier of a network stage, at its nodes.
+type Use struct {
+	Amplifier           string // name of an entry in Chain.Amplifiers
+	Plus, Minus, Output string
 }
 
 // Part returns the stage's part with the given key, and whether it is there.
@@ -173,7 +199,7 @@ type Converter struct {
 type Interferer struct {
 	Into      string  // an input's name, or "supply"
 	Frequency float64 // Hz, 0.01 to 1e7; 0 for noise from DC
-	Shape     string  // "sine", also where not given, "square" or "noise"
+	Shape     string  // "sine", also where not given, "square", "saw" or "noise"
 	// Level is the peak for a sine or a square and the RMS for noise: volts at a line input or the
 	// supply, pascals at a microphone.
 	Level     float64

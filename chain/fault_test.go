@@ -161,15 +161,11 @@ func TestFaults(t *testing.T) {
 		{"a key of another kind of input", []string{line, line + "\n§sensitivity = \"-42dBV/Pa\""}, []string{`input "aux" takes no "sensitivity"; the keys are kind, channel, full_scale, source_resistance`}},
 		{"keys that are not there yet", []string{
 			`title = "Test"`, "§clamp = 1\n[§tolerance]\nresistors = \"1%\"",
-			"voltage = \"5V\"", "voltage = \"5V\"\n§ripple = []\n§resistance = 1\n§noise = 1",
 			`r_1 = "10k"`, `r_1 = { value = "10k", §tolerance = "1%" }`,
-			`class = "cmos rail-to-rail"`, "class = \"cmos rail-to-rail\"\n§phase_margin = 60\n§supply_rejection = \"80dB\"\n§supply_rejection_corner = 100",
 			line, line + "\n§calibrate = 1",
 		}, []string{
 			`the chain file takes no "clamp"; the keys are title, notes, supply, conditions, bias, amplifier, input, stage, converter, interferer, limits`,
 			`the chain file takes no "tolerance"; the keys are title, notes, supply, conditions, bias, amplifier, input, stage, converter, interferer, limits`,
-			`[supply] takes no "ripple"; the keys are voltage`, `[supply] takes no "resistance"; the keys are voltage`, `[supply] takes no "noise"; the keys are voltage`,
-			`amplifier "dual" takes no "phase_margin"; the keys are class, gain_bandwidth, `, `amplifier "dual" takes no "supply_rejection"; the keys are class, gain_bandwidth, `, `amplifier "dual" takes no "supply_rejection_corner"; the keys are class, gain_bandwidth, `,
 			`input "aux" takes no "calibrate"; the keys are kind, channel, full_scale, source_resistance`,
 			`r_1 takes no "tolerance"; the keys are value, ref, series`,
 		}},
@@ -185,7 +181,6 @@ func TestFaults(t *testing.T) {
 		{"a class that is none", []string{`class = "cmos rail-to-rail"`, `class = §"cmos rail-to-rial"`}, []string{`class must be one of "bipolar single-supply", "bipolar audio", "cmos rail-to-rail", "cmos micropower", "ideal"; did you mean "cmos rail-to-rail"?`}},
 		{"a kind of input that is none", []string{`kind = "line"`, `kind = §"lines"`}, []string{`kind must be one of "line", "electret", "microphone"; did you mean "line"?`}},
 		{"a kind of stage that is none", []string{`kind = "sallen-key low-pass"`, `kind = §"sallen-key lowpass"`}, []string{`kind must be one of "inverting", `}},
-		{"a kind that is not there yet", []string{`kind = "sallen-key low-pass"`, `kind = §"network"`}, []string{`kind must be one of "inverting", `}},
 		{"a channel that is none", []string{line, line + "\nchannel = §\"left\""}, []string{`channel: "left" is no channel; write 1, 2, … without quotes, or "mix"`}},
 		{"channel 0", []string{line, line + "\nchannel = §0"}, []string{`channel must be a number from 1 to 64; write it without quotes and unit`}},
 		{"a leg that is none", []string{`c_g = "10u"`, "c_g = \"10u\"\nleg = §\"earth\""}, []string{`leg must be one of "ground", "bias"; choose one`}},

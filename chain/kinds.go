@@ -31,6 +31,10 @@ type Kind struct {
 	Leg   bool // takes leg = "ground" | "bias"
 	To    bool // takes to = "ground" | "bias"
 	Pick  bool // takes from = […] and pick
+
+	Diodes      bool // takes forward, to_supply and to_ground
+	Polynomials bool // takes numerator and denominator
+	Own         bool // takes [[stage.part]] and [[stage.amplifier]]
 }
 
 // Kinds returns every kind of stage; the caller may change what it gets.
@@ -98,6 +102,19 @@ func Kinds() []*Kind {
 			Name: "passive sum", Legs: true,
 			Parts:      []PartKey{maybe(r("r_load"))},
 			Connection: "each leg from – c – r – output, r_load from the output to ground",
+		},
+		{
+			Name: "clamp", Diodes: true,
+			Parts:      []PartKey{r("r")},
+			Connection: "from – r – output, diodes from the output to the supply and from ground to the output",
+		},
+		{
+			Name: "transfer function", Amplifier: Must, Bias: May, Polynomials: true,
+			Connection: "from, against the bias or ground, through the function of s to the output, with the amplifier's limits",
+		},
+		{
+			Name: "network", Bias: May, Own: true,
+			Connection: "parts and amplifiers between the nodes in, out, supply, ground, bias and those of your own",
 		},
 		{
 			Name: "select", Pick: true,

@@ -60,8 +60,15 @@ func (r *reader) chain(root *node) *Chain {
 	c := &Chain{File: r.file, Conditions: Conditions{Temperature: 298.15, NoiseFrom: 20}}
 	t := r.table(root, "the chain file")
 	c.Title, c.Notes = t.text("title", May), t.text("notes", May)
+	var ripples []Interferer
 	if s := t.sub("supply", Must); s != nil {
 		c.Supply = Supply{Pos: s.node.at.pos, Voltage: s.si("voltage", Must, quantity.Voltage, 0.5, 60, 0)}
+		c.Supply.Resistance = s.si("resistance", May, quantity.Resistance, 0, 1e4, 0)
+		c.Supply.Noise = s.si("noise", May, quantity.NoiseVoltage, 0, 1e-3, 0)
+		for _, ripple := range s.list("ripple", May) {
+			ripple.name = "[supply], " + ripple.name
+			ripples = append(ripples, ripple.ripple())
+		}
 		s.done()
 	}
 	if s := t.sub("conditions", May); s != nil {
@@ -85,6 +92,7 @@ func (r *reader) chain(root *node) *Chain {
 	for _, s := range t.list("interferer", May) {
 		c.Interferers = append(c.Interferers, s.interferer(c))
 	}
+	c.Interferers = append(c.Interferers, ripples...)
 	if s := t.sub("limits", May); s != nil {
 		c.Limits = s.limits()
 	}
@@ -201,6 +209,8 @@ func (t *table) amplifier(name string, supply float64) Amplifier {
 		{"noise_current", quantity.NoiseCurrent, 0, 1e-8, &m.NoiseCurrent},
 		{"noise_current_corner", quantity.Frequency, 0, 1e6, &m.NoiseCurrentCorner},
 		{"phase_margin", quantity.Angle, 5, 90, &m.PhaseMargin},
+		{"supply_rejection", quantity.Ratio, 1, 1e8, &m.SupplyRejection},
+		{"supply_rejection_corner", quantity.Frequency, 0.1, 1e8, &m.SupplyRejectionCorner},
 	} {
 		if v, ok := t.quantity(k.key, May, k.kind, k.low, k.high); ok {
 			*k.into = v.SI
@@ -335,6 +345,15 @@ func (t *table) stage() (s Stage, ok bool) {
 			s.Parts = append(s.Parts, *p)
 		}
 	}
+	if k.Diodes {
+		t.diodes(&s)
+	}
+	if k.Polynomials {
+		t.polynomials(&s)
+	}
+	if k.Own {
+		t.own(&s)
+	}
 	if k.Leg {
 		s.Leg, _ = t.choice("leg", May, "ground", "ground", "bias")
 	}
@@ -344,6 +363,142 @@ func (t *table) stage() (s Stage, ok bool) {
 	t.done()
 	t.partsGoTogether(&s)
 	return s, true
+}
+
+// diodes reads what a clamp has beside its resistor.
+func (t *table) diodes(s *Stage) {
+	s.Forward = t.si("forward", Must, quantity.Voltage, 0, 2, 0)
+	s.ToSupply, s.ToGround = t.flag("to_supply"), t.flag("to_ground")
+	if !s.ToSupply && !s.ToGround {
+		t.fault(t.node.at, t.name+" has no diode", "add to_supply = true or to_ground = true")
+	}
+}
+
+// flag reads true or false; an absent one is false.
+func (t *table) flag(key string) bool {
+	e := t.find(key, May)
+	if e == nil {
+		return false
+	}
+	if e.text != "true" && e.text != "false" || e.shape == listShape || e.shape == tableShape {
+		t.wrong(e, key+" must be true or false", "write one of them without quotes")
+	}
+	return e.text == "true"
+}
+
+// highestOrder is the highest order of a transfer function.
+const highestOrder = 12
+
+// polynomials reads a transfer function.
+func (t *table) polynomials(s *Stage) {
+	s.Numerator, s.Denominator = t.coefficients("numerator"), t.coefficients("denominator")
+	if s.Numerator == nil || s.Denominator == nil {
+		return
+	}
+	if len(s.Numerator) > len(s.Denominator) {
+		t.wrong(t.get("numerator"), "the numerator is of a higher order than the denominator: no amplifier does that", "raise the denominator's order")
+	}
+	if s.Denominator[len(s.Denominator)-1] == 0 {
+		t.wrong(t.get("denominator"), "the denominator has a root at 0: the stage has no rest point", "end it in a number other than 0")
+	}
+}
+
+// coefficients reads a list of numbers, of which the first is not 0.
+func (t *table) coefficients(key string) []float64 {
+	e := t.find(key, Must)
+	if e == nil {
+		return nil
+	}
+	if e.shape != listShape || len(e.items) == 0 || len(e.items) > highestOrder+1 {
+		t.wrong(e, fmt.Sprintf("%s must be a list of 1 to %d numbers", key, highestOrder+1), "write the coefficients of s, highest first")
+		return nil
+	}
+	var list []float64
+	for _, item := range e.items {
+		x, err := parseNumber(item.text)
+		if item.shape != numberShape || err != nil || math.Abs(x) > 1e100 {
+			t.fault(item.at, fmt.Sprintf("%s has an entry that is no number", key), "write the coefficients of s, highest first")
+			return nil
+		}
+		list = append(list, x)
+	}
+	if list[0] == 0 {
+		t.wrong(e, fmt.Sprintf("the first coefficient of the %s is 0", key), "leave it out")
+		return nil
+	}
+	return list
+}
+
+// own reads the parts and amplifiers of a network.
+func (t *table) own(s *Stage) {
+	count := map[Unit]int{}
+	letters := map[Unit]string{Ohm: "r", Farad: "c"}
+	for _, p := range t.list("part", Must) {
+		p.name = t.name + ", " + p.name
+		if p.has("r") == p.has("c") {
+			t.fault(p.node.at, p.name+" must have either r or c", "give one of them")
+		}
+		unit := Ohm
+		if p.has("c") {
+			unit = Farad
+		}
+		part := p.part(s.Name, letters[unit], unit, May)
+		between := p.nodes()
+		p.done()
+		if part == nil {
+			continue
+		}
+		count[unit]++
+		part.Key = fmt.Sprintf("%s_%d", letters[unit], count[unit])
+		part.Name = s.Name + "." + part.Key
+		s.Branches = append(s.Branches, Branch{*part, between})
+	}
+	for _, a := range t.list("amplifier", May) {
+		a.name = t.name + ", " + a.name
+		u := Use{Amplifier: a.refer("use", Must, nil, anAmplifier), Plus: a.text("plus", Must), Minus: a.text("minus", Must), Output: a.text("output", Must)}
+		if slices.Contains([]string{"in", "supply", "ground", "bias"}, u.Output) {
+			t.wrong(a.get("output"), a.name+" drives "+u.Output+", which has its own voltage", "let it drive out or a node of your own")
+		}
+		a.done()
+		s.Uses = append(s.Uses, u)
+	}
+	touched := func(node string) bool {
+		for _, b := range s.Branches {
+			if b.Between[0] == node || b.Between[1] == node {
+				return true
+			}
+		}
+		for _, u := range s.Uses {
+			if u.Plus == node || u.Minus == node || u.Output == node {
+				return true
+			}
+		}
+		return false
+	}
+	for _, node := range [...]string{"in", "out"} {
+		if !touched(node) {
+			t.fault(t.node.at, fmt.Sprintf("%s has nothing at its node %q", t.name, node), "connect a part to it")
+		}
+	}
+	if touched("bias") && !t.has("bias") {
+		t.fault(t.node.at, t.name+" uses the node \"bias\" and has no bias", "add bias")
+	}
+	if t.has("bias") && !touched("bias") {
+		t.fault(t.get("bias").keyAt, t.name+" has a bias on which nothing ends", "take it out")
+	}
+}
+
+// nodes reads between = [NODE, NODE].
+func (t *table) nodes() (between [2]string) {
+	e := t.find("between", Must)
+	if e == nil {
+		return between
+	}
+	if e.shape != listShape || len(e.items) != 2 || e.items[0].shape != textShape || e.items[1].shape != textShape || e.items[0].text == e.items[1].text || e.items[0].text == "" || e.items[1].text == "" {
+		t.wrong(e, "between must be two nodes", `write it as between = ["in", "out"]`)
+		return between
+	}
+	return [2]string{e.items[0].text, e.items[1].text}
 }
 
 // legs reads the [[stage.input]] of a stage.
@@ -416,7 +571,7 @@ func (t *table) partsGoTogether(s *Stage) {
 			t.fault(t.get(pair[0]).keyAt, fmt.Sprintf("%s has %s without %s", t.name, pair[0], pair[1]), "give both, or neither for a gain of 1")
 		}
 	}
-	if k.Bias != May {
+	if k.Bias != May || k.Own || k.Polynomials {
 		return
 	}
 	var could []string // what may end on the bias
@@ -535,6 +690,32 @@ func (t *table) span(cv *Converter, supply float64) {
 	}
 }
 
+// ripple reads a ripple of the supply, which is an interferer into it.
+func (t *table) ripple() Interferer {
+	x := Interferer{Pos: t.node.at.pos, Into: "supply"}
+	x.Frequency = t.si("frequency", Must, quantity.Frequency, 0.01, 1e7, 0)
+	x.Shape, _ = t.choice("shape", May, "sine", "sine", "square", "saw")
+	if v, ok := t.quantity("level", Must, quantity.Level, 1e-9, 60); ok {
+		x.Level = peakOf(v, x.Shape)
+	}
+	t.done()
+	return x
+}
+
+// peakOf returns the peak of a wave of the shape at a level. What is written as a peak is one whatever the shape; the RMS
+// of a square is its peak, that of a saw its peak by √3.
+func peakOf(v quantity.Value, shape string) float64 {
+	if v.Unit != "Vp" && v.Unit != "Vpp" {
+		switch shape {
+		case "square":
+			return v.SI
+		case "saw":
+			return v.SI * math.Sqrt(3)
+		}
+	}
+	return v.Peak()
+}
+
 func (t *table) interferer(c *Chain) Interferer {
 	x := Interferer{Pos: t.node.at.pos}
 	x.Into = t.refer("into", Must, []string{"supply"}, anInput)
@@ -558,15 +739,14 @@ func (t *table) interferer(c *Chain) Interferer {
 		return x
 	}
 	if v, ok := t.quantity("level", Must, kind, low, high); ok {
-		// What is written as a peak is one whatever the shape. A square's RMS is its peak, too.
 		peak := v.Unit == "Vp" || v.Unit == "Vpp"
 		switch {
 		case noise && peak:
 			t.wrong(t.get("level"), "noise has no peak", `give its level as RMS, as in "2mVrms"`)
-		case noise, x.Shape == "square" && !peak:
+		case noise:
 			x.Level = v.SI
 		default:
-			x.Level = v.Peak()
+			x.Level = peakOf(v, x.Shape)
 		}
 	}
 	t.done()

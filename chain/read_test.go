@@ -135,6 +135,7 @@ func TestEveryKeyIsRead(t *testing.T) {
 		"GainBandwidth": 8e6, "OpenLoopGain": 1e5, "SlewRate": 3e6, "SwingHigh": 1.2, "SwingLow": 1.1, "SwingLoad": 2e3,
 		"OutputResistance": 50, "CurrentSource": 20e-3, "CurrentSink": 15e-3, "CommonModeHigh": 1.4, "CommonModeLow": 1.3,
 		"Offset": -1e-3, "BiasCurrent": -100e-9, "NoiseVoltage": 6e-9, "NoiseVoltageCorner": 30, "NoiseCurrent": 0.5e-12, "NoiseCurrentCorner": 120,
+		"PhaseMargin": 55, "SupplyRejection": 1e4, "SupplyRejectionCorner": 200,
 	}
 	for i := range m.NumField() {
 		if name := m.Type().Field(i).Name; name != "Class" {

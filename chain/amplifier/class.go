@@ -11,32 +11,32 @@ func classes() []Model {
 			SwingHigh: 1.5, SwingLow: 20e-3, SwingLoad: 10e3, OutputResistance: 200,
 			CurrentSource: 20e-3, CurrentSink: 8e-3, CommonModeHigh: 1.5, CommonModeLow: 0,
 			Offset: 0, BiasCurrent: -20e-9,
-			NoiseVoltage: 40e-9, NoiseVoltageCorner: 20, NoiseCurrent: 0.2e-12, NoiseCurrentCorner: 200, PhaseMargin: 60,
+			NoiseVoltage: 40e-9, NoiseVoltageCorner: 20, NoiseCurrent: 0.2e-12, NoiseCurrentCorner: 200, PhaseMargin: 60, SupplyRejection: 1e5, SupplyRejectionCorner: 10,
 		},
 		{
 			Class: "bipolar audio", GainBandwidth: 10e6, OpenLoopGain: 1e5, SlewRate: 5e6,
 			SwingHigh: 1.5, SwingLow: 1.5, SwingLoad: 2e3, OutputResistance: 60,
 			CurrentSource: 30e-3, CurrentSink: 30e-3, CommonModeHigh: 1.5, CommonModeLow: 1.5,
 			Offset: 0, BiasCurrent: 200e-9,
-			NoiseVoltage: 5e-9, NoiseVoltageCorner: 20, NoiseCurrent: 0.7e-12, NoiseCurrentCorner: 100, PhaseMargin: 60,
+			NoiseVoltage: 5e-9, NoiseVoltageCorner: 20, NoiseCurrent: 0.7e-12, NoiseCurrentCorner: 100, PhaseMargin: 60, SupplyRejection: 1e5, SupplyRejectionCorner: 100,
 		},
 		{
 			Class: "cmos rail-to-rail", GainBandwidth: 5e6, OpenLoopGain: 1e5, SlewRate: 3e6,
 			SwingHigh: 20e-3, SwingLow: 20e-3, SwingLoad: 10e3, OutputResistance: 300,
 			CurrentSource: 20e-3, CurrentSink: 20e-3, CommonModeHigh: -0.1, CommonModeLow: -0.1,
 			Offset: 0, BiasCurrent: 1e-12,
-			NoiseVoltage: 12e-9, NoiseVoltageCorner: 500, NoiseCurrent: 1e-15, NoiseCurrentCorner: 0, PhaseMargin: 60,
+			NoiseVoltage: 12e-9, NoiseVoltageCorner: 500, NoiseCurrent: 1e-15, NoiseCurrentCorner: 0, PhaseMargin: 60, SupplyRejection: 3e4, SupplyRejectionCorner: 100,
 		},
 		{
 			Class: "cmos micropower", GainBandwidth: 150e3, OpenLoopGain: 1e5, SlewRate: 0.08e6,
 			SwingHigh: 20e-3, SwingLow: 20e-3, SwingLoad: 50e3, OutputResistance: 2e3,
 			CurrentSource: 3e-3, CurrentSink: 3e-3, CommonModeHigh: -0.1, CommonModeLow: -0.1,
 			Offset: 0, BiasCurrent: 1e-12,
-			NoiseVoltage: 60e-9, NoiseVoltageCorner: 100, NoiseCurrent: 1e-15, NoiseCurrentCorner: 0, PhaseMargin: 65,
+			NoiseVoltage: 60e-9, NoiseVoltageCorner: 100, NoiseCurrent: 1e-15, NoiseCurrentCorner: 0, PhaseMargin: 65, SupplyRejection: 3e4, SupplyRejectionCorner: 10,
 		},
 		{
 			Class: "ideal", GainBandwidth: inf, OpenLoopGain: inf, SlewRate: inf, SwingLoad: inf,
-			CurrentSource: inf, CurrentSink: inf, CommonModeHigh: -inf, CommonModeLow: -inf, PhaseMargin: 90,
+			CurrentSource: inf, CurrentSink: inf, CommonModeHigh: -inf, CommonModeLow: -inf, PhaseMargin: 90, SupplyRejection: inf, SupplyRejectionCorner: inf,
 		},
 	}
 }

@@ -22,16 +22,27 @@ type Network struct {
 	Capacitors []Component // farads
 	Amplifiers []Amplifier
 	Inputs     []Input // in the order of the chain's inputs
-	Supply     int     // node of the supply
-	Output     int     // node that the converter samples
-	stages     []int   // output node of each of the chain's stages
-	biases     []int   // node of each of the chain's biases
+	Diodes     []Diode
+	Supply     int   // node of the supply, behind its resistance
+	feed       int   // node that the supply's voltage is set at; Supply where it has no resistance
+	Output     int   // node that the converter samples
+	stages     []int // output node of each of the chain's stages
+	biases     []int // node of each of the chain's biases
 }
 
 // Component is a resistor or a capacitor between two nodes.
 type Component struct {
 	Part chain.Part // Value is above 0 and finite
 	A, B int        // nodes
+	// Virtual is set on what stands for no component: it has no noise.
+	Virtual bool
+}
+
+// Diode is a diode of a clamp.
+type Diode struct {
+	Stage          int // index of the stage
+	Anode, Cathode int
+	Forward        float64 // V
 }
 
 // Amplifier is an amplifier between its nodes.
@@ -39,8 +50,11 @@ type Amplifier struct {
 	Name             string // the stage, or the bias it buffers
 	Stage            int    // index of the stage; -1 for a bias buffer
 	Model            amplifier.Model
-	Plus, Minus, Out int     // nodes
-	Low, High        float64 // V, limits of the internal source at the nominal supply
+	Plus, Minus, Out int             // nodes
+	Low, High        float64         // V, limits of the internal source at the nominal supply
+	Terms            []bilinear.Term // what else adds to v+ − v−
+	// Virtual is set on what stands for no amplifier: the integrators of a transfer function.
+	Virtual bool
 }
 
 // Input is where one of the chain's inputs feeds the network.
@@ -67,6 +81,11 @@ func New(c *chain.Chain) *Network {
 		named:   map[string]int{},
 	}
 	w.Supply = w.node("supply")
+	w.feed = w.Supply
+	if r := c.Supply.Resistance; r > 0 {
+		w.feed = w.node("supply source")
+		w.resistor(chain.Part{Name: "supply.resistance", Key: "resistance", Unit: chain.Ohm, Value: r, Pos: c.Supply.Pos}, w.feed, w.Supply)
+	}
 	w.wireBiases()
 	w.wireInputs()
 	w.wireStages()
@@ -109,7 +128,7 @@ func (n *Network) NodeOf(name string) (int, bool) {
 // Description returns the network for [bilinear.Compile]. Its inputs are those that [SupplyInput] and
 // [SoundInput] number.
 func (n *Network) Description() bilinear.Network {
-	d := bilinear.Network{Nodes: len(n.Nodes), Drives: []int{n.Supply}}
+	d := bilinear.Network{Nodes: len(n.Nodes), Drives: []int{n.feed}}
 	for _, r := range n.Resistors {
 		d.Resistors = append(d.Resistors, bilinear.Branch{A: r.A, B: r.B, Value: r.Part.Value})
 	}
@@ -128,12 +147,24 @@ func (n *Network) Description() bilinear.Network {
 			Plus: a.Plus, Minus: a.Minus, Out: a.Out,
 			GainBandwidth: m.GainBandwidth, OpenLoopGain: m.OpenLoopGain,
 			OutputResistance: m.OutputResistance, SlewRate: m.SlewRate,
-			HighRail: n.Supply, LowRail: Ground,
+			HighRail: n.feed, LowRail: Ground,
 			HighMargin: n.Chain.Supply.Voltage - a.High, LowMargin: a.Low,
-			Offset: m.Offset,
+			// The supply's rejection is of its changes.
+			Offset: m.Offset - a.rejection()*n.Chain.Supply.Voltage, Terms: a.Terms,
 		})
 	}
+	for _, x := range n.Diodes {
+		d.Diodes = append(d.Diodes, bilinear.Diode{Anode: x.Anode, Cathode: x.Cathode, Forward: x.Forward})
+	}
 	return d
+}
+
+// rejection is what of the supply's voltage stands at the amplifier's input.
+func (a *Amplifier) rejection() float64 {
+	if a.Virtual {
+		return 0
+	}
+	return 1 / a.Model.SupplyRejection
 }
 
 // RestInputs returns u with the supply at its voltage and every input silent.

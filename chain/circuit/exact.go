@@ -80,6 +80,11 @@ func (n *Network) equations(f float64) matrix {
 		if a.Minus != Ground {
 			m.add(row, a.Minus-1, 1)
 		}
+		for _, t := range a.Terms {
+			if t.Node != Ground {
+				m.add(row, t.Node-1, complex(-t.Gain, 0))
+			}
+		}
 		if ro := a.Model.OutputResistance; ro > 0 {
 			m.add(a.Out-1, a.Out-1, complex(1/ro, 0))
 			m.add(a.Out-1, row, complex(-1/ro, 0))
@@ -105,7 +110,7 @@ func (n *Network) equations(f float64) matrix {
 // driveNode returns the node that input u of the network sets.
 func (n *Network) driveNode(u int) int {
 	if u == SupplyInput {
-		return n.Supply
+		return n.feed
 	}
 	return n.Inputs[u-1].Drive
 }

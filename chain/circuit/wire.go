@@ -4,7 +4,9 @@ import (
 	"fmt"
 	"math"
 
+	"midrail/bilinear"
 	"midrail/chain"
+	"midrail/chain/amplifier"
 )
 
 // wiring is a network under construction.
@@ -29,7 +31,29 @@ func (w *wiring) capacitor(p chain.Part, a, b int) {
 func (w *wiring) amplifier(owner string, stage int, entry string, plus, minus, out int) {
 	a := w.Chain.AmplifierNamed(entry)
 	low, high := a.Model.Limits(w.Chain.Supply.Voltage)
-	w.Amplifiers = append(w.Amplifiers, Amplifier{Name: owner, Stage: stage, Model: a.Model, Plus: plus, Minus: minus, Out: out, Low: low, High: high})
+	one := Amplifier{Name: owner, Stage: stage, Model: a.Model, Plus: plus, Minus: minus, Out: out, Low: low, High: high}
+	one.Terms = w.rejection(owner, a.Model)
+	w.Amplifiers = append(w.Amplifiers, one)
+}
+
+// rejection returns what of the supply stands at an amplifier's input: 1/SupplyRejection of it, rising from its corner
+// fc on until all of it does, at fh = SupplyRejection·fc. The rise is the supply through a capacitor onto a resistor:
+//
+//	(1/PSR)·(1 + s/ωc) up to fh,   s/ωc/PSR = s/ωh ≈ s·RC/(1 + s·RC)
+func (w *wiring) rejection(owner string, m amplifier.Model) []bilinear.Term {
+	if math.IsInf(m.SupplyRejection, 1) {
+		return nil
+	}
+	terms := []bilinear.Term{{Node: w.Supply, Gain: 1 / m.SupplyRejection}}
+	if math.IsInf(m.SupplyRejectionCorner, 1) {
+		return terms
+	}
+	const r = 1e3
+	slope := w.node(owner + " supply slope")
+	c := 1 / (2 * math.Pi * m.SupplyRejection * m.SupplyRejectionCorner * r)
+	w.Capacitors = append(w.Capacitors, Component{Part: chain.Part{Name: owner + " supply slope.c", Unit: chain.Farad, Value: c}, A: w.Supply, B: slope, Virtual: true})
+	w.Resistors = append(w.Resistors, Component{Part: chain.Part{Name: owner + " supply slope.r", Unit: chain.Ohm, Value: r}, A: slope, B: Ground, Virtual: true})
+	return append(terms, bilinear.Term{Node: slope, Gain: 1})
 }
 
 func (w *wiring) wireBiases() {
@@ -160,6 +184,9 @@ var wirings = map[string]func(*stageWiring){
 	"divider":                    wireDivider,
 	"biased coupling":            wireBiasedCoupling,
 	"passive sum":                wirePassiveSum,
+	"clamp":                      wireClamp,
+	"transfer function":          wireTransferFunction,
+	"network":                    wireNetwork,
 	"select":                     func(*stageWiring) {},
 }
 
@@ -169,7 +196,7 @@ func (w *stageWiring) bias() int { return w.named[w.s.Bias] }
 
 // end returns the node that "ground" or "bias" names in the stage; an empty word is ground.
 func (w *stageWiring) end(word string) int {
-	if word == "bias" {
+	if word == "bias" && w.s.Bias != "" {
 		return w.bias()
 	}
 	return Ground
@@ -330,4 +357,97 @@ func wireBiasedCoupling(w *stageWiring) {
 func wirePassiveSum(w *stageWiring) {
 	w.legs(w.out)
 	w.optionalR("r_load", w.out, Ground)
+}
+
+func wireClamp(w *stageWiring) {
+	w.r("r", w.from(), w.out)
+	if w.s.ToSupply {
+		w.Diodes = append(w.Diodes, Diode{Stage: w.index, Anode: w.out, Cathode: w.Supply, Forward: w.s.Forward})
+	}
+	if w.s.ToGround {
+		w.Diodes = append(w.Diodes, Diode{Stage: w.index, Anode: Ground, Cathode: w.out, Forward: w.s.Forward})
+	}
+}
+
+// wireTransferFunction wires a function of s as a chain of integrators in front of the stage's amplifier (the
+// controllable form). With p = s/ω0, ω0 = |a0/an|^(1/n), and coefficients αi, βi of p for an αn of 1:
+//
+//	xi' = ω0·x(i+1),   xn' = ω0·(u − Σ αi·x(i+1)),   y = Σ βi·x(i+1) + βn·(u − Σ αi·x(i+1))
+func wireTransferFunction(w *stageWiring) {
+	order := len(w.s.Denominator) - 1
+	a := make([]float64, order+1) // lowest first
+	b := make([]float64, order+1)
+	for i, x := range w.s.Denominator {
+		a[order-i] = x
+	}
+	for i, x := range w.s.Numerator {
+		b[len(w.s.Numerator)-1-i] = x
+	}
+	w0 := 1.
+	if order > 0 {
+		w0 = math.Pow(math.Abs(a[0]/a[order]), 1/float64(order))
+	}
+	top := a[order] * math.Pow(w0, float64(order))
+	for i := range a {
+		a[i] *= math.Pow(w0, float64(i)) / top
+		b[i] *= math.Pow(w0, float64(i)) / top
+	}
+	reference := w.end("bias")
+	if w.s.Bias == "" {
+		reference = Ground
+	}
+	sound := func(gain float64) []bilinear.Term {
+		return []bilinear.Term{{Node: w.from(), Gain: gain}, {Node: reference, Gain: -gain}}
+	}
+	x := make([]int, order)
+	for i := range x {
+		x[i] = w.inner(fmt.Sprintf("state %d", i+1))
+	}
+	output := append(sound(b[order]), bilinear.Term{Node: reference, Gain: 1})
+	for i := range x {
+		output = append(output, bilinear.Term{Node: x[i], Gain: b[i] - b[order]*a[i]})
+		integrator := Amplifier{
+			Name: w.s.Name + " state", Stage: -1, Out: x[i], Low: math.Inf(-1), High: math.Inf(1), Virtual: true,
+			Model: amplifier.Model{GainBandwidth: w0 / (2 * math.Pi), OpenLoopGain: math.Inf(1), SlewRate: math.Inf(1),
+				CurrentSource: math.Inf(1), CurrentSink: math.Inf(1), CommonModeHigh: math.Inf(-1), CommonModeLow: math.Inf(-1)},
+		}
+		if i+1 < order {
+			integrator.Terms = []bilinear.Term{{Node: x[i+1], Gain: 1}}
+		} else {
+			integrator.Terms = sound(1)
+			for j := range x {
+				integrator.Terms = append(integrator.Terms, bilinear.Term{Node: x[j], Gain: -a[j]})
+			}
+		}
+		w.Amplifiers = append(w.Amplifiers, integrator)
+	}
+	w.amp(Ground, w.out)
+	last := &w.Amplifiers[len(w.Amplifiers)-1]
+	last.Terms = append(last.Terms, output...)
+	// Its (+) is no pin that has a range.
+	last.Model.CommonModeHigh, last.Model.CommonModeLow = math.Inf(-1), math.Inf(-1)
+}
+
+func wireNetwork(w *stageWiring) {
+	nodes := map[string]int{"in": w.from(), "out": w.out, "supply": w.Supply, "ground": Ground, "bias": w.end("bias")}
+	at := func(name string) int {
+		if _, ok := nodes[name]; !ok {
+			nodes[name] = w.inner(name)
+		}
+		return nodes[name]
+	}
+	for _, b := range w.s.Branches {
+		if b.Part.Unit == chain.Ohm {
+			w.resistor(b.Part, at(b.Between[0]), at(b.Between[1]))
+		} else {
+			w.capacitor(b.Part, at(b.Between[0]), at(b.Between[1]))
+		}
+	}
+	for i, u := range w.s.Uses {
+		owner, stage := w.s.Name, w.index
+		if u.Output != "out" {
+			owner, stage = fmt.Sprintf("%s amplifier %d", w.s.Name, i+1), -1
+		}
+		w.amplifier(owner, stage, u.Amplifier, at(u.Plus), at(u.Minus), at(u.Output))
+	}
 }

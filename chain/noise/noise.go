@@ -55,6 +55,7 @@ const (
 	Current   Kind = "amplifier current"
 	Capsule   Kind = "capsule"
 	Converter Kind = "converter"
+	Supply    Kind = "supply"
 )
 
 // Source is one source of noise as the converter sees it.
@@ -139,6 +140,9 @@ func circuitSources(n *circuit.Network) []source {
 	var list []source
 	kT := 4 * Boltzmann * n.Chain.Conditions.Temperature
 	for _, r := range n.Resistors {
+		if r.Virtual {
+			continue
+		}
 		list = append(list, source{r.Part.Name, Thermal, func(_ float64, into circuit.Into) float64 {
 			return kT / r.Part.Value * power(into.Current(r.A, r.B))
 		}})
@@ -156,6 +160,11 @@ func circuitSources(n *circuit.Network) []source {
 				return m.NoiseCurrent * m.NoiseCurrent * (1 + m.NoiseCurrentCorner/f) * both
 			}})
 		}
+	}
+	if v := n.Chain.Supply.Noise; v > 0 {
+		list = append(list, source{"supply", Supply, func(_ float64, into circuit.Into) float64 {
+			return v * v * power(into.Input(circuit.SupplyInput))
+		}})
 	}
 	for i := range n.Chain.Inputs {
 		in := &n.Chain.Inputs[i]

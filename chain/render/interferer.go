@@ -58,6 +58,18 @@ func newInterferers(n *circuit.Network, plan Plan, seed uint64) []*interferer {
 				add(inBandPart, fine, g)
 				add(outOfBandPart, fine, negative{g})
 			}
+		case "saw":
+			// Rising, from −1 at half a period; its harmonics alternate: 2/π·Σ (−1)^(k+1)/k·sin.
+			add(outOfBandPart, true, saw{level: x.Level, cycles: x.Frequency / plan.Rate})
+			for k := 1; float64(k)*x.Frequency < half; k++ {
+				level := 2 / math.Pi / float64(k) * x.Level
+				if k%2 == 0 {
+					level = -level
+				}
+				g, fine := tone(float64(k)*x.Frequency, level)
+				add(inBandPart, fine, g)
+				add(outOfBandPart, fine, negative{g})
+			}
 		case "noise":
 			inBand, folded := splitNoise(x, plan.Rate, half, seed, uint64(i))
 			add(inBandPart, true, inBand)
@@ -134,6 +146,22 @@ func (s square) add(dst []float64, first int64) {
 		_, opposite := math.Modf(phase + 0.5)
 		v += edge(phase, s.cycles) - edge(opposite, s.cycles)
 		dst[i] += s.level * v
+	}
+}
+
+// saw is a rising saw that is 0 at step 0, its fall smoothed over two steps.
+type saw struct {
+	level  float64
+	cycles float64
+}
+
+func (s saw) add(dst []float64, first int64) {
+	for i := range dst {
+		_, phase := math.Modf(s.cycles*float64(first+int64(i)) + 0.5)
+		if phase < 0 {
+			phase++
+		}
+		dst[i] += s.level * (2*phase - 1 - edge(phase, s.cycles))
 	}
 }
 

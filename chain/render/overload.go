@@ -16,6 +16,7 @@ const (
 	Slew           EventKind = "slew"        // the slew rate
 	CutOff         EventKind = "cut off"     // a capsule's drain current reached 0
 	Saturated      EventKind = "saturated"   // a capsule's drain reached its lowest voltage
+	Clamped        EventKind = "clamp"       // a clamp's diode conducts
 	TooLoud        EventKind = "too loud"    // a microphone beyond its maximum level
 	CommonMode     EventKind = "common mode" // an amplifier's input left its range: watched, not simulated
 	OutputCurrent  EventKind = "current"     // an amplifier's output gave more than it can: watched, not simulated

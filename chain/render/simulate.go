@@ -823,6 +823,7 @@ func (s *simulator) supplyAt(k int) float64 {
 type watchers struct {
 	amplifiers []amplifierWatch
 	capsules   []capsuleWatch
+	diodes     []*watcher
 	loud       []*watcher // for each of the chain's inputs
 	union      int64      // steps at which any limit held
 }
@@ -890,6 +891,9 @@ func newWatchers(n *circuit.Network, at bilinear.Operating, indexOf map[int]int,
 			element++
 		}
 	}
+	for _, d := range n.Diodes {
+		w.diodes = append(w.diodes, one(n.Chain.Stages[d.Stage].Name, Clamped))
+	}
 	return w
 }
 
@@ -929,6 +933,11 @@ func (w *watchers) touched(s *simulator, j int, step int64) {
 			c.saturated.touch(step, 0, 1)
 		}
 	}
+	for i, d := range w.diodes {
+		if s.limitedRun.Pieces[len(w.amplifiers)+len(w.capsules)+i] != bilinear.Linear {
+			d.touch(step, 0, 1)
+		}
+	}
 }
 
 // watch notes an amplifier outside its common-mode range or beyond its output current at a step that stands for
@@ -952,6 +961,7 @@ func (w *watchers) results() []Overload {
 	for i := range w.capsules {
 		all = append(all, w.capsules[i].cutOff, w.capsules[i].saturated)
 	}
+	all = append(all, w.diodes...)
 	all = append(all, w.loud...)
 	var seen []Overload
 	for _, one := range all {

@@ -71,6 +71,9 @@ func (f *finder) say(s Severity, about, format string, args ...any) {
 // resting tells of amplifiers that rest on a limit or whose inputs rest outside their range.
 func (f *finder) resting() {
 	for k, a := range f.n.Amplifiers {
+		if a.Virtual {
+			continue
+		}
 		v := func(node int) float64 { return f.r.At.Volts[node] }
 		e := f.r.At.Sources[k]
 		switch {
@@ -107,6 +110,8 @@ func (f *finder) overloads() {
 			f.say(Stop, o.Owner, "the capsule %s runs out of drain current %s%s: sound this loud needs a capsule with more current or less sensitivity", o.Owner, times, worst)
 		case render.Saturated:
 			f.say(Stop, o.Owner, "the capsule %s runs down to its lowest drain voltage %s: a smaller load would give it room", o.Owner, times)
+		case render.Clamped:
+			f.say(Caution, o.Owner, "the clamp %s conducts %s: what it cuts off is in overload", o.Owner, times)
 		case render.TooLoud:
 			f.say(Stop, o.Owner, "the microphone %s is given more than its maximum level %s%s", o.Owner, times, worst)
 		case render.CommonMode:

@@ -279,6 +279,9 @@ const Wary = 45
 func Margins(n *circuit.Network) []Margin {
 	var all []Margin
 	for k, a := range n.Amplifiers {
+		if a.Virtual {
+			continue
+		}
 		m := Margin{Amplifier: a.Name, Crossover: math.NaN(), Phase: math.NaN(), Gain: math.NaN()}
 		if !math.IsInf(a.Model.GainBandwidth, 1) {
 			m.find(n, k, a)

@@ -1,8 +1,10 @@
-// Package rest answers what a chain does without sound: how long it takes to come to rest after power-up.
+// Package rest answers what a chain does without sound: where every node rests and why, what offsets and bias currents
+// move, and how long it takes to come to rest after power-up.
 package rest
 
 import (
 	"math"
+	"math/cmplx"
 
 	"midrail/bilinear"
 	"midrail/chain/circuit"
@@ -23,6 +25,7 @@ const (
 type Settling struct {
 	OnePercent float64 // s, to within 1 % of its rest voltage
 	LSB        float64 // s, to within one step of the converter
+	Usable     float64 // s, from when on no limit is touched and a sine of 1 % of full scale finds room
 }
 
 // Settle follows a chain from an unpowered board, every capacitor empty, with the supply rising in a millisecond. The
@@ -44,6 +47,7 @@ func Settle(n *circuit.Network, at bilinear.Operating) (Settling, error) {
 	rest := at.Volts[n.Output]
 	lsb := (n.Chain.Converter.High - n.Chain.Converter.Low) / math.Exp2(float64(n.Chain.Converter.Bits))
 	percent := onePercent * math.Max(math.Abs(rest), leastRest)
+	room := roomFor(n)
 	var s Settling
 	state, y, now, last := c.Start(), make([]float64, 1), make([]float64, len(u)), 0.
 	for i := range steps {
@@ -52,9 +56,12 @@ func Settle(n *circuit.Network, at bilinear.Operating) (Settling, error) {
 		for j := range u {
 			now[j] = u[j] * up
 		}
-		c.Step(state, now, y)
+		touched := c.Step(state, now, y)
 		away := math.Abs((y[0]+last)/2 - rest)
 		last = y[0]
+		if up < 1 || touched || !roomy(n, state.E, room) {
+			s.Usable = t
+		}
 		if away > percent {
 			s.OnePercent = t
 		}
@@ -63,6 +70,33 @@ func Settle(n *circuit.Network, at bilinear.Operating) (Settling, error) {
 		}
 	}
 	return s, nil
+}
+
+// softly is the share of full scale that a usable chain passes.
+const softly = 0.01
+
+// roomFor returns, for each amplifier, how far a sine of 1 % of full scale at 1 kHz at every input takes its source.
+func roomFor(n *circuit.Network) []float64 {
+	exact := n.At(1000)
+	room := make([]float64, len(n.Amplifiers))
+	for i, in := range n.Inputs {
+		h := exact.FromInput(circuit.SoundInput(i))
+		for k, a := range n.Amplifiers {
+			room[k] += softly * math.Abs(in.Scale) * cmplx.Abs(h[a.Out])
+		}
+	}
+	return room
+}
+
+// roomy tells whether every amplifier's source, here against ground, has its room to both limits; one that rests on a
+// limit never does.
+func roomy(n *circuit.Network, e, room []float64) bool {
+	for k, a := range n.Amplifiers {
+		if e[k]+room[k] > a.High || e[k]-room[k] < a.Low {
+			return false
+		}
+	}
+	return true
 }
 
 // slowest returns the network's longest time constant in s.
