@@ -48,6 +48,7 @@ type Diode struct {
 // Amplifier is an amplifier between its nodes.
 type Amplifier struct {
 	Name             string // the stage, or the bias it buffers
+	Entry            string // name in the chain's amplifiers
 	Stage            int    // index of the stage; -1 for a bias buffer
 	Model            amplifier.Model
 	Plus, Minus, Out int             // nodes
@@ -254,4 +255,17 @@ func (n *Network) With(part string, value float64) (*Network, bool) {
 		}
 	}
 	return nil, false
+}
+
+// WithNoiseOf returns a copy of the network in which the amplifiers of an entry have the noise of another model.
+func (n *Network) WithNoiseOf(entry string, m amplifier.Model) *Network {
+	other := *n
+	other.Amplifiers = slices.Clone(n.Amplifiers)
+	for i := range other.Amplifiers {
+		if a := &other.Amplifiers[i]; a.Entry == entry {
+			a.Model.NoiseVoltage, a.Model.NoiseVoltageCorner = m.NoiseVoltage, m.NoiseVoltageCorner
+			a.Model.NoiseCurrent, a.Model.NoiseCurrentCorner = m.NoiseCurrent, m.NoiseCurrentCorner
+		}
+	}
+	return &other
 }

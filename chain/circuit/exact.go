@@ -47,6 +47,32 @@ func (n *Network) Feedback(k int, f float64) complex128 {
 	return at(n.Amplifiers[k].Minus) - at(n.Amplifiers[k].Plus)
 }
 
+// HeldSupply returns the network's equations at f Hz with the supply's node held still, factored.
+func (n *Network) HeldSupply(f float64) *Exact {
+	m := n.equations(f)
+	m.clearRow(n.Supply - 1)
+	m.add(n.Supply-1, n.Supply-1, 1)
+	e := &Exact{n: n}
+	if !e.lu.factor(m) {
+		panic("circuit: singular equations")
+	}
+	return e
+}
+
+// SupplyTerm returns what of the supply stands at the k-th amplifier's input at f Hz: V a V.
+func (n *Network) SupplyTerm(k int, f float64) complex128 {
+	a := &n.Amplifiers[k]
+	if a.Virtual || math.IsInf(a.Model.SupplyRejection, 1) {
+		return 0
+	}
+	gain := complex(1/a.Model.SupplyRejection, 0)
+	if corner := a.Model.SupplyRejectionCorner; !math.IsInf(corner, 1) {
+		rise := complex(0, f/(a.Model.SupplyRejection*corner))
+		gain += rise / (1 + rise)
+	}
+	return gain
+}
+
 // equations returns the matrix of the network's equations at f Hz.
 func (n *Network) equations(f float64) matrix {
 	s := complex(0, 2*math.Pi*f)

@@ -12,6 +12,9 @@ import (
 // DB prints a figure in decibels.
 func DB(n Number) string { return decibels(n) }
 
+// DBFS prints a level.
+func DBFS(n Number) string { return dbfs(n) }
+
 // Hz prints a frequency.
 func Hz(n Number) string { return people(n, func(x float64) string { return prefixed(x, "Hz") }) }
 
