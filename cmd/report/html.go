@@ -39,7 +39,7 @@ type page struct {
 // player is one sound as the page has it.
 type player struct {
 	Player
-	Source  template.URL
+	Source  template.HTMLAttr
 	Caution bool
 }
 
@@ -195,7 +195,7 @@ func (p *page) listen(pictures *Pictures) {
 			break
 		}
 		gain, _ := l.Players[i].GainDB.Value()
-		p.Players = append(p.Players, player{l.Players[i], "data:audio/wav;base64," + template.URL(base64.StdEncoding.EncodeToString(waveFile(sound))), gain >= loudGain})
+		p.Players = append(p.Players, player{l.Players[i], template.HTMLAttr(`src="data:audio/wav;base64,` + base64.StdEncoding.EncodeToString(waveFile(sound)) + `"`), gain >= loudGain})
 	}
 	held := 0.
 	for _, passage := range l.Passages {

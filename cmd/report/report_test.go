@@ -614,3 +614,26 @@ func luminance(t *testing.T, hex string) float64 {
 	}
 	return 0.2126*part(16) + 0.7152*part(8) + 0.0722*part(0)
 }
+
+// What is left out of a line lies on what is drawn, within the tolerance.
+func TestThinnedLinesStay(t *testing.T) {
+	var list []point
+	for i := range 2000 {
+		x := float64(i) / 3
+		list = append(list, point{x, 100 + 60*math.Sin(x/20) + 8*math.Sin(x*x/5000)})
+	}
+	kept := thinned(list)
+	if len(kept) > len(list)/2 || kept[0] != list[0] || kept[len(kept)-1] != list[len(list)-1] {
+		t.Fatalf("%d of %d points are left", len(kept), len(list))
+	}
+	k := 0
+	for _, p := range list {
+		for kept[k+1].x < p.x {
+			k++
+		}
+		a, b := kept[k], kept[k+1]
+		if y := a.y + (b.y-a.y)*(p.x-a.x)/(b.x-a.x); !(math.Abs(y-p.y) <= straight*(1+1e-9)) {
+			t.Errorf("at %v the line is %v off", p.x, y-p.y)
+		}
+	}
+}

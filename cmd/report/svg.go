@@ -208,7 +208,7 @@ func (f figure) sized(width, height float64, class string) template.HTML {
 	for _, r := range f.rows {
 		longest = max(longest, len([]rune(r.label)))
 	}
-	right := 12.0
+	right := 20.0
 	if f.x.time {
 		right = 24 // half of the last tick's text
 	}
@@ -379,50 +379,88 @@ func short(s string, n int) string {
 	return string(r[:n-1]) + "…"
 }
 
+// point is a place in the plot area, in pixels.
+type point struct{ x, y float64 }
+
 // path returns the curve in the plot area's own coordinates. Of the points that fall into one
 // pixel's width it keeps the first, the lowest, the highest and the last, in their order, so that
-// no peak is lost however long the curve is.
+// no peak is lost however long the curve is; those that lie on a line with others are left out.
 func (f figure) path(c curve, across, height float64) string {
 	var d strings.Builder
-	down := false // whether the pen is on the paper
-	to := func(i int) {
-		word := "L"
-		if !down {
-			word = "M"
+	var stroke []point // what is drawn without lifting the pen
+	end := func() {
+		for i, p := range thinned(stroke) {
+			word := "L"
+			if i == 0 {
+				word = "M"
+			}
+			d.WriteString(word + px(p.x) + " " + px(p.y))
 		}
-		down = true
-		// Far beyond the plot area is as good as just beyond it.
-		y := math.Min(math.Max(height*(1-f.y.at(c.y[i])), -height), 2*height)
-		fmt.Fprintf(&d, "%s%s %s", word, px(across*f.x.at(c.x[i])), px(y))
+		stroke = stroke[:0]
 	}
 	n := len(c.x)
 	for i := 0; i < n; {
 		if gap(c.y[i]) {
-			down = false
+			end()
 			i++
 			continue
 		}
 		column := math.Floor(across * f.x.at(c.x[i]))
-		low, high, end := i, i, i
-		for end+1 < n && !gap(c.y[end+1]) && math.Floor(across*f.x.at(c.x[end+1])) == column {
-			end++
-			if c.y[end] < c.y[low] {
-				low = end
+		low, high, last := i, i, i
+		for last+1 < n && !gap(c.y[last+1]) && math.Floor(across*f.x.at(c.x[last+1])) == column {
+			last++
+			if c.y[last] < c.y[low] {
+				low = last
 			}
-			if c.y[end] > c.y[high] {
-				high = end
-			}
-		}
-		last := -1
-		for _, k := range []int{i, min(low, high), max(low, high), end} {
-			if k != last {
-				to(k)
-				last = k
+			if c.y[last] > c.y[high] {
+				high = last
 			}
 		}
-		i = end + 1
+		before := -1
+		for _, k := range []int{i, min(low, high), max(low, high), last} {
+			if k != before {
+				// Far beyond the plot area is as good as just beyond it.
+				y := math.Min(math.Max(height*(1-f.y.at(c.y[k])), -height), 2*height)
+				stroke = append(stroke, point{across * f.x.at(c.x[k]), y})
+				before = k
+			}
+		}
+		i = last + 1
 	}
+	end()
 	return d.String()
+}
+
+// straight is how far, in pixels, a point may lie from the line that is drawn in its stead.
+const straight = 0.1
+
+// thinned returns the points, in order of x, without those that lie on a line between others: a line is drawn on for as
+// long as one direction passes all of its points.
+func thinned(list []point) []point {
+	if len(list) < 3 {
+		return list
+	}
+	kept := list[:1:1]
+	from := list[0]
+	low, high := math.Inf(-1), math.Inf(1) // slopes that pass all points since from
+	for i := 1; i < len(list); i++ {
+		p := list[i]
+		dx := p.x - from.x
+		if slope := (p.y - from.y) / dx; !(dx > 0) || slope < low || slope > high {
+			if i > 1 {
+				from = list[i-1]
+				kept = append(kept, from)
+				low, high = math.Inf(-1), math.Inf(1)
+				dx = p.x - from.x
+			}
+		}
+		if dx > 0 {
+			low, high = math.Max(low, (p.y-from.y-straight)/dx), math.Min(high, (p.y-from.y+straight)/dx)
+		} else {
+			low, high = math.Inf(1), math.Inf(-1) // straight up or down: it ends here
+		}
+	}
+	return append(kept, list[len(list)-1])
 }
 
 // gap reports whether a curve has no value there.
