@@ -82,7 +82,7 @@ func kindTable(k Kind) kindOf {
 	}
 	switch k {
 	case Resistance:
-		return kindOf{"a resistance", []unit{{name: "Ω", spelled: []string{"ohms", "ohm", "Ω", "\u2126"}, factor: 1, prefixes: true}}, true, `"4k7", "100R" or 4700`, true}
+		return kindOf{"a resistance", []unit{{name: "Ω", spelled: []string{"ohms", "ohm", "Ω", "\u2126"}, factor: 1, prefixes: true}, {name: "Ω", spelled: []string{"R"}, factor: 1}}, true, `"4k7", "100R" or 4700`, true}
 	case Capacitance:
 		return kindOf{"a capacitance", []unit{{name: "F", spelled: []string{"F"}, factor: 1, prefixes: true}}, true, `"100n", "2u2" or 100e-9`, true}
 	case Voltage:
