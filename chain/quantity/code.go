@@ -201,6 +201,8 @@ func floorDiv(a, b int) int {
 func FormatCode(k Kind, si float64) string {
 	number, prefix := engineering(si)
 	switch {
+	case k == Capacitance && prefix == "f": // which no capacitor is marked in
+		number, prefix = digits(si*1e12), "p"
 	case k == Resistance && prefix == "":
 		prefix = "R"
 	case k == Resistance, k == Capacitance && prefix != "":
