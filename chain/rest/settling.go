@@ -25,7 +25,7 @@ const (
 type Settling struct {
 	OnePercent float64 // s, to within 1 % of its rest voltage
 	LSB        float64 // s, to within one step of the converter
-	Usable     float64 // s, from when on no limit is touched and a sine of 1 % of full scale finds room
+	Usable     float64 // s, from when on no limit is touched and a sine of 1 % of full scale finds room; +Inf: never
 }
 
 // Settle follows a chain from an unpowered board, every capacitor empty, with the supply rising in a millisecond. The
@@ -68,6 +68,9 @@ func Settle(n *circuit.Network, at bilinear.Operating) (Settling, error) {
 		if away > lsb {
 			s.LSB = t
 		}
+	}
+	if s.Usable == float64(steps)/rate {
+		s.Usable = math.Inf(1)
 	}
 	return s, nil
 }

@@ -147,7 +147,11 @@ func printRest(w io.Writer, n *circuit.Network, r *rest.Rest) error {
 	t.Table([]string{"moves the converter's input", "by", "LSB", "that is"}, rows)
 	t.Line("")
 	t.Line("After power-up, every capacitor empty:")
-	t.Pair("usable", report.Seconds(of(r.Settling.Usable))+"  (no limit touched, 1 % of full scale finds room)")
+	usable := "never: an amplifier rests too near a limit for 1 % of full scale"
+	if !math.IsInf(r.Settling.Usable, 1) {
+		usable = report.Seconds(of(r.Settling.Usable)) + "  (no limit touched, 1 % of full scale finds room)"
+	}
+	t.Pair("usable", usable)
 	t.Pair("to 1 %", report.Seconds(of(r.Settling.OnePercent)))
 	t.Pair("to 1 LSB", report.Seconds(of(r.Settling.LSB)))
 	if len(r.Slow) > 0 {
