@@ -422,12 +422,9 @@ func describe(n *circuit.Network, tracks *openedTracks, r *render.Result, res *r
 	for _, w := range r.Waveforms {
 		run.Waveforms = append(run.Waveforms, report.Waveform{Stage: w.Owner, Kind: string(w.Kind), AtS: of(w.At), OverDB: of(w.Over)})
 	}
-	settling := rest.Settling{OnePercent: math.NaN(), LSB: math.NaN()}
-	if c.Limits.Settling != nil {
-		var err error
-		if settling, err = rest.Settle(n, r.At); err != nil {
-			return nil, err
-		}
+	settling, err := rest.Settle(n, r.At)
+	if err != nil {
+		return nil, err
 	}
 	run.Rest, run.Noise, run.Parts = restOf(n, r.At, settling), noiseOf(c, r.Span, budget), partsOf(c)
 	for _, l := range residue.Limits(n, r, res, settling.OnePercent) {

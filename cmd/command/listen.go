@@ -31,21 +31,28 @@ const (
 	fade = 5e-3
 )
 
+// shownRate returns the rate at which a sound of the given rate is shown: its own or that halved some times.
+func shownRate(rate float64) float64 {
+	for rate >= 2*clearRate {
+		rate /= 2
+	}
+	return rate
+}
+
 // listen puts together what there is to listen to in a report: the track, heard, and every layer that is not silent.
 func listen(out *folder, j job, r *render.Result, run *report.Run) (*report.Listen, []report.PlayerSound, error) {
-	rate, _ := run.Converter.RateHz.Value()
 	trackRate, _ := run.Track.RateHz.Value()
-	shownRate := trackRate
-	for shownRate >= 2*clearRate {
-		shownRate /= 2
+	rate, _ := run.Converter.RateHz.Value()
+	players := []report.Player{{Name: report.TrackSound}, {Name: report.Heard, File: "heard.wav"}}
+	if j.demo() {
+		players[0].File = "track.wav"
 	}
-	players := []report.Player{{Name: report.TrackSound}, {Name: report.Heard}}
 	for _, l := range run.Layers {
 		if _, there := l.RMSDBFS.Value(); there {
-			players = append(players, report.Player{Name: l.Name})
+			players = append(players, report.Player{Name: l.Name, File: l.Name + ".wav"})
 		}
 	}
-	passages := passagesOf(r, soundBytes/2/(shownRate+float64(len(players)-1)*rate))
+	passages := passagesOf(r, soundBytes/2/(shownRate(trackRate)+float64(len(players)-1)*shownRate(rate)))
 	l := &report.Listen{}
 	for _, p := range passages {
 		l.Passages = append(l.Passages, report.Passage{FromS: report.Of(p[0]), ToS: report.Of(p[1])})
@@ -54,24 +61,16 @@ func listen(out *folder, j job, r *render.Result, run *report.Run) (*report.List
 	var samples [][]float64
 	for i := range players {
 		p := &players[i]
-		var x []float64
-		var err error
-		if i == 0 {
-			if j.demo() {
-				p.File = "track.wav"
-			}
-			x, err = cutTrack(j, shownRate, passages)
-			p.RateHz = report.Of(shownRate)
-			sounds = append(sounds, report.PlayerSound{Rate: shownRate})
-		} else {
-			p.File = p.Name + ".wav"
-			x, err = cutFile(out.file(p.File), passages)
-			p.RateHz = report.Of(rate)
-			sounds = append(sounds, report.PlayerSound{Rate: rate})
+		open := func() (signals.Track, error) { return wav.Open(out.file(p.File)) }
+		if p.File == "" {
+			open = j.first().open
 		}
+		x, at, err := cutTrack(open, passages)
 		if err != nil {
 			return nil, nil, err
 		}
+		p.RateHz = report.Of(at)
+		sounds = append(sounds, report.PlayerSound{Rate: at})
 		samples = append(samples, x)
 	}
 	gains := loudness(samples, sounds)
@@ -124,55 +123,31 @@ func joined(list [][2]float64) (merged [][2]float64, total float64) {
 	return merged, total
 }
 
-// cutFile takes the passages out of a file of one channel.
-func cutFile(path string, passages [][2]float64) ([]float64, error) {
-	f, err := wav.Open(path)
-	if err != nil {
-		return nil, err
-	}
-	x, err := cut(signals.Channels(f, 1)[0], f.Rate(), passages)
-	return x, errors.Join(err, f.Close())
-}
-
-// cutTrack takes the passages out of the job's track, all of its channels as one, at the given rate: its own or that
-// halved some times, without what lies above half of it. Of several tracks it takes the first.
-func cutTrack(j job, rate float64, passages [][2]float64) ([]float64, error) {
+// first returns the first of the job's recordings that is fed.
+func (j job) first() recording {
 	for _, r := range j.tracks {
-		if r.open == nil {
-			continue
+		if r.open != nil {
+			return r
 		}
-		t, err := r.open()
-		if err != nil {
-			return nil, err
-		}
-		x, err := cut(signals.Channels(t, signals.Mix)[0], t.Rate(), passages)
-		if err := errors.Join(err, t.Close()); err != nil {
-			return nil, err
-		}
-		for at := t.Rate(); at > rate; at /= 2 {
-			if x, err = halve(x, at); err != nil {
-				return nil, err
-			}
-		}
-		return x, nil
 	}
-	return nil, render.ErrNoSound
+	panic("command: a job without a recording")
 }
 
-// halve returns samples at half their rate.
-func halve(x []float64, rate float64) ([]float64, error) {
-	const edge = 0.98 / 4 // of the rate; 1 % above it nothing is left
-	n := (len(x) + 1) / 2
-	samples := signals.Samples(x)
-	split := resample.NewSplit(&samples, rate, edge*rate, 0)
-	low, high := make([]float64, 2*n), make([]float64, 2*n)
-	if _, err := split.Read(low, high); err != nil && !errors.Is(err, io.EOF) {
-		return nil, err
+// cutTrack takes the passages out of a track, all of its channels as one, and returns them at the rate they are shown at.
+func cutTrack(open func() (signals.Track, error), passages [][2]float64) ([]float64, float64, error) {
+	t, err := open()
+	if err != nil {
+		return nil, 0, err
 	}
-	for i := range n {
-		low[i] = low[2*i]
+	rate := t.Rate()
+	x, err := cut(signals.Channels(t, signals.Mix)[0], rate, passages)
+	if err := errors.Join(err, t.Close()); err != nil {
+		return nil, 0, err
 	}
-	return low[:n], nil
+	for shown := shownRate(rate); rate > shown; rate /= 2 {
+		x = resample.Halve(x)
+	}
+	return x, rate, nil
 }
 
 // cut takes the passages out of a stream, one after another. They begin and end softly where they do not with the track.
