@@ -46,9 +46,9 @@ type lane struct {
 
 // chunk is a stretch of the run on its way: whole blocks of every lane's values, in V or A.
 type chunk struct {
-	first int64       // conversion that the chunk ends its first one with
+	first int64       // the first instant in it; instant 0 is the first conversion
 	lanes [][]float64 // of each lane; those at the base rate begin as early, and end as late, as interpolation reaches
-	end   int64       // conversions in the whole run, once known; else -1
+	end   int64       // the instant one past the last conversion, once known; else -1
 }
 
 // counter counts the samples of a stream and remembers its end.
@@ -88,7 +88,7 @@ type feeder struct {
 	tracks []*counter
 }
 
-// newFeeder prepares the lanes of tracks and interferers. The run's first step is one past the given conversion's.
+// newFeeder prepares the lanes of tracks and interferers. The run's first step is one past the given instant's.
 func newFeeder(n *circuit.Network, feeds []Feed, g grid, first int64, seed uint64) *feeder {
 	f := &feeder{n: n, grid: g}
 	base := g.plan.baseRate()
@@ -163,7 +163,8 @@ func scaleBy(x []float64, scale float64) {
 	}
 }
 
-// conversions returns ceil(N·fc/ft) over the longest track once every track has been read, else −1.
+// conversions returns the instant one past the last conversion, of which there are ceil(N·fc/ft) over the longest
+// track, once every track has been read, else −1.
 func (f *feeder) conversions() int64 {
 	most := int64(0)
 	for _, t := range f.tracks {
@@ -171,6 +172,9 @@ func (f *feeder) conversions() int64 {
 			return -1
 		}
 		most = max(most, Conversions(t.n, t.rate, f.n.Chain.Converter.Rate))
+	}
+	if most > 0 {
+		most = (most-1)*int64(f.grid.plan.Instants) + 1
 	}
 	return most
 }

@@ -11,14 +11,17 @@ import (
 // Plan is how finely a run steps the circuit: from the tracks' rate sound is interpolated to a base rate, a multiple of
 // the converter's at least twice the tracks' rate, and from there by doublings to the internal rate.
 type Plan struct {
-	Base         int     // base samples for each conversion
+	// Instants is how many instants of the run there are for each conversion, the last of which is the conversion's: one,
+	// or as many as keep a stretch between two short where the converter is much slower than the tracks.
+	Instants     int
+	Base         int     // base samples for each instant
 	Doublings    int     // internal rate = base rate·2^Doublings
 	Rate         float64 // Hz, the internal rate
 	LargestError float64 // dB, the largest difference between stepped and exact response up to To
 	To           float64 // Hz, the highest frequency that the tracks hold
 }
 
-// Steps returns the internal steps for each conversion.
+// Steps returns the internal steps for each instant.
 func (p Plan) Steps() int { return p.Base << p.Doublings }
 
 // baseRate returns the base rate in Hz.
@@ -41,13 +44,15 @@ const (
 // circuit's response at (fi/π)·tan(πf/fi). For n poles the error is about n·8.69·(πf/fi)²/3 dB.
 func NewPlan(n *circuit.Network, to float64) Plan {
 	fc := n.Chain.Converter.Rate
-	p := Plan{Base: int(math.Ceil(4 * to / fc * (1 - 1e-12))), To: to}
+	p := Plan{Instants: max(1, int(4*to/fc/blockBase)), To: to}
+	instants := fc * float64(p.Instants) // a second
+	p.Base = int(math.Ceil(4 * to / instants * (1 - 1e-12)))
 	least := 0.
 	for _, x := range n.Chain.Interferers {
 		least = math.Max(least, perInterferer*(x.Frequency+x.Bandwidth))
 	}
 	for p.Doublings = 1; ; p.Doublings++ {
-		p.Rate = fc * float64(p.Steps())
+		p.Rate = instants * float64(p.Steps())
 		if p.Rate < least {
 			continue
 		}

@@ -190,6 +190,20 @@ func TestTonesAboveHalfTheRateFold(t *testing.T) {
 	}
 }
 
+// A converter far slower than the track takes its samples where they belong, too.
+func TestSlowConverter(t *testing.T) {
+	n := parse(t, lineChain, "converter.rate=700")
+	s := renderAll(t, n, Options{}, tone.Sine(96000, 2, 150, -6))
+	if s.result.Plan.Instants < 2 || len(s.codes) != 1400 {
+		t.Fatalf("%d instants a conversion, %d conversions", s.result.Plan.Instants, len(s.codes))
+	}
+	got, rest := fit(s.layers[Wanted], 150, 700, 300)
+	want := expected(n, s.result, 150) * complex(math.Pow(10, -6./20), 0)
+	if d := cmplx.Abs(got/want - 1); !(d <= 1e-3) || !(rest < 1e-6) {
+		t.Errorf("%v, want %v; %.3g left", got, want, rest)
+	}
+}
+
 // hostile are sounds that try the places where limits are looked for.
 func hostile(rate float64) map[string]signals.Track {
 	draw := rand.New(rand.NewPCG(7, 7))

@@ -128,7 +128,7 @@ func Run(ctx context.Context, n *circuit.Network, feeds []Feed, o Options, sink 
 	g := newGrid(NewPlan(n, top), 2*top)
 	settle := newSettling(n)
 	// The run begins one step behind a conversion, whole blocks before the tracks do.
-	before := lead(feeds, fc)
+	before := lead(feeds, fc) * int64(g.plan.Instants)
 	blocks := (before + int64(g.conversions) - 1) / int64(g.conversions)
 	first := -blocks * int64(g.conversions)
 	feed := newFeeder(n, feeds, g, first, o.Seed)
@@ -138,7 +138,7 @@ func Run(ctx context.Context, n *circuit.Network, feeds []Feed, o Options, sink 
 	}
 	sim.always = sim.always || o.plain
 	p := &pipeline{
-		feed: feed, sim: sim, conv: newConverter(n, at, settle, o),
+		feed: feed, sim: sim, conv: newConverter(n, at, settle, o, g.plan.Instants),
 		conversion: first + 1, blocks: max(1, cmp.Or(o.chunk, chunkBase)/g.base),
 	}
 	p.conv.sink, p.conv.progress = sink, o.Progress
@@ -157,7 +157,7 @@ type pipeline struct {
 	feed       *feeder
 	sim        *simulator
 	conv       *converter
-	conversion int64 // the next chunk's first
+	conversion int64 // the next chunk's first instant
 	blocks     int   // in a chunk
 	times      Times // each part's is its goroutine's
 }
@@ -280,6 +280,7 @@ func (p *pipeline) result(at bilinear.Operating, plan Plan) *Result {
 
 // converter turns the circuit's conversions into layers and codes.
 type converter struct {
+	instants int64 // for each conversion
 	span     Span
 	rest     float64
 	settled  [5]settled // wanted, fold-back, interference in band and out of it, overload
@@ -297,9 +298,9 @@ type converter struct {
 	count, saturated int64
 }
 
-func newConverter(n *circuit.Network, at bilinear.Operating, settle settling, o Options) *converter {
+func newConverter(n *circuit.Network, at bilinear.Operating, settle settling, o Options, instants int) *converter {
 	c := &n.Chain.Converter
-	v := &converter{span: spanOf(n.Chain), jitter: c.Jitter, rate: c.Rate, draw: rand.New(rand.NewPCG(o.Seed, jitterStream))}
+	v := &converter{instants: int64(instants), span: spanOf(n.Chain), jitter: c.Jitter, rate: c.Rate, draw: rand.New(rand.NewPCG(o.Seed, jitterStream))}
 	for i := range v.settled {
 		v.settled[i].settling = settle
 	}
@@ -331,7 +332,7 @@ const (
 	jitterStream = math.MaxUint64 - 1
 )
 
-// take turns conversions into a block and hands it on; what lies before the first conversion only settles.
+// take turns the conversions among instants into a block and hands it on; what lies before the first only settles.
 func (v *converter) take(o *conversions) error {
 	n := int64(len(o.slope))
 	from, to := max(0, -o.first), n
@@ -340,9 +341,11 @@ func (v *converter) take(o *conversions) error {
 	}
 	b := &v.block
 	b.reset()
-	b.First = o.first + from
+	b.First = v.count
 	for k := range to {
-		v.one(o, int(k), k >= from)
+		if (o.first+k)%v.instants == 0 {
+			v.one(o, int(k), k >= from)
+		}
 	}
 	if len(b.Codes) == 0 {
 		return nil
@@ -401,7 +404,7 @@ func (v *converter) one(o *conversions, k int, kept bool) {
 		if d := held - v.rest; d != 0 {
 			ratio = (x - v.rest) / d
 		}
-		v.range_[side].touch(o.first+int64(k), ratio, 1)
+		v.range_[side].touch((o.first+int64(k))/v.instants, ratio, 1)
 		overload += held - x
 	}
 	code := v.span.Code(held)

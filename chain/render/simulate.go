@@ -427,6 +427,9 @@ func (s *simulator) block(c *chunk, o *conversions, b int, step int64) {
 // range_ tells the scope of conversions beyond the converter's span.
 func (s *simulator) range_(o *conversions, first int, step int64) {
 	for k := range s.grid.conversions {
+		if (o.first+int64(first+k))%int64(s.grid.plan.Instants) != 0 {
+			continue
+		}
 		v := o.overload[0][first+k]
 		for part := range o.parts {
 			v += o.parts[part][0][first+k]

@@ -29,6 +29,10 @@ type Split struct {
 	err       error
 }
 
+// longestHalf bounds the filter, and with it what is held in memory: for an edge below about a 1300th of the rate the
+// transition is wider than 1 %.
+const longestHalf = 1 << 18
+
 // NewSplit parts src, at the given rate in Hz, at the edge in Hz, above 0. The first value read is that of the
 // source's sample −lead, so that a lead of [Split.HalfLength] misses nothing of the filter's ringing; after the
 // source's last sample comes as much again. Where the edge is half the rate or more, everything lies below and nothing
@@ -36,7 +40,7 @@ type Split struct {
 func NewSplit(src signals.Stream, rate, edge float64, lead int) *Split {
 	s := &Split{lead: lead}
 	if edge < rate/2 {
-		s.half = taps(splitStop, 2*math.Pi*0.02*edge/rate)/2 + 1
+		s.half = min(taps(splitStop, 2*math.Pi*0.02*edge/rate)/2+1, longestHalf)
 	}
 	if src == nil {
 		return s
