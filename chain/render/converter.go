@@ -27,7 +27,7 @@ func (s Span) Middle() float64 { return (s.Low + s.High) / 2 }
 func (s Span) Unit() float64 { return (s.High - s.Low) / 2 }
 
 // step is one code in full scale, q = 2/2^N.
-func (s Span) step() float64 { return math.Exp2(1 - float64(s.Bits)) }
+func (s Span) step() float64 { return 2 / float64(int64(1)<<s.Bits) }
 
 // Clamp returns x held to what the codes reach: from half a step below the lowest to half a step above the highest.
 func (s Span) Clamp(x float64) float64 {
@@ -37,7 +37,7 @@ func (s Span) Clamp(x float64) float64 {
 
 // Code returns the code of x in full scale, clamp(floor((v − low)/q + ½), 0, 2^N − 1).
 func (s Span) Code(x float64) int32 {
-	top := math.Exp2(float64(s.Bits)) - 1
+	top := float64(int64(1)<<s.Bits) - 1
 	return int32(math.Min(math.Max(math.Floor((x+1)/s.step()+0.5), 0), top))
 }
 
