@@ -43,6 +43,9 @@ func draw(run *Run, p *Pictures) (figures, error) {
 		if err != nil {
 			return f, err
 		}
+		if one.image == nil {
+			continue // silence
+		}
 		f.Residue = append(f.Residue, drawn{"Spectrogram of " + clean(g.Layer) + ": time across, frequency up; the brighter, the louder.", one.draw()})
 	}
 	add(&f.Noise, noiseFigure(p), "Noise density at the converter's input, and what sampling makes of it: everything above half the rate lands below.")

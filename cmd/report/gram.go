@@ -37,7 +37,7 @@ func (i *picture) use(p *pen, across, height float64) {
 	p.put(`<use href="#%s" transform="scale(%s %s)"/>`+"\n", i.id, px(across), px(height))
 }
 
-// gramFigure draws a spectrogram.
+// gramFigure draws a spectrogram; that of silence has no image.
 func gramFigure(g *Gram) (figure, error) {
 	f := figure{
 		title: "Spectrogram of " + clean(g.Layer),
@@ -52,10 +52,10 @@ func gramFigure(g *Gram) (figure, error) {
 			loudest = math.Max(loudest, v)
 		}
 	}
-	top := 0.
-	if !math.IsInf(loudest, -1) {
-		top = math.Ceil(loudest/10) * 10
+	if gap(loudest) {
+		return f, nil
 	}
+	top := math.Ceil(loudest/10) * 10
 	const shades = 128
 	palette := make(color.Palette, shades)
 	for i := range palette {
