@@ -166,9 +166,9 @@ func (v *solver) solve(laws []law, s0 []float64, pieces []Piece, e []float64) bo
 			return true
 		}
 	}
-	// One element at a time, the first that is out of place: this cannot swing between two states of several.
-	copy(v.trial, pieces)
-	for range 16 * v.k {
+	// One element at a time, the first that is out of place, and to a piece beside its own: this cannot swing between two
+	// states of several. K. G. Murty, "Note on a Bard-type scheme for solving the complementarity problem", Opsearch 11 (1974).
+	for range 64 * v.k {
 		if !v.linear(laws, s0, pieces, e) {
 			break
 		}
@@ -184,6 +184,9 @@ func (v *solver) settle(laws []law, pieces []Piece, e []float64, most int) bool 
 	moved := 0
 	for i := range laws {
 		if p := laws[i].proper(pieces[i], e[i], v.sense[i]); p != pieces[i] {
+			if most == 1 && pieces[i] != Linear && laws[i].kind == amplifierElement {
+				p = Linear // what lies between its limits
+			}
 			pieces[i] = p
 			if moved++; moved == most {
 				break

@@ -3,6 +3,8 @@ package rest
 import (
 	"fmt"
 	"math"
+	"os"
+	"path/filepath"
 	"strings"
 	"testing"
 
@@ -303,5 +305,28 @@ r_f = "10k"
 	// that far from its 3.3 V: 1.65·e^(−t/τ) = 1.65 − 0.0141.
 	if u := r.Settling.Usable; !(u >= rise && u < 0.02*tau+2*rise) {
 		t.Errorf("usable after %g s", u)
+	}
+}
+
+// The start-up of each chain of the test data finds the limits of all its amplifiers, capsules and diodes at each step,
+// among them a capsule whose drain is still too low and a dozen amplifiers whose rails are not up.
+func TestEveryChainStarts(t *testing.T) {
+	files, err := filepath.Glob("../../testdata/chains/*.toml")
+	if err != nil || len(files) == 0 {
+		t.Fatal("no chains", err)
+	}
+	for _, file := range files {
+		text, err := os.ReadFile(file)
+		if err != nil {
+			t.Fatal(err)
+		}
+		n, r := find(t, string(text))
+		at, err := n.Rest()
+		if err != nil {
+			t.Fatal(err)
+		}
+		if s := r.Settling; !(s.OnePercent <= s.LSB) || (s.OnePercent > rise) != (at.Volts[n.Output] != 0) {
+			t.Errorf("%s, resting at %g V: %+v", file, at.Volts[n.Output], s)
+		}
 	}
 }
