@@ -1,0 +1,275 @@
+package wav
+
+import (
+	"bytes"
+	"encoding/binary"
+	"errors"
+	"io"
+	"math"
+	"strings"
+	"testing"
+	"time"
+
+	"pgregory.net/rapid"
+)
+
+// flavour writes files by hand, as programs of all kinds do.
+type flavour struct {
+	tag        uint16
+	bits       int
+	extensible bool
+	valid      int
+	before     [][2]string // chunks before the data: name and body
+	noPad      bool        // odd chunks without their pad byte
+	size       int64       // of the data as the header says; -1: as it is
+	cut        int         // bytes cut off the end
+	rf64       bool
+}
+
+func (f flavour) file(rate, channels int, samples []float64) []byte {
+	le := binary.LittleEndian
+	var data []byte
+	for _, x := range samples {
+		switch {
+		case f.tag == tagFloat && f.bits == 64:
+			data = le.AppendUint64(data, math.Float64bits(x))
+		case f.tag == tagFloat:
+			data = le.AppendUint32(data, math.Float32bits(float32(x)))
+		case f.bits == 8:
+			data = append(data, byte(int(math.Round(x*128))+128))
+		default:
+			code := int32(math.Round(x * math.Exp2(float64(f.bits-1))))
+			data = append(data, le.AppendUint32(nil, uint32(code))[:f.bits/8]...)
+		}
+	}
+	align := channels * f.bits / 8
+	tag := f.tag
+	if f.extensible {
+		tag = tagExtensible
+	}
+	var format []byte
+	format = le.AppendUint16(format, tag)
+	format = le.AppendUint16(format, uint16(channels))
+	format = le.AppendUint32(format, uint32(rate))
+	format = le.AppendUint32(format, uint32(rate*align))
+	format = le.AppendUint16(format, uint16(align))
+	format = le.AppendUint16(format, uint16(f.bits))
+	if f.extensible {
+		format = le.AppendUint16(format, 22)
+		format = le.AppendUint16(format, uint16(f.valid))
+		format = le.AppendUint32(format, 0)
+		format = le.AppendUint16(format, f.tag)
+		format = append(format, subFormatTail...)
+	}
+	out := []byte("RIFF\xff\xff\xff\xffWAVE")
+	size := int64(len(data))
+	if f.size >= 0 {
+		size = f.size
+	}
+	if f.rf64 {
+		copy(out, "RF64")
+		out = append(out, "ds64"...)
+		out = le.AppendUint32(out, 28)
+		out = le.AppendUint64(out, 0)
+		out = le.AppendUint64(out, uint64(len(data)))
+		out = le.AppendUint64(out, uint64(len(data)/align))
+		out = le.AppendUint32(out, 0)
+		size = math.MaxUint32
+	}
+	chunk := func(name, body string) {
+		out = append(out, name...)
+		out = le.AppendUint32(out, uint32(len(body)))
+		out = append(out, body...)
+		if len(body)%2 != 0 && !f.noPad {
+			out = append(out, 0)
+		}
+	}
+	chunk("fmt ", string(format))
+	for _, c := range f.before {
+		chunk(c[0], c[1])
+	}
+	out = append(out, "data"...)
+	out = le.AppendUint32(out, uint32(size))
+	out = append(out, data...)
+	return out[:len(out)-f.cut]
+}
+
+func decode(t *testing.T, file []byte) (*File, []float64, error) {
+	t.Helper()
+	f, err := New("x.wav", bytes.NewReader(file))
+	if err != nil {
+		return nil, nil, err
+	}
+	x := make([]float64, f.Frames()*int64(f.Channels()))
+	n, err := f.ReadFrames(x)
+	if err == nil {
+		var more [64]float64
+		if m, end := f.ReadFrames(more[:f.Channels()]); m != 0 || end != io.EOF {
+			t.Errorf("after the end: %d frames, %v", m, end)
+		}
+	}
+	return f, x[:n*f.Channels()], err
+}
+
+// Eighths of full scale are exact in every flavour.
+var eighths = []float64{0, 0.125, -0.125, 0.5, -1, 0.875, -0.75, 0.25, -0.5, 0.375, 0, -0.25}
+
+func TestEveryFlavourReadsTheSame(t *testing.T) {
+	list := "INFOISFT\x05\x00\x00\x00odd\x00\x00"
+	for name, f := range map[string]flavour{
+		"8 bits":                {tag: tagPCM, bits: 8, size: -1},
+		"16 bits":               {tag: tagPCM, bits: 16, size: -1},
+		"24 bits":               {tag: tagPCM, bits: 24, size: -1},
+		"32 bits":               {tag: tagPCM, bits: 32, size: -1},
+		"float":                 {tag: tagFloat, bits: 32, size: -1},
+		"double":                {tag: tagFloat, bits: 64, size: -1},
+		"extensible 16":         {tag: tagPCM, bits: 16, extensible: true, valid: 16, size: -1},
+		"extensible 20 in 24":   {tag: tagPCM, bits: 24, extensible: true, valid: 20, size: -1},
+		"extensible float":      {tag: tagFloat, bits: 32, extensible: true, valid: 32, size: -1},
+		"LIST before data":      {tag: tagPCM, bits: 16, before: [][2]string{{"LIST", list}}, size: -1},
+		"bext and JUNK":         {tag: tagPCM, bits: 24, before: [][2]string{{"bext", strings.Repeat("x", 602)}, {"JUNK", strings.Repeat("\x00", 28)}}, size: -1},
+		"odd chunk":             {tag: tagPCM, bits: 16, before: [][2]string{{"note", "abc"}}, size: -1},
+		"odd chunk without pad": {tag: tagPCM, bits: 16, before: [][2]string{{"note", "abc"}}, noPad: true, size: -1},
+		"from a pipe":           {tag: tagPCM, bits: 16, size: math.MaxUint32},
+		"from a pipe, 0":        {tag: tagPCM, bits: 16, size: 0},
+		"RF64":                  {tag: tagPCM, bits: 16, rf64: true},
+	} {
+		for _, channels := range []int{1, 2, 3, 12} {
+			got, x, err := decode(t, f.file(44100, channels, eighths))
+			if err != nil {
+				t.Errorf("%s, %d channels: %v", name, channels, err)
+				continue
+			}
+			if got.Rate() != 44100 || got.Channels() != channels || len(x) != len(eighths) {
+				t.Errorf("%s: %g Hz, %d channels, %d samples", name, got.Rate(), got.Channels(), len(x))
+				continue
+			}
+			for i, v := range eighths {
+				if x[i] != v {
+					t.Errorf("%s, %d channels: sample %d is %g, want %g", name, channels, i, x[i], v)
+				}
+			}
+			if piped := f.size >= 0 && !f.rf64; piped != (got.Note() != "") {
+				t.Errorf("%s: note %q", name, got.Note())
+			}
+		}
+	}
+}
+
+func TestCutFileIsUsedToItsEnd(t *testing.T) {
+	f, x, err := decode(t, flavour{tag: tagPCM, bits: 16, size: -1, cut: 5}.file(48000, 2, eighths))
+	if err != nil || len(x) != 8 || !strings.Contains(f.Note(), "4 of 6 frames") {
+		t.Errorf("%d samples, %v, note %q", len(x), err, f.Note())
+	}
+}
+
+func TestFaultsHaveTheirPlace(t *testing.T) {
+	good := flavour{tag: tagPCM, bits: 16, size: -1}.file(48000, 1, eighths)
+	change := func(at int, to ...byte) []byte {
+		b := bytes.Clone(good)
+		copy(b[at:], to)
+		return b
+	}
+	for name, c := range map[string]struct {
+		file        []byte
+		want        string
+		unsupported bool
+	}{
+		"empty":       {nil, "empty", false},
+		"short":       {good[:7], "header", false},
+		"other":       {[]byte("fLaC is not this, no"), "RIFF", false},
+		"RIFX":        {change(0, []byte("RIFX")...), "other order", true},
+		"not WAVE":    {change(8, []byte("AVI ")...), "WAVE", false},
+		"no chunks":   {good[:12], "no fmt chunk", false},
+		"no data":     {good[:36], "no data chunk", false},
+		"no frames":   {append(bytes.Clone(good[:40]), 0, 0, 0, 0), "not one frame", false},
+		"12 bits":     {change(34, 12), "12 bits", true},
+		"no channels": {change(22, 0), "0 channels", true},
+		"1 Hz":        {change(24, 1, 0, 0, 0), "1 Hz", true},
+		"compressed":  {change(20, 2), "format 2", true},
+		"wrong frame": {change(32, 3), "does not hold", false},
+		"not finite":  {flavour{tag: tagFloat, bits: 32, size: -1}.file(48000, 1, []float64{0, math.NaN()}), "frame 1", false},
+	} {
+		_, _, err := decode(t, c.file)
+		var fault *FormatError
+		if !errors.As(err, &fault) {
+			t.Errorf("%s: %v", name, err)
+			continue
+		}
+		if !strings.Contains(err.Error(), c.want) || fault.Unsupported != c.unsupported || fault.Remedy == "" || !strings.HasPrefix(err.Error(), "x.wav: ") {
+			t.Errorf("%s: %v (unsupported: %v)", name, err, fault.Unsupported)
+		}
+	}
+}
+
+// A small file that claims gigabytes takes neither time nor room.
+func TestClaimsCostNothing(t *testing.T) {
+	begun := time.Now()
+	big := flavour{tag: tagPCM, bits: 16, before: [][2]string{{"LIST", "INFO"}}, size: math.MaxUint32 - 1}.file(48000, 2, eighths)
+	copy(big[40:], "\xff\xff\xff\xfe") // the LIST's length
+	if _, _, err := decode(t, big); err == nil {
+		t.Error("a chunk beyond the file's end passed")
+	}
+	if f, x, err := decode(t, flavour{tag: tagPCM, bits: 16, size: math.MaxUint32 - 1}.file(48000, 2, eighths)); err != nil || len(x) != 12 || f.Note() == "" {
+		t.Errorf("%d samples, %v", len(x), err)
+	}
+	if allowed := 5 * time.Second; time.Since(begun) > allowed { // against the minutes that trusting the lengths takes
+		t.Errorf("took %v", time.Since(begun))
+	}
+}
+
+func TestRoundTrips(t *testing.T) {
+	rapid.Check(t, func(rt *rapid.T) {
+		f := rapid.SampledFrom([]flavour{
+			{tag: tagPCM, bits: 8, size: -1}, {tag: tagPCM, bits: 16, size: -1}, {tag: tagPCM, bits: 24, size: -1}, {tag: tagPCM, bits: 32, size: -1},
+			{tag: tagFloat, bits: 32, size: -1}, {tag: tagFloat, bits: 64, size: -1},
+		}).Draw(rt, "flavour")
+		channels := rapid.IntRange(1, 5).Draw(rt, "channels")
+		frames := rapid.IntRange(1, 40).Draw(rt, "frames")
+		codes := rapid.SliceOfN(rapid.IntRange(-128, 127), channels*frames, channels*frames).Draw(rt, "codes")
+		x := make([]float64, len(codes))
+		for i, c := range codes {
+			x[i] = float64(c) / 128
+		}
+		_, got, err := decode(t, f.file(8000, channels, x))
+		if err != nil || len(got) != len(x) {
+			rt.Fatalf("%d samples, %v", len(got), err)
+		}
+		for i := range x {
+			if got[i] != x[i] {
+				rt.Fatalf("sample %d: %g, want %g", i, got[i], x[i])
+			}
+		}
+	})
+}
+
+// FuzzNew reads whatever it is given, in bounded room: no more frames than bytes.
+func FuzzNew(f *testing.F) {
+	for _, x := range []flavour{{tag: tagPCM, bits: 16, size: -1}, {tag: tagFloat, bits: 32, size: -1}, {tag: tagPCM, bits: 24, extensible: true, valid: 20, size: -1}, {tag: tagPCM, bits: 16, rf64: true}, {tag: tagPCM, bits: 16, size: math.MaxUint32}} {
+		f.Add(x.file(48000, 2, eighths))
+	}
+	f.Fuzz(func(t *testing.T, file []byte) {
+		if len(file) > 1<<16 {
+			return
+		}
+		w, err := New("x.wav", bytes.NewReader(file))
+		if err != nil {
+			return
+		}
+		if w.Frames() > int64(len(file)) {
+			t.Fatalf("%d frames in %d bytes", w.Frames(), len(file))
+		}
+		x := make([]float64, 256*w.Channels())
+		for {
+			n, err := w.ReadFrames(x)
+			for _, v := range x[:n*w.Channels()] {
+				if err == nil && (math.IsNaN(v) || math.IsInf(v, 0)) {
+					t.Fatal("a sample that is no number")
+				}
+			}
+			if err != nil {
+				return
+			}
+		}
+	})
+}
