@@ -7,6 +7,7 @@ import (
 	"sort"
 
 	"midrail/chain/render"
+	"midrail/chain/residue"
 	"midrail/cmd/report"
 	"midrail/signals"
 	"midrail/signals/level"
@@ -19,8 +20,8 @@ const (
 	soundBytes = 3_300_000
 	// clearRate is the rate in Hz that the track is halved down to, so long as it stays at or above.
 	clearRate = 22050
-	// around is how much of the track comes with an overload, before and after it, in s.
-	around = 1.5
+	// mostPassages is how many passages of a long track a report holds, where they do not touch.
+	mostPassages = 4
 	// listenLevel is the A-weighted level in dBFS that sounds are brought to, at the most.
 	listenLevel = -20
 	// listenPeak is what their peaks may reach, in dB of full scale.
@@ -40,7 +41,7 @@ func shownRate(rate float64) float64 {
 }
 
 // listen puts together what there is to listen to in a report: the track, heard, and every layer that is not silent.
-func listen(out *folder, j job, r *render.Result, run *report.Run) (*report.Listen, []report.PlayerSound, error) {
+func listen(out *folder, j job, r *render.Result, res *residue.Residue, run *report.Run) (*report.Listen, []report.PlayerSound, error) {
 	trackRate, _ := run.Track.RateHz.Value()
 	rate, _ := run.Converter.RateHz.Value()
 	players := []report.Player{{Name: report.TrackSound}, {Name: report.Heard, File: "heard.wav"}}
@@ -52,7 +53,7 @@ func listen(out *folder, j job, r *render.Result, run *report.Run) (*report.List
 			players = append(players, report.Player{Name: l.Name, File: l.Name + ".wav"})
 		}
 	}
-	passages := passagesOf(r, soundBytes/2/(shownRate(trackRate)+float64(len(players)-1)*shownRate(rate)))
+	passages := passagesOf(r, res, soundBytes/2/(shownRate(trackRate)+float64(len(players)-1)*shownRate(rate)))
 	l := &report.Listen{}
 	for _, p := range passages {
 		l.Passages = append(l.Passages, report.Passage{FromS: report.Of(p[0]), ToS: report.Of(p[1])})
@@ -84,24 +85,28 @@ func listen(out *folder, j job, r *render.Result, run *report.Run) (*report.List
 }
 
 // passagesOf chooses the stretches of the track, in s, that a report holds: all of it where it is no longer than most
-// seconds; else those around the worst overloads, and where none are left the beginning.
-func passagesOf(r *render.Result, most float64) [][2]float64 {
+// seconds; else those around the worst overloads, then around the loudest fold-back and the loudest of what is heard,
+// then the beginning.
+func passagesOf(r *render.Result, res *residue.Residue, most float64) [][2]float64 {
 	if r.Seconds <= most {
 		return [][2]float64{{0, r.Seconds}}
 	}
 	events := append([]render.Event(nil), r.Events...)
 	sort.SliceStable(events, func(i, k int) bool { return events[i].Over > events[k].Over })
+	var centres []float64
+	for _, e := range events {
+		if e.Kind.Limits() {
+			centres = append(centres, e.From)
+		}
+	}
+	centres = append(centres, res.Layers[render.FoldBack].WorstAt, res.Heard.WorstAt, 0)
+	length := most / mostPassages
 	var list [][2]float64
-	for _, e := range append(events, render.Event{From: around}) {
-		if !e.Kind.Limits() {
-			continue
+	for _, c := range centres {
+		from := math.Max(0, math.Min(c-length/2, r.Seconds-length))
+		if with, total := joined(append(list, [2]float64{from, from + length})); total <= most*(1+1e-12) {
+			list = with
 		}
-		p := [2]float64{math.Max(0, e.From-around), math.Min(r.Seconds, e.From+around)}
-		with, total := joined(append(list, p))
-		if total > most {
-			continue
-		}
-		list = with
 	}
 	return list
 }

@@ -27,7 +27,7 @@ const (
 func writePage(n *circuit.Network, j job, out *folder, run *report.Run, r *render.Result, res *residue.Residue, budget *noise.Budget) error {
 	p := picturesOf(n, r, res, budget)
 	var err error
-	if run.Listen, p.Sounds, err = listen(out, j, r, run); err != nil {
+	if run.Listen, p.Sounds, err = listen(out, j, r, res, run); err != nil {
 		return err
 	}
 	for _, name := range []string{report.Heard, report.FoldBack} {

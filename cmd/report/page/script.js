@@ -43,7 +43,7 @@ function seek(time) {
 
 for (const link of all("[data-seek]")) {
 	link.addEventListener("click", event => {
-		if (seek(Math.max(0, Number(link.dataset.seek) - 0.25))|| seek(Number(link.dataset.seek))) event.preventDefault();
+		if (seek(Math.max(0, Number(link.dataset.seek) - 0.25)) || seek(Number(link.dataset.seek))) event.preventDefault();
 	});
 }
 
@@ -175,14 +175,20 @@ for (const svg of all("svg[data-area]")) {
 			event.preventDefault();
 			read(at + step);
 		} else if (event.key === "Enter" && "seeks" in svg.dataset) {
-			seek(x.from(at));
+			play(x.from(at));
 		}
 	});
+	const play = time => {
+		if (!seek(time)) told.textContent = clock(time) + " is in none of the passages that the players hold.";
+	};
 	if ("seeks" in svg.dataset && sounds.length) {
 		svg.classList.add("seeks");
+		const caption = holder.querySelector("figcaption");
+		if (!caption.dataset.told) caption.append(" Click, or press Enter, to play from there.");
+		caption.dataset.told = "";
 		svg.addEventListener("click", event => {
 			const [share] = where(event);
-			if (share >= 0 && share <= 1) seek(x.from(share));
+			if (share >= 0 && share <= 1) play(x.from(share));
 		});
 	}
 }
