@@ -80,13 +80,14 @@ type Change struct {
 const lower = 3
 
 // Best tries one change at a time - each stage with its resistors a third and its capacitors three times as large,
-// which keeps its response; each amplifier entry with the noise of another class - and returns the one that takes off
-// most noise. Its gain is 0 where none helps.
+// which keeps its response; each amplifier entry with the noise of another class; a converter of two more bits - and
+// returns the one that takes off most noise, rounding included, against the gain of the inputs at 1 kHz: what only makes
+// everything quieter helps nothing. Its gain is 0 where none helps.
 func Best(n *circuit.Network) Change {
-	before := At(n).Power
+	before := againstGain(n)
 	best := Change{Words: "nothing that was tried helps"}
 	try := func(with *circuit.Network, words string) {
-		if gain := 10 * math.Log10(before/At(with).Power); gain > best.Gain {
+		if gain := before - againstGain(with); gain > best.Gain {
 			best = Change{words, gain}
 		}
 	}
@@ -106,7 +107,26 @@ func Best(n *circuit.Network) Change {
 			try(n.WithNoiseOf(entry.Name, m), "for "+entry.Name+" an amplifier with the noise of the class "+class)
 		}
 	}
+	finer, c := *n, *n.Chain
+	c.Converter.Bits += 2
+	if c.Converter.ENOB > 0 {
+		c.Converter.ENOB += 2
+	}
+	finer.Chain = &c
+	try(&finer, "a converter of two more bits")
 	return best
+}
+
+// againstGain returns noise and rounding in dB of V², less the mean gain in dB of the inputs at 1 kHz.
+func againstGain(n *circuit.Network) float64 {
+	c := &n.Chain.Converter
+	step := (c.High - c.Low) / math.Exp2(float64(c.Bits))
+	db := 10 * math.Log10(At(n).Power+step*step/12)
+	into := n.At(1000).Into(n.Output)
+	for i := range n.Inputs {
+		db -= circuit.Gain(into.Input(circuit.SoundInput(i))) / float64(len(n.Inputs))
+	}
+	return db
 }
 
 // scaled returns the network with a stage's impedances a third of what they are.

@@ -3,6 +3,7 @@ package noise
 import (
 	"fmt"
 	"math"
+	"strings"
 	"testing"
 
 	"midrail/chain"
@@ -197,5 +198,50 @@ high = 5
 	// A second-order corner at 25 kHz takes a little of the band's top and lets a little beyond it in.
 	if got := f.Inputs[0].Value; !(math.Abs(got-30) <= 0.1) || f.Inputs[0].Unit != "dB SPL(A)" {
 		t.Errorf("equivalent input noise %.3f %s, want 30 dB SPL(A)", got, f.Inputs[0].Unit)
+	}
+}
+
+// Where resistors make all the noise, a third of them makes a third of the power: 4.77 dB less. A source's resistance in
+// front of it makes that less gain, too, and no help.
+func TestBestChangeIsTried(t *testing.T) {
+	text := `
+[supply]
+voltage = "5V"
+[bias.half]
+top = "10k"
+bottom = "10k"
+bypass = "1m"
+buffer = "one"
+[amplifier.one]
+class = "ideal"
+[input.line]
+kind = "line"
+full_scale = "1Vrms"
+source_resistance = %q
+[[stage]]
+name = "it"
+kind = "inverting"
+from = "line"
+amplifier = "one"
+bias = "half"
+r_in = "1M"
+c_f = "100p"
+r_f = "1M"
+[converter]
+from = "it"
+rate = 48000
+bits = 24
+high = 5
+`
+	best := Best(parse(t, fmt.Sprintf(text, "0R")))
+	near(t, "gain", best.Gain, 10*math.Log10(3), 1e-3)
+	if !strings.Contains(best.Words, "resistors of it") {
+		t.Errorf("it says %q", best.Words)
+	}
+	// Output noise is 4kT·r_f·(1 + g) with g = r_f/(Rs + r_in); with g² it is 1·1.5/0.25 = 6 before, and with a third of
+	// both resistors (1/3)·1.25/0.0625 = 6.7: less noise, and still less gain.
+	best = Best(parse(t, fmt.Sprintf(text, "1M")))
+	if strings.Contains(best.Words, "resistors of it") {
+		t.Errorf("behind 1 MΩ it says %q, %g dB", best.Words, best.Gain)
 	}
 }

@@ -1,7 +1,7 @@
 // Package ripple follows what of the supply comes to the converter, and by which way.
 //
 // The network is linear, so the supply's way to the converter is the sum of its ways through every part that touches
-// it: with the supply held still elsewhere, a resistor R from the supply to a node is a current vs/R into that node. An
+// it: with the supply held still elsewhere, a part Y from the supply to a node is a current vs·Y into that node. An
 // amplifier's share is its supply rejection, and a converter whose span follows the supply sees its rest point move:
 //
 //	−(Vrest − low)/(high − low)  V a V
@@ -48,21 +48,28 @@ func Find(n *circuit.Network, at bilinear.Operating, frequencies []float64) *Rip
 		exact := n.At(f)
 		supply := exact.FromInput(circuit.SupplyInput)[n.Supply]
 		into := n.HeldSupply(f).Into(n.Output)
-		for _, p := range n.Resistors {
+		through := func(p circuit.Component, admittance complex128) {
 			node := p.B
 			if p.B == n.Supply {
 				node = p.A
 			} else if p.A != n.Supply {
-				continue
+				return
 			}
-			if p.Part.Key == "resistance" || p.Virtual {
-				continue
+			if !p.Virtual {
+				add(p.Part.Name, i, supply*admittance*into.Current(circuit.Ground, node))
 			}
-			add(p.Part.Name, i, supply*complex(1/p.Part.Value, 0)*into.Current(circuit.Ground, node))
+		}
+		for _, p := range n.Resistors {
+			if p.Part.Key != "resistance" {
+				through(p, complex(1/p.Part.Value, 0))
+			}
+		}
+		for _, p := range n.Capacitors {
+			through(p, complex(0, 2*math.Pi*f*p.Part.Value))
 		}
 		for k, a := range n.Amplifiers {
 			if gain := n.SupplyTerm(k, f); gain != 0 {
-				add(a.Name+", supply rejection", i, supply*gain*into.AmplifierInput(k))
+				add(a.Name+", rejection", i, supply*gain*into.AmplifierInput(k))
 			}
 		}
 		r.Total[i] = exact.FromInput(circuit.SupplyInput)[n.Output]

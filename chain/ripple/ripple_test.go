@@ -57,3 +57,56 @@ func TestCapsuleFeedIsTheWorstPath(t *testing.T) {
 		t.Errorf("the filter takes off %.1f dB", -down)
 	}
 }
+
+// A network stage may hang anything on the supply: here 10 kΩ and 1 nF into a node with 10 kΩ to ground, of which the paths
+// are R/2 each over 1 + s·RC/2.
+func TestPartsFromTheSupply(t *testing.T) {
+	c, err := chain.Read("test.toml", []byte(`
+[supply]
+voltage = "5V"
+[input.line]
+kind = "line"
+full_scale = "1Vrms"
+[[stage]]
+name = "it"
+kind = "network"
+from = "line"
+part = [
+  { c = "1p", between = ["in", "out"] }, { r = "10k", between = ["supply", "out"] },
+  { c = "1n", between = ["out", "supply"] }, { r = "10k", between = ["out", "ground"] },
+]
+[converter]
+from = "it"
+rate = 48000
+bits = 12
+high = "supply"
+`), nil)
+	if err != nil {
+		t.Fatal(err)
+	}
+	n := circuit.New(c)
+	at, err := n.Rest()
+	if err != nil {
+		t.Fatal(err)
+	}
+	const f = 20e3
+	r := Find(n, at, []float64{f})
+	s := complex(0, 2*math.Pi*f)
+	z := 1 / (2e-4 + s*1.001e-9)
+	want := map[complex128]bool{1e-4 * z: false, s * 1e-9 * z: false, -0.5: false} // the last is the span's
+	for _, p := range r.Paths {
+		for w := range want {
+			if cmplx.Abs(p.Gain[0]-w) < 1e-12 {
+				want[w] = true
+			}
+		}
+	}
+	for w, found := range want {
+		if !found {
+			t.Errorf("no path of %v among %v", w, r.Paths)
+		}
+	}
+	if apart := r.Apart(); !(apart <= 1e-12) || len(r.Paths) != 3 {
+		t.Errorf("%d paths, %g V a V from the total", len(r.Paths), apart)
+	}
+}

@@ -2,6 +2,7 @@ package command
 
 import (
 	"io"
+	"math"
 	"math/cmplx"
 
 	"github.com/spf13/cobra"
@@ -83,7 +84,7 @@ func rippleJSON(n *circuit.Network, r *ripple.Ripple) rippleResult {
 
 func printRipple(w io.Writer, r *ripple.Ripple) error {
 	t := report.NewText(w)
-	t.Line("mV at the converter for each mV of the supply")
+	t.Line("µV at the converter for each mV of the supply; 1000 would be all of it")
 	t.Line("")
 	head := []string{"by way of"}
 	for _, f := range r.Frequencies {
@@ -92,7 +93,7 @@ func printRipple(w io.Writer, r *ripple.Ripple) error {
 	row := func(name string, gains []complex128) []string {
 		cells := []string{name}
 		for _, g := range gains {
-			cells = append(cells, report.Plain(report.Of(cmplx.Abs(g)), 3))
+			cells = append(cells, report.Plain(report.Of(math.Round(cmplx.Abs(g)*1e6)/1e3), 3))
 		}
 		return cells
 	}
