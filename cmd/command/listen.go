@@ -4,6 +4,7 @@ import (
 	"errors"
 	"io"
 	"math"
+	"slices"
 	"sort"
 
 	"midrail/chain/render"
@@ -155,56 +156,53 @@ func cutTrack(open func() (signals.Track, error), passages [][2]float64) ([]floa
 	return x, rate, nil
 }
 
-// cut takes the passages out of a stream, one after another. They begin and end softly where they do not with the track.
+// cut takes the passages out of a stream, one after another. They end softly, and begin so but at the track's beginning.
 func cut(s signals.Stream, rate float64, passages [][2]float64) ([]float64, error) {
 	var all []float64
-	block := make([]float64, 4096)
-	at := 0     // the block's first sample
-	begun := -1 // where in all the passage began
-	for len(passages) > 0 {
-		n, err := s.Read(block)
-		if err != nil && !errors.Is(err, io.EOF) {
-			return nil, err
-		}
-		for i, v := range block[:n] {
-			for len(passages) > 0 && at+i >= int(math.Round(passages[0][1]*rate)) {
-				if begun >= 0 {
-					soften(all[begun:], passages[0][0] > 0, true, rate)
-				}
-				passages, begun = passages[1:], -1
-			}
-			if len(passages) == 0 {
-				return all, nil
-			}
-			if at+i >= int(math.Round(passages[0][0]*rate)) {
-				if begun < 0 {
-					begun = len(all)
-				}
-				all = append(all, v)
+	at := 0 // samples read
+	between := make([]float64, blockSamples)
+	for _, p := range passages {
+		from, to := int(math.Round(p[0]*rate)), int(math.Round(p[1]*rate))
+		for at < from {
+			n, err := s.Read(between[:min(len(between), from-at)])
+			if at += n; err != nil {
+				return all, unlessEnd(err)
 			}
 		}
-		at += n
-		if err != nil {
-			if begun >= 0 {
-				soften(all[begun:], passages[0][0] > 0, false, rate)
+		begun := len(all)
+		all = slices.Grow(all, to-from)[:begun+to-from]
+		for k := begun; k < len(all); {
+			n, err := s.Read(all[k:min(len(all), k+blockSamples)])
+			at, k = at+n, k+n
+			if err != nil {
+				return all[:k], unlessEnd(err)
 			}
-			break
 		}
+		soften(all[begun:], p[0] > 0, rate)
 	}
 	return all, nil
 }
 
-// soften fades a passage in and out.
-func soften(x []float64, in, out bool, rate float64) {
+// blockSamples is how many samples are read at once.
+const blockSamples = 4096
+
+// unlessEnd returns err but where it is the end of a stream.
+func unlessEnd(err error) error {
+	if errors.Is(err, io.EOF) {
+		return nil
+	}
+	return err
+}
+
+// soften fades a passage out, and in where that is wanted.
+func soften(x []float64, in bool, rate float64) {
 	n := min(int(fade*rate), len(x)/2)
 	for i := range n {
 		gain := (float64(i) + 0.5) / float64(n)
 		if in {
 			x[i] *= gain
 		}
-		if out {
-			x[len(x)-1-i] *= gain
-		}
+		x[len(x)-1-i] *= gain
 	}
 }
 
