@@ -83,6 +83,9 @@ func Find(n *circuit.Network) (*Rest, error) {
 		r.Capacitors = append(r.Capacitors, Capacitor{Part: c.Part, Volts: at.Volts[a] - at.Volts[b], Positive: n.Nodes[a], Negative: n.Nodes[b]})
 	}
 	for _, x := range n.Resistors {
+		if x.Part.Key == "resistance" {
+			continue // the supply's own, through which all of it comes
+		}
 		switch n.Supply {
 		case x.A:
 			r.Supply += (at.Volts[x.A] - at.Volts[x.B]) / x.Part.Value

@@ -208,6 +208,14 @@ r_f = "47k"
 	}
 }
 
+// Behind 10 kΩ of its own the supply drives 50 kΩ + 50 kΩ with 30 µA.
+func TestSupplyCurrentBehindItsResistance(t *testing.T) {
+	_, r := find(t, supply+"resistance = \"10k\"\n"+line+"[[stage]]\nname = \"it\"\nkind = \"biased coupling\"\nfrom = \"line\"\nc = \"1u\"\ntop = \"50k\"\nbottom = \"50k\"\n"+tail)
+	near(t, "supply current", r.Supply, 30e-6, 1e-15)
+	near(t, "supply", r.node(t, "supply").Volts, 3, solved)
+	near(t, "output", r.node(t, "it").Volts, 1.5, solved)
+}
+
 // A gain of 11 from DC on puts 1.65 V at 18.15 V; with a capacitor in its leg it is 1 at DC.
 func TestGainFromDCOn(t *testing.T) {
 	stage := "[[stage]]\nname = \"it\"\nkind = \"non-inverting\"\nfrom = \"line\"\namplifier = \"one\"\nbias = \"half\"\n" +

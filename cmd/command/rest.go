@@ -108,6 +108,10 @@ func restJSON(n *circuit.Network, r *rest.Rest) restResult {
 	return out
 }
 
+// leastShare is the least in V, for what there is and for a mV or a nA of it, that is printed of what moves the
+// converter's input.
+const leastShare = 1e-9
+
 func printRest(w io.Writer, n *circuit.Network, r *rest.Rest) error {
 	of, t := report.Of, report.NewText(w)
 	t.Line("At rest, to be found with a meter or a scope against ground:")
@@ -137,17 +141,26 @@ func printRest(w io.Writer, n *circuit.Network, r *rest.Rest) error {
 	t.Line("From the supply, amplifiers' own current apart: %s", report.Amperes(of(r.Supply)))
 	t.Line("")
 	rows = nil
+	unseen := 0
 	for _, x := range r.Shares {
-		per := report.Volts(of(x.Gain*1e-3)) + " per mV"
+		per, unit := x.Gain*1e-3, " per mV"
 		if x.Kind == "bias current" {
-			per = report.Volts(of(x.Gain*1e-9)) + " per nA"
+			per, unit = x.Gain*1e-9, " per nA"
 		}
-		rows = append(rows, []string{x.Name + ", " + x.Kind, report.Volts(of(x.Volts)), report.Plain(of(x.Volts/lsbOf(n)), 3), per})
+		if math.Abs(x.Volts) < leastShare && math.Abs(per) < leastShare {
+			unseen++
+			continue
+		}
+		lsb := math.Round(x.Volts/lsbOf(n)*1e5) / 1e5
+		rows = append(rows, []string{x.Name + ", " + x.Kind, report.Volts(of(x.Volts)), report.Plain(of(lsb), 3), report.Volts(of(per)) + unit})
 	}
 	t.Table([]string{"moves the converter's input", "by", "LSB", "that is"}, rows)
+	if unseen > 0 {
+		t.Line("and %d more by less than a nanovolt; --json tells all", unseen)
+	}
 	t.Line("")
 	t.Line("After power-up, every capacitor empty:")
-	usable := "never: an amplifier rests too near a limit for 1 % of full scale"
+	usable := "never: an amplifier rests at a limit, or too near"
 	if !math.IsInf(r.Settling.Usable, 1) {
 		usable = report.Seconds(of(r.Settling.Usable)) + "  (no limit touched, 1 % of full scale finds room)"
 	}
