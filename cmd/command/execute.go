@@ -422,12 +422,12 @@ func describe(n *circuit.Network, tracks *openedTracks, r *render.Result, res *r
 	for _, w := range r.Waveforms {
 		run.Waveforms = append(run.Waveforms, report.Waveform{Stage: w.Owner, Kind: string(w.Kind), AtS: of(w.At), OverDB: of(w.Over)})
 	}
-	settling, err := rest.Settle(n, r.At)
+	atRest, err := rest.Find(n)
 	if err != nil {
 		return nil, err
 	}
-	run.Rest, run.Noise, run.Parts = restOf(n, r.At, settling), noiseOf(c, r.Span, budget), partsOf(c)
-	for _, l := range residue.Limits(n, r, res, settling.OnePercent) {
+	run.Rest, run.Noise, run.Parts = restOf(c, atRest), noiseOf(c, r.Span, budget), partsOf(c)
+	for _, l := range residue.Limits(n, r, res, atRest.Settling.OnePercent) {
 		run.Limits = append(run.Limits, report.Limit{Name: l.Name, Limit: of(l.Limit), Value: of(l.Value), Holds: l.Holds})
 	}
 	for _, f := range residue.Findings(n, r, res) {

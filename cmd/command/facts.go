@@ -4,9 +4,7 @@ import (
 	"math"
 	"strings"
 
-	"midrail/bilinear"
 	"midrail/chain"
-	"midrail/chain/circuit"
 	"midrail/chain/noise"
 	"midrail/chain/preferred"
 	"midrail/chain/render"
@@ -16,21 +14,16 @@ import (
 )
 
 // restOf returns the chain without sound.
-func restOf(n *circuit.Network, at bilinear.Operating, settling rest.Settling) report.Rest {
-	r := report.Rest{
-		SupplyV:  report.Of(n.Chain.Supply.Voltage),
-		Settling: report.Settling{ToPercentS: report.Of(settling.OnePercent), ToLSBS: report.Of(settling.LSB)},
+func restOf(c *chain.Chain, r *rest.Rest) report.Rest {
+	of := report.Of
+	out := report.Rest{
+		SupplyV: of(c.Supply.Voltage), SupplyA: of(r.Supply),
+		Settling: report.Settling{ToPercentS: of(r.Settling.OnePercent), ToLSBS: of(r.Settling.LSB), UsableS: of(r.Settling.Usable)},
 	}
-	current := map[int]bool{} // nodes that stand for a capsule's current, not for a voltage
-	for i := range n.Inputs {
-		current[n.Inputs[i].Drive] = n.Chain.Inputs[i].Kind == chain.Electret
+	for _, n := range r.Nodes {
+		out.Nodes = append(out.Nodes, report.Node{Name: n.Name, Volts: of(n.Volts), LimitLowV: of(n.Low), LimitHighV: of(n.High), Word: n.Word})
 	}
-	for i, name := range n.Nodes {
-		if i != circuit.Ground && !current[i] {
-			r.Nodes = append(r.Nodes, report.Node{Name: name, Volts: report.Of(at.Volts[i])})
-		}
-	}
-	return r
+	return out
 }
 
 // noiseOf returns the noise budget.

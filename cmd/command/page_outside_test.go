@@ -13,6 +13,7 @@ import (
 	"os"
 	"os/exec"
 	"path/filepath"
+	"strconv"
 	"strings"
 	"sync"
 	"testing"
@@ -275,6 +276,9 @@ func TestPagesInABrowser(t *testing.T) {
 				t.Error("a name ran as script")
 			}
 			keyboard(t, b)
+			if filepath.Base(name) == "report.html" {
+				figures(t, b, filepath.Dir(path))
+			}
 		})
 	}
 	for _, name := range []string{"demo", "long"} {
@@ -284,6 +288,45 @@ func TestPagesInABrowser(t *testing.T) {
 	t.Run("reading", func(t *testing.T) { reading(t, b, filepath.Join(dir, "demo")) })
 	t.Run("printed", func(t *testing.T) { printed(t, b, filepath.Join(dir, "six")) })
 	t.Run("without script", func(t *testing.T) { withoutScript(t, b, filepath.Join(dir, "demo")) })
+}
+
+// figures holds every figure that the page shows against the place in report.json that it names.
+func figures(t *testing.T, b *browser, folder string) {
+	t.Helper()
+	data, err := os.ReadFile(filepath.Join(folder, "report.json"))
+	if err != nil {
+		t.Fatal(err)
+	}
+	var tree any
+	if err := json.Unmarshal(data, &tree); err != nil {
+		t.Fatal(err)
+	}
+	shown := evaluate[[][2]string](t, b, `[...document.querySelectorAll("data[data-at]")].map(d => [d.dataset.at, d.value])`)
+	if len(shown) < 60 {
+		t.Errorf("only %d figures are on the page", len(shown))
+	}
+	for _, s := range shown {
+		at := tree
+		for _, step := range strings.Split(s[0], ".") {
+			switch v := at.(type) {
+			case map[string]any:
+				at = v[step]
+			case []any:
+				i, err := strconv.Atoi(step)
+				if err != nil || i >= len(v) {
+					t.Fatalf("%s: no such place", s[0])
+				}
+				at = v[i]
+			}
+		}
+		want := ""
+		if x, is := at.(float64); is {
+			want = strconv.FormatFloat(x, 'g', -1, 64)
+		}
+		if s[1] != want {
+			t.Errorf("%s is %q on the page, %q in report.json", s[0], s[1], want)
+		}
+	}
 }
 
 // keyboard presses Tab through the page and fails where something that can be used is not reached, or shows no focus.

@@ -18,7 +18,7 @@ var prefixes = map[string]float64{"": 1, "G": 1e9, "M": 1e6, "k": 1e3, "m": 1e-3
 
 var (
 	clockText = regexp.MustCompile(`^(?:(\d+):)?(\d+):(\d\d\.\d)$`)
-	unitText  = regexp.MustCompile(`^([+−±]?)([\d ]+)(\.\d+)? ?(%|LSB|dBFS|dB|[GMkmµnp]?(?:V|Hz|s|Ω|F)|)$`)
+	unitText  = regexp.MustCompile(`^([+−±]?)([\d ]+)(\.\d+)? ?(%|LSB|dBFS|dB|[GMkmµnp]?(?:V|A|Hz|s|Ω|F)|)$`)
 )
 
 // read returns the figure that a text shows, in SI units, and by how much rounding may have moved it.
@@ -147,7 +147,7 @@ func TestWordsTellTheFiguresOfTheJSON(t *testing.T) {
 		if !is {
 			continue
 		}
-		for _, say := range []func(Number) string{dbfs, decibels, volts, hertz, seconds, clock, percent, errorDB, plusMinus} {
+		for _, say := range []func(Number) string{dbfs, decibels, volts, Amperes, hertz, seconds, clock, percent, errorDB, plusMinus} {
 			for _, n := range numberText.FindAllString(say(Of(x)), -1) {
 				forms[strings.TrimSpace(n)] = true
 			}

@@ -67,7 +67,9 @@ func example() *Run {
 		Noise: Budget{NoiseTotal{n(0.00031), n(-66.1), n(0.176)}, []NoiseSource{
 			{"capsule amp.r_in", "thermal", n(0.0003), n(0.94)}, {"capsule amp", "amplifier voltage", n(0.00008), n(0.06)},
 		}},
-		Rest: Rest{n(3.3), []Node{{"supply", n(3.3)}, {"half", n(0.9)}, {"capsule amp", n(0.897)}}, Settling{n(0.84), n(1.9)}},
+		Rest: Rest{n(3.3), n(0.000316), []Node{
+			{"supply", n(3.3), Number{}, Number{}, ""}, {"half", n(0.9), Number{}, Number{}, ""}, {"capsule amp", n(0.897), n(0.02), n(1.8), "its inputs rest outside their common-mode range"},
+		}, Settling{n(0.84), n(1.9), n(0.51)}},
 		Parts: []Part{
 			{"R1", "half", "divider, upper resistor", "top", n(150e3), Ohm, "E24", n(0.05)},
 			{"", "half", "bypass capacitor", "bypass", n(10e-6), Farad, "E12", n(0.1)},
@@ -279,9 +281,9 @@ func TestJSONKeys(t *testing.T) {
 		"noise":           "total sources",
 		"noise.total":     "v dbfs lsb",
 		"noise.sources":   "name kind v share",
-		"rest":            "supply_v nodes settling",
-		"rest.nodes":      "name volts",
-		"rest.settling":   "to_1_percent_s to_1_lsb_s",
+		"rest":            "supply_v supply_a nodes settling",
+		"rest.nodes":      "name volts limit_low_v limit_high_v word",
+		"rest.settling":   "to_1_percent_s to_1_lsb_s usable_s",
 		"parts":           "ref stage role key value unit series tolerance",
 		"listen":          "passages players",
 		"listen.passages": "from_s to_s",

@@ -171,20 +171,25 @@ type NoiseSource struct {
 // Rest is the chain without sound.
 type Rest struct {
 	SupplyV  Number   `json:"supply_v"`
+	SupplyA  Number   `json:"supply_a"` // what dividers, capsules and loads draw; the amplifiers' own current apart
 	Nodes    []Node   `json:"nodes"`
 	Settling Settling `json:"settling"`
 }
 
 // Node is the voltage that a node rests at.
 type Node struct {
-	Name  string `json:"name"`
-	Volts Number `json:"volts"`
+	Name       string `json:"name"`
+	Volts      Number `json:"volts"`
+	LimitLowV  Number `json:"limit_low_v"`  // not there where no amplifier drives the node
+	LimitHighV Number `json:"limit_high_v"` // not there where no amplifier drives the node
+	Word       string `json:"word"`         // what is wrong; mostly empty
 }
 
 // Settling is how long the converter's input takes to come to rest after power-up.
 type Settling struct {
 	ToPercentS Number `json:"to_1_percent_s"`
 	ToLSBS     Number `json:"to_1_lsb_s"`
+	UsableS    Number `json:"usable_s"` // from when on no limit is touched and 1 % of full scale finds room
 }
 
 // Units of parts.
