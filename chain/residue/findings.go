@@ -8,6 +8,7 @@ import (
 	"midrail/chain/circuit"
 	"midrail/chain/quantity"
 	"midrail/chain/render"
+	"midrail/chain/response"
 	"midrail/chain/room"
 )
 
@@ -38,10 +39,12 @@ const (
 	offCentre = 3
 )
 
-// Findings returns what there is to say of a run, the gravest first.
-func Findings(n *circuit.Network, r *render.Result, res *Residue) []Finding {
+// Findings returns what there is to say of a run of a network whose amplifiers' loops have the given margins, the gravest
+// first.
+func Findings(n *circuit.Network, r *render.Result, res *Residue, margins []response.Margin) []Finding {
 	f := &finder{n: n, r: r, res: res}
 	f.resting()
+	f.loops(margins)
 	f.overloads()
 	f.foldBack()
 	f.unseen()
@@ -66,6 +69,15 @@ type finder struct {
 
 func (f *finder) say(s Severity, about, format string, args ...any) {
 	f.list = append(f.list, Finding{s, about, fmt.Sprintf(format, args...)})
+}
+
+// loops tells of amplifiers that are near to oscillating.
+func (f *finder) loops(margins []response.Margin) {
+	for _, m := range margins {
+		if m.Phase < response.Wary {
+			f.say(Caution, m.Amplifier, "the loop of %s has %.0f° of phase margin left: it rings, and may oscillate; a capacitor on its output wants a resistor in between", m.Amplifier, m.Phase)
+		}
+	}
 }
 
 // resting tells of amplifiers that rest on a limit or whose inputs rest outside their range.

@@ -18,6 +18,7 @@ import (
 	"midrail/chain/noise"
 	"midrail/chain/render"
 	"midrail/chain/residue"
+	"midrail/chain/response"
 	"midrail/chain/rest"
 	"midrail/cmd/report"
 	"midrail/signals"
@@ -426,11 +427,13 @@ func describe(n *circuit.Network, tracks *openedTracks, r *render.Result, res *r
 	if err != nil {
 		return nil, err
 	}
-	run.Rest, run.Noise, run.Parts = restOf(c, atRest), noiseOf(c, r.Span, budget), partsOf(c)
+	run.Rest, run.Noise, run.Parts = restOf(c, atRest), noiseOf(n, budget), partsOf(c)
+	margins := response.Margins(n)
+	run.Margins, run.SupplyPaths = marginsOf(margins), supplyOf(n, r.At)
 	for _, l := range residue.Limits(n, r, res, atRest.Settling.OnePercent) {
 		run.Limits = append(run.Limits, report.Limit{Name: l.Name, Limit: of(l.Limit), Value: of(l.Value), Holds: l.Holds})
 	}
-	for _, f := range residue.Findings(n, r, res) {
+	for _, f := range residue.Findings(n, r, res, margins) {
 		run.Findings = append(run.Findings, report.Finding{Severity: string(f.Severity), About: f.About, Text: f.Text})
 	}
 	return run, nil

@@ -4,13 +4,15 @@ import (
 	"math"
 	"strings"
 
+	"midrail/bilinear"
 	"midrail/chain"
+	"midrail/chain/circuit"
 	"midrail/chain/noise"
 	"midrail/chain/preferred"
-	"midrail/chain/render"
+	"midrail/chain/response"
 	"midrail/chain/rest"
+	"midrail/chain/ripple"
 	"midrail/cmd/report"
-	"midrail/signals/level"
 )
 
 // restOf returns the chain without sound.
@@ -23,16 +25,47 @@ func restOf(c *chain.Chain, r *rest.Rest) report.Rest {
 	for _, n := range r.Nodes {
 		out.Nodes = append(out.Nodes, report.Node{Name: n.Name, Volts: of(n.Volts), LimitLowV: of(n.Low), LimitHighV: of(n.High), Word: n.Word})
 	}
+	for _, x := range r.Capacitors {
+		out.Capacitors = append(out.Capacitors, report.Capacitor{Part: x.Part.Name, Volts: of(x.Volts), Positive: x.Positive, Negative: x.Negative})
+	}
 	return out
 }
 
 // noiseOf returns the noise budget.
-func noiseOf(c *chain.Chain, span render.Span, b *noise.Budget) report.Budget {
-	v := math.Sqrt(b.Power)
-	step := (c.Converter.High - c.Converter.Low) / math.Exp2(float64(c.Converter.Bits))
-	out := report.Budget{Total: report.NoiseTotal{V: report.Of(v), DBFS: report.Of(level.DBFS(v / span.Unit())), LSB: report.Of(v / step)}}
+func noiseOf(n *circuit.Network, b *noise.Budget) report.Budget {
+	of, f := report.Of, b.Figures(n)
+	out := report.Budget{Total: report.NoiseTotal{V: of(f.Volts), DBFS: of(f.DBFS), DBFSA: of(f.A), LSB: of(f.LSB), UsefulBits: of(f.UsefulBits)}}
 	for _, s := range b.Sources {
-		out.Sources = append(out.Sources, report.NoiseSource{Name: s.Name, Kind: string(s.Kind), V: report.Of(math.Sqrt(s.Power)), Share: report.Of(s.Power / b.Power)})
+		out.Sources = append(out.Sources, report.NoiseSource{Name: s.Name, Kind: string(s.Kind), V: of(math.Sqrt(s.Power)), Share: of(s.Power / b.Power)})
+	}
+	for _, e := range f.Inputs {
+		out.Inputs = append(out.Inputs, report.NoiseInput{Input: e.Input, Value: of(e.Value), Unit: e.Unit})
+	}
+	return out
+}
+
+// marginsOf returns the margins of the amplifiers' loops.
+func marginsOf(margins []response.Margin) []report.Margin {
+	var list []report.Margin
+	for _, m := range margins {
+		list = append(list, report.Margin{Amplifier: m.Amplifier, CrossoverHz: report.Of(m.Crossover), PhaseDeg: report.Of(m.Phase), GainDB: report.Of(m.Gain)})
+	}
+	return list
+}
+
+// supplyOf returns what comes from the supply to the converter, at mains ripple's frequency and two of the audible.
+func supplyOf(n *circuit.Network, at bilinear.Operating) report.SupplyPaths {
+	r := ripple.Find(n, at, []float64{100, 1e3, 10e3})
+	var out report.SupplyPaths
+	for _, f := range r.Frequencies {
+		out.Hz = append(out.Hz, report.Of(f))
+	}
+	for _, p := range append(r.Paths, ripple.Path{Name: "all together", Gain: r.Total}) {
+		one := report.Path{Name: p.Name}
+		for _, g := range p.Gain {
+			one.DB = append(one.DB, report.Of(circuit.Gain(g)))
+		}
+		out.Paths = append(out.Paths, one)
 	}
 	return out
 }

@@ -98,7 +98,7 @@ func fill(w io.Writer, name string, data func(head template.HTML) any) error {
 		return err
 	}
 	t, err := template.New(name).Funcs(template.FuncMap{
-		"clean": clean, "dbfs": dbfs, "db": decibels, "signed": signed, "errorDB": errorDB, "volts": volts, "amperes": Amperes,
+		"clean": clean, "dbfs": dbfs, "db": decibels, "signed": signed, "errorDB": errorDB, "volts": volts, "amperes": Amperes, "degrees": Degrees, "digits": Plain,
 		"hertz": hertz, "seconds": seconds, "clock": clock, "percent": percent, "scaled": scaled, "count": count, "lsb": lsb,
 		"times": times, "plural": plural, "limitName": limitName, "limitValue": limitValue, "limitWord": limitWord, "limitFigure": limitFigure,
 		"lengthOf": lengthOf, "partValue": partValue, "plusMinus": plusMinus, "slug": slug,

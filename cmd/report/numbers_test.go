@@ -18,7 +18,7 @@ var prefixes = map[string]float64{"": 1, "G": 1e9, "M": 1e6, "k": 1e3, "m": 1e-3
 
 var (
 	clockText = regexp.MustCompile(`^(?:(\d+):)?(\d+):(\d\d\.\d)$`)
-	unitText  = regexp.MustCompile(`^([+−±]?)([\d ]+)(\.\d+)? ?(%|LSB|dBFS|dB|[GMkmµnp]?(?:V|A|Hz|s|Ω|F)|)$`)
+	unitText  = regexp.MustCompile(`^([+−±]?)([\d ]+)(\.\d+)? ?(%|°|LSB|dBFS|dB|[GMkmµnp]?(?:V|A|Hz|s|Ω|F)|)$`)
 )
 
 // read returns the figure that a text shows, in SI units, and by how much rounding may have moved it.
@@ -46,7 +46,7 @@ func read(t *testing.T, text string) (value, half float64) {
 	switch unit := m[4]; unit {
 	case "%":
 		scale = 0.01
-	case "LSB", "dBFS", "dB", "":
+	case "LSB", "dBFS", "dB", "°", "":
 	default:
 		scale = prefixes[unit[:len(unit)-len(strings.TrimLeft(unit, "GMkmµnp"))]]
 	}

@@ -17,15 +17,17 @@ type Run struct {
 	Layers    []Layer   `json:"layers"` // in the order they are to be shown; rest aside
 	// Events are the overloads in order of time: all, or the largest where there are too many to
 	// keep (Overload.Events counts them all).
-	Events      []Event    `json:"events"`
-	Waveforms   []Waveform `json:"waveforms"` // the overloads whose waveforms the page shows, the largest first
-	Noise       Budget     `json:"noise"`     // at the converter's input, folding included
-	Rest        Rest       `json:"rest"`
-	Parts       []Part     `json:"parts"` // in the order of the chain file
-	Listen      *Listen    `json:"listen,omitempty"`
-	Limits      []Limit    `json:"limits"`
-	Findings    []Finding  `json:"findings"` // the weightiest first
-	Assumptions []string   `json:"assumptions"`
+	Events      []Event     `json:"events"`
+	Waveforms   []Waveform  `json:"waveforms"` // the overloads whose waveforms the page shows, the largest first
+	Noise       Budget      `json:"noise"`     // at the converter's input, folding included
+	Rest        Rest        `json:"rest"`
+	Margins     []Margin    `json:"margins"` // of every amplifier's loop
+	SupplyPaths SupplyPaths `json:"supply_paths"`
+	Parts       []Part      `json:"parts"` // in the order of the chain file
+	Listen      *Listen     `json:"listen,omitempty"`
+	Limits      []Limit     `json:"limits"`
+	Findings    []Finding   `json:"findings"` // the weightiest first
+	Assumptions []string    `json:"assumptions"`
 }
 
 // Tool names the program that made the result.
@@ -151,13 +153,23 @@ type Waveform struct {
 type Budget struct {
 	Total   NoiseTotal    `json:"total"`
 	Sources []NoiseSource `json:"sources"` // the largest first
+	Inputs  []NoiseInput  `json:"equivalent_input"`
+}
+
+// NoiseInput is the noise of the whole chain told as one input's.
+type NoiseInput struct {
+	Input string `json:"input"`
+	Value Number `json:"value"`
+	Unit  string `json:"unit"` // "dB SPL(A)" or "dBu(A)"
 }
 
 // NoiseTotal is all the noise.
 type NoiseTotal struct {
-	V    Number `json:"v"` // RMS
-	DBFS Number `json:"dbfs"`
-	LSB  Number `json:"lsb"` // RMS, in steps of the converter
+	V          Number `json:"v"` // RMS
+	DBFS       Number `json:"dbfs"`
+	DBFSA      Number `json:"dbfs_a"` // A-weighted
+	LSB        Number `json:"lsb"`    // RMS, in steps of the converter
+	UsefulBits Number `json:"useful_bits"`
 }
 
 // NoiseSource is what one source adds.
@@ -170,10 +182,11 @@ type NoiseSource struct {
 
 // Rest is the chain without sound.
 type Rest struct {
-	SupplyV  Number   `json:"supply_v"`
-	SupplyA  Number   `json:"supply_a"` // what dividers, capsules and loads draw; the amplifiers' own current apart
-	Nodes    []Node   `json:"nodes"`
-	Settling Settling `json:"settling"`
+	SupplyV    Number      `json:"supply_v"`
+	SupplyA    Number      `json:"supply_a"` // what dividers, capsules and loads draw; the amplifiers' own current apart
+	Nodes      []Node      `json:"nodes"`
+	Capacitors []Capacitor `json:"capacitors"`
+	Settling   Settling    `json:"settling"`
 }
 
 // Node is the voltage that a node rests at.
@@ -183,6 +196,34 @@ type Node struct {
 	LimitLowV  Number `json:"limit_low_v"`  // not there where no amplifier drives the node
 	LimitHighV Number `json:"limit_high_v"` // not there where no amplifier drives the node
 	Word       string `json:"word"`         // what is wrong; mostly empty
+}
+
+// Capacitor is what stands across a capacitor at rest.
+type Capacitor struct {
+	Part     string `json:"part"`
+	Volts    Number `json:"volts"`
+	Positive string `json:"positive"` // node of its positive side
+	Negative string `json:"negative"`
+}
+
+// Margin is how far an amplifier's loop is from oscillating.
+type Margin struct {
+	Amplifier   string `json:"amplifier"`
+	CrossoverHz Number `json:"crossover_hz"`
+	PhaseDeg    Number `json:"phase_margin_deg"`
+	GainDB      Number `json:"gain_margin_db"`
+}
+
+// SupplyPaths are the ways from the supply to the converter.
+type SupplyPaths struct {
+	Hz    []Number `json:"frequencies_hz"`
+	Paths []Path   `json:"paths"` // the largest first, all together last
+}
+
+// Path is one way from the supply to the converter.
+type Path struct {
+	Name string   `json:"name"`
+	DB   []Number `json:"gain_db"` // V at the converter a V of the supply, at each of the frequencies
 }
 
 // Settling is how long the converter's input takes to come to rest after power-up.
