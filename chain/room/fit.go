@@ -6,7 +6,6 @@ import (
 
 	"midrail/chain"
 	"midrail/chain/circuit"
-	"midrail/chain/preferred"
 	"midrail/chain/render"
 )
 
@@ -34,10 +33,7 @@ func Fit(n *circuit.Network, r *render.Result, k int) (chain.Part, float64, bool
 	if !ok {
 		return chain.Part{}, 0, false
 	}
-	series := preferred.DefaultResistors
-	if part.Series != "" {
-		series, _ = preferred.Parse(part.Series)
-	}
+	series := seriesOf(part)
 	out := n.Amplifiers[k].Out
 	before := loudest(n, out)
 	value := part.Value
@@ -93,10 +89,12 @@ func loudest(n *circuit.Network, node int) float64 {
 	for _, f := range [...]float64{100, 200, 500, 1000, 2000, 5000} {
 		into := n.At(f).Into(node)
 		for i, in := range n.Inputs {
-			most = max(most, cmplx.Abs(into.Input(circuit.SoundInput(i)))*abs(in.Scale))
+			most = max(most, magnitude(into.Input(circuit.SoundInput(i)))*abs(in.Scale))
 		}
 	}
 	return most
 }
+
+func magnitude(h complex128) float64 { return cmplx.Abs(h) }
 
 func abs(x float64) float64 { return max(x, -x) }

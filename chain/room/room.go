@@ -1,0 +1,239 @@
+package room
+
+import (
+	"context"
+	"math"
+
+	"midrail/chain"
+	"midrail/chain/circuit"
+	"midrail/chain/noise"
+	"midrail/chain/parts"
+	"midrail/chain/preferred"
+	"midrail/chain/render"
+	"midrail/signals"
+	"midrail/signals/tone"
+)
+
+// Stage is how far a stage's amplifier is taken, and how far it may go. Voltages are of its internal source, as the
+// linear chain asks.
+type Stage struct {
+	Name                string
+	Lowest, Highest     float64 // V
+	LimitLow, LimitHigh float64 // V
+	Down, Up            float64 // dB left (+) or missing (−) to either side; +Inf where nothing is asked for
+	// The level at which it first clips, as the RMS of a sine at each of the chain's inputs (V or Pa): of a sine at 1 kHz,
+	// and, by its peaks, of this track.
+	Sine, Track []float64
+}
+
+// Of tells the room of every stage that a run went through.
+func Of(n *circuit.Network, r *render.Result) []Stage {
+	exact := n.At(1000)
+	var stages []Stage
+	for k, a := range n.Amplifiers {
+		x := r.Amplifiers[k]
+		if a.Virtual {
+			continue
+		}
+		s := Stage{Name: a.Name, Lowest: x.Lowest, Highest: x.Highest, LimitLow: x.LimitLow, LimitHigh: x.LimitHigh}
+		s.Down, s.Up = left(x.Rest-x.LimitLow, x.Rest-x.Lowest), left(x.LimitHigh-x.Rest, x.Highest-x.Rest)
+		nearer := math.Min(x.LimitHigh-x.Rest, x.Rest-x.LimitLow)
+		for i := range n.Inputs {
+			full := n.Chain.Inputs[i].FullScale
+			// A full-scale sine at this input alone takes the output so far; its source goes a little further.
+			swing := abs(n.Inputs[i].Scale) * magnitude(exact.FromInput(circuit.SoundInput(i))[a.Out])
+			s.Sine = append(s.Sine, full*math.Max(nearer, 0)/swing)
+			s.Track = append(s.Track, full*math.Pow(10, math.Min(s.Down, s.Up)/20))
+		}
+		stages = append(stages, s)
+	}
+	return stages
+}
+
+// left is what a limit leaves of an excursion in dB.
+func left(limit, excursion float64) float64 {
+	if excursion <= 0 {
+		return math.Inf(1)
+	}
+	return 20 * math.Log10(math.Max(limit, 0)/excursion)
+}
+
+// Suggestion is a change that would fit.
+type Suggestion struct {
+	Stage string
+	Part  chain.Part
+	Value float64
+	Room  float64 // dB that a full run with it leaves at its tightest stage
+	Fits  bool    // whether that run touched no limit and kept the margin
+}
+
+// Suggest returns the value of the part that sets the gain of the tightest stage with which a full run leaves the margin
+// in dB, verified by that run: the nearest preferred value to the present one that does. It reports false where no part
+// sets a gain. run renders the tracks through a network.
+func Suggest(n *circuit.Network, r *render.Result, margin float64, run func(*circuit.Network) (*render.Result, error)) (Suggestion, bool, error) {
+	tightest := -1
+	for k := range r.Amplifiers {
+		if tightest < 0 || r.Amplifiers[k].Room() < r.Amplifiers[tightest].Room() {
+			tightest = k
+		}
+	}
+	if tightest < 0 {
+		return Suggestion{}, false, nil
+	}
+	part, less, ok := gainPart(n.Chain, n.Amplifiers[tightest].Stage)
+	if !ok {
+		return Suggestion{}, false, nil
+	}
+	series := seriesOf(part)
+	s := Suggestion{Stage: n.Amplifiers[tightest].Name, Part: part, Value: part.Value}
+	fits := func(value float64) (bool, error) {
+		with, _ := n.With(part.Name, value)
+		result, err := run(with)
+		if err != nil {
+			return false, err
+		}
+		s.Value, s.Room = value, math.Inf(1)
+		for _, x := range result.Amplifiers {
+			s.Room = math.Min(s.Room, x.Room())
+		}
+		s.Fits = s.Room >= margin && result.Overloaded == 0
+		return s.Fits, nil
+	}
+	quieter, louder := series.Down, series.Up
+	if !less {
+		quieter, louder = louder, quieter
+	}
+	// Gain goes nearly as the part: start where it says, then go on by single values.
+	guess := math.Pow(10, (r.Amplifiers[tightest].Room()-margin)/20)
+	if !less {
+		guess = 1 / guess
+	}
+	value := series.Nearest(part.Value * guess)
+	ok, err := fits(value)
+	for tried := 0; err == nil && !ok && tried < tries; tried++ {
+		value = quieter(value)
+		ok, err = fits(value)
+	}
+	for tried := 0; err == nil && ok && tried < tries; tried++ {
+		var more bool
+		if more, err = fits(louder(value)); err != nil || !more {
+			break
+		}
+		value = louder(value)
+	}
+	if err == nil {
+		_, err = fits(value)
+	}
+	return s, true, err
+}
+
+// Centre is a bias that rests midway between what its stage can reach.
+type Centre struct {
+	Bias    string
+	Now     float64 // V
+	Wanted  float64 // V
+	Divider parts.Ratio
+}
+
+// Centres returns, for each bias that a stage's tightest amplifier rides on off centre by more than a hundredth of its
+// reach, the divider that would put it there.
+func Centres(n *circuit.Network, r *render.Result) []Centre {
+	var list []Centre
+	for i := range n.Chain.Biases {
+		b := &n.Chain.Biases[i]
+		var tightest *render.AmplifierRange
+		for k := range n.Amplifiers {
+			a := &n.Amplifiers[k]
+			if a.Stage < 0 || n.Chain.Stages[a.Stage].Bias != b.Name {
+				continue
+			}
+			if x := &r.Amplifiers[k]; tightest == nil || x.Room() < tightest.Room() {
+				tightest = x
+			}
+		}
+		if tightest == nil {
+			continue
+		}
+		middle := (tightest.LimitLow + tightest.LimitHigh) / 2
+		off := middle - tightest.Rest
+		wanted := r.At.Volts[n.BiasNode(i)] + off
+		if math.Abs(off) < 0.01*(tightest.LimitHigh-tightest.LimitLow) || !(wanted > 0 && wanted < n.Chain.Supply.Voltage) {
+			continue
+		}
+		list = append(list, Centre{b.Name, r.At.Volts[n.BiasNode(i)], wanted, parts.Bias(wanted, n.Chain.Supply.Voltage, seriesOf(b.Top), 1)[0]})
+	}
+	return list
+}
+
+func seriesOf(p chain.Part) preferred.Series {
+	if s, err := preferred.Parse(p.Series); err == nil {
+		return s
+	}
+	if p.Unit == chain.Farad {
+		return preferred.DefaultCapacitors
+	}
+	return preferred.DefaultResistors
+}
+
+// Distortion is what a sine of a level comes out with.
+type Distortion struct {
+	Level float64 // dB against full scale at the input
+	THDN  float64 // everything but the tone against the tone, RMS, 0 to 1 and more
+}
+
+// Sweep renders a tone at a tenth of the rate, but 997 Hz at most, at every input at levels from −60 dB to +12 dB of full
+// scale, and returns its THD+N over the converter's band, noise and rounding included.
+func Sweep(ctx context.Context, n *circuit.Network) ([]Distortion, error) {
+	const seconds, settled = 0.5, 0.2
+	rate := n.Chain.Converter.Rate
+	hz := math.Min(997, rate/10)
+	budget := noise.At(n)
+	var list []Distortion
+	for level := -60.; level <= 12; level += 3 {
+		var heard []float64
+		feeds := make([]render.Feed, len(n.Inputs))
+		for i := range feeds {
+			t := tone.Sine(48000, seconds, hz, level)
+			feeds[i] = render.Feed{Sound: signals.Channels(t, 1)[0], Rate: t.Rate()}
+		}
+		_, err := render.Run(ctx, n, feeds, render.Options{Noise: budget}, func(b *render.Block) error {
+			heard = append(heard, b.Heard...)
+			return nil
+		})
+		if err != nil {
+			return nil, err
+		}
+		list = append(list, Distortion{level, thdn(heard[int(settled*rate):len(heard)-int(0.02*rate)], hz/rate)})
+	}
+	return list, nil
+}
+
+// OnePercent returns the level at which THD+N last comes up through 1 %, between the sweep's points; NaN where it does not.
+func OnePercent(sweep []Distortion) float64 {
+	for i := len(sweep) - 1; i > 0; i-- {
+		a, b := sweep[i-1], sweep[i]
+		if a.THDN < 0.01 && b.THDN >= 0.01 {
+			return a.Level + (b.Level-a.Level)*math.Log(0.01/a.THDN)/math.Log(b.THDN/a.THDN)
+		}
+	}
+	return math.NaN()
+}
+
+// thdn takes out DC and the tone, cycles a sample, by correlation over whole periods as near as can be, and returns the
+// rest against the tone.
+func thdn(x []float64, cycles float64) float64 {
+	x = x[:int(math.Floor(math.Floor(float64(len(x))*cycles)/cycles))]
+	var mean, re, im float64
+	count := float64(len(x))
+	for i, v := range x {
+		sin, cos := math.Sincos(2 * math.Pi * cycles * float64(i))
+		mean, re, im = mean+v/count, re+2*v*cos/count, im+2*v*sin/count
+	}
+	rest := 0.
+	for i, v := range x {
+		sin, cos := math.Sincos(2 * math.Pi * cycles * float64(i))
+		d := v - mean - re*cos - im*sin
+		rest += d * d
+	}
+	return math.Sqrt(rest/count) / (math.Hypot(re, im) / math.Sqrt2)
+}
