@@ -490,6 +490,14 @@ func reading(t *testing.T, b *browser, folder string) {
 	if got := told(); got == first || !strings.Contains(got, "brood ") {
 		t.Errorf("by the pointer: %q", got)
 	}
+	// A figure along time plays from where it is pressed, and says so once.
+	evaluate[bool](t, b, `(() => { const s = document.querySelector("#overloads svg.wide[data-seeks]"); s.scrollIntoView(); const r = s.getBoundingClientRect(); s.dispatchEvent(new MouseEvent("click", { clientX: r.left + r.width / 2, clientY: r.top + r.height / 2 })); return true; })()`)
+	if at := evaluate[float64](t, b, `document.querySelector("#player-heard audio").currentTime`); !(at > 5 && at < 16) {
+		t.Errorf("pressed in its middle, the figure plays from %v s", at)
+	}
+	if n := evaluate[int](t, b, `document.querySelector("#overloads figcaption").textContent.split("to play from there").length - 1`); n != 1 {
+		t.Errorf("the caption tells %d times that it plays", n)
+	}
 }
 
 // printed prints the page and reads the result with an outside program.

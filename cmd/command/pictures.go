@@ -133,7 +133,7 @@ func noiseLines(b *noise.Budget, rate float64) []report.Line {
 	}
 	for f := b.Frequencies[0]; f < rate/2; f *= math.Pow(2, 1./perOctave) {
 		after.Frequency = append(after.Frequency, f)
-		after.Level = append(after.Level, math.Sqrt(b.Folded[min(int(math.Round(f/b.Step)), len(b.Folded)-1)]))
+		after.Level = append(after.Level, math.Sqrt(b.Folded[min(int(math.Ceil(f/b.Step)), len(b.Folded)-1)]))
 	}
 	return []report.Line{before, after}
 }

@@ -184,7 +184,7 @@ for (const svg of all("svg[data-area]")) {
 	if ("seeks" in svg.dataset && sounds.length) {
 		svg.classList.add("seeks");
 		const caption = holder.querySelector("figcaption");
-		if (!caption.dataset.told) caption.append(" Click, or press Enter, to play from there.");
+		if (!("told" in caption.dataset)) caption.append(" Click, or press Enter, to play from there.");
 		caption.dataset.told = "";
 		svg.addEventListener("click", event => {
 			const [share] = where(event);
