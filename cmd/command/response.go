@@ -109,7 +109,7 @@ type responseResult struct {
 	Points  []responsePoint `json:"points"`
 	MidBand report.Number   `json:"mid_band_db"`
 	At1k    report.Number   `json:"at_1_khz_db"`
-	Corners []corner        `json:"corners"`
+	Corners []cornerAt      `json:"corners"`
 	Peak    gainAt          `json:"peak"`
 	RollOff report.Number   `json:"roll_off_db_per_decade"`
 	Floor   gainAt          `json:"floor"`
@@ -127,7 +127,7 @@ type responsePoint struct {
 	Delay     report.Number `json:"group_delay_s"`
 }
 
-type corner struct {
+type cornerAt struct {
 	Kind      string        `json:"kind"` // "low" or "high"
 	Frequency report.Number `json:"frequency_hz"`
 }
@@ -162,7 +162,7 @@ func responseOf(n *circuit.Network, p *response.Path, grid []float64) (*response
 	for _, x := range p.Points(grid) {
 		r.Points = append(r.Points, responsePoint{of(x.Frequency), of(x.Gain), of(x.Phase), of(x.Delay)})
 	}
-	for _, c := range []corner{{"low", of(f.LowCorner)}, {"high", of(f.HighCorner)}} {
+	for _, c := range []cornerAt{{"low", of(f.LowCorner)}, {"high", of(f.HighCorner)}} {
 		if _, there := c.Frequency.Value(); there {
 			r.Corners = append(r.Corners, c)
 		}

@@ -1,0 +1,318 @@
+// Package corner chooses converter rate, filter order, alignment and corner together: what each would let fold back of a
+// recording, from its spectrum through the chain's exact response.
+//
+// A chain's anti-alias filter is the run of low-pass stages in front of its converter. A candidate is another filter in
+// its place, taken for ideal, and another rate:
+//
+//	fold-back power = ∫ S(f)·|B(f)|²·|H(f)|² df  from half the rate on
+//
+// with S the recording's density, B the exact response of what comes before the filter, and H the candidate's.
+package corner
+
+import (
+	"errors"
+	"io"
+	"math"
+	"math/cmplx"
+	"sort"
+
+	"gonum.org/v1/gonum/dsp/fourier"
+
+	"midrail/chain/alignment"
+	"midrail/chain/circuit"
+	"midrail/signals"
+	"midrail/signals/level"
+)
+
+// Filter returns the run of low-pass stages in front of the converter, the last one first, and the node that drives it.
+func Filter(n *circuit.Network) (stages []string, from string) {
+	from = n.Chain.Converter.From
+	for {
+		s := n.Chain.StageNamed(from)
+		if s == nil || len(s.From) != 1 {
+			return stages, from
+		}
+		switch s.Kind.Name {
+		case "sallen-key low-pass", "multiple-feedback low-pass", "rc low-pass":
+			stages, from = append(stages, s.Name), s.From[0]
+		default:
+			return stages, from
+		}
+	}
+}
+
+// Sound is what a recording is in front of the filter: frames of an eighth of a second.
+type Sound struct {
+	step float64     // Hz, between the points of a frame
+	mean []float64   // V² at each point, over all frames
+	loud [][]float64 // the frames that are loudest above loudAbove
+	Top  float64     // Hz, half the recording's rate
+}
+
+const (
+	frameSeconds = 0.125
+	// loudAbove is the frequency in Hz above which the loudest frames are looked for: what may fold.
+	loudAbove = 3000
+	// mostLoud is how many of them are kept.
+	mostLoud = 96
+)
+
+// Listen takes recordings, one for each of the chain's inputs (nil: silence) and all at one rate in Hz, as they are in
+// front of the filter.
+func Listen(n *circuit.Network, feeds []signals.Stream, rate float64) (*Sound, error) {
+	length := 2 * int(math.Round(frameSeconds*rate/2))
+	plan := fourier.NewFFT(length)
+	points := length/2 + 1
+	s := &Sound{step: rate / float64(length), mean: make([]float64, points), Top: rate / 2}
+	_, from := Filter(n)
+	node, _ := n.NodeOf(from)
+	before := make([][]float64, len(feeds)) // |B|² of each input, for a sample of 1
+	for i := range feeds {
+		before[i] = make([]float64, points)
+		for k := 1; k < points; k++ {
+			g := cmplx.Abs(n.At(float64(k)*s.step).Into(node).Input(circuit.SoundInput(i))) * n.Inputs[i].Scale
+			before[i][k] = g * g
+		}
+	}
+	window := make([]float64, length)
+	power := 0.
+	for i := range window {
+		window[i] = 0.5 - 0.5*math.Cos(2*math.Pi*float64(i)/float64(length))
+		power += window[i] * window[i]
+	}
+	history := make([][]float64, len(feeds))
+	for i := range history {
+		history[i] = make([]float64, length)
+	}
+	fresh, scratch, spectrum := make([]float64, length/2), make([]float64, length), make([]complex128, points)
+	type loudFrame struct {
+		power float64
+		frame []float64
+	}
+	var loud []loudFrame
+	for frames := 0; ; frames++ {
+		frame := make([]float64, points)
+		ended := true
+		for i, feed := range feeds {
+			if feed == nil {
+				continue
+			}
+			got, err := feed.Read(fresh)
+			if err != nil && !errors.Is(err, io.EOF) {
+				return nil, err
+			}
+			clear(fresh[got:])
+			ended = ended && got == 0
+			copy(history[i], history[i][length/2:])
+			copy(history[i][length/2:], fresh)
+			for k, v := range history[i] {
+				scratch[k] = v * window[k]
+			}
+			plan.Coefficients(spectrum, scratch)
+			for k := 1; k < points; k++ {
+				a := cmplx.Abs(spectrum[k])
+				share := 2.
+				if k == points-1 {
+					share = 1
+				}
+				frame[k] += share * a * a / (power * float64(length)) * before[i][k]
+			}
+		}
+		if ended {
+			if frames == 0 {
+				frames = 1
+			}
+			for k := range s.mean {
+				s.mean[k] /= float64(frames)
+			}
+			break
+		}
+		high := 0.
+		for k, v := range frame {
+			s.mean[k] += v
+			if float64(k)*s.step >= loudAbove {
+				high += v
+			}
+		}
+		if len(loud) < mostLoud || high > loud[len(loud)-1].power {
+			loud = append(loud, loudFrame{high, frame})
+			sort.SliceStable(loud, func(i, j int) bool { return loud[i].power > loud[j].power })
+			loud = loud[:min(len(loud), mostLoud)]
+		}
+	}
+	for _, l := range loud {
+		s.loud = append(s.loud, l.frame)
+	}
+	return s, nil
+}
+
+// Candidate is a rate and a filter, and what they do.
+type Candidate struct {
+	Rate      float64 // Hz
+	Order     int
+	Alignment alignment.Alignment
+	Corner    float64 // Hz
+
+	Droop      float64 // dB lost at the edge of the band that is kept; negative where ripple lifts it
+	Wanted     float64 // dBFS
+	FoldBack   float64 // dBFS; −Inf where the recording holds nothing to fold
+	FoldBackA  float64 // dBFS, A-weighted where it lands
+	Worst      float64 // dBFS of the worst eighth of a second
+	Below      float64 // dB of fold-back below wanted
+	WorstTone  float64 // dB: the loudest that a tone of any frequency comes out within the band, against one in it
+	Overshoot  float64 // of a step, share
+	Amplifiers int
+}
+
+// Wish is what is wanted.
+type Wish struct {
+	Keep  float64   // Hz, the edge of the band that is kept
+	Rates []float64 // Hz
+	Droop float64   // dB, at most
+	Below float64   // dB, fold-back below wanted, at least
+}
+
+// Common are the rates that are tried where none are given: common practice, no source.
+func Common() []float64 {
+	return []float64{8000, 9600, 11025, 12000, 16000, 22050, 24000, 32000, 44100, 48000, 64000, 96000}
+}
+
+// corners are the corners that are tried, as multiples of the band's edge.
+var corners = [...]float64{0.9, 1, 1.1, 1.2, 1.35, 1.5, 1.7, 2, 2.4, 3}
+
+// Candidates judges every rate that can hold the band with every order, alignment and corner.
+func Candidates(n *circuit.Network, s *Sound, w Wish) ([]Candidate, error) {
+	halfSpan := (n.Chain.Converter.High - n.Chain.Converter.Low) / 2
+	var all []Candidate
+	for order := 1; order <= alignment.Highest; order++ {
+		for _, a := range alignment.All() {
+			if order == 1 && a != alignment.Butterworth {
+				continue // one pole is one pole
+			}
+			sections, err := alignment.Sections(a, order)
+			if err != nil {
+				return nil, err
+			}
+			overshoot := alignment.Overshoot(sections)
+			for _, by := range corners {
+				h := make([]float64, len(s.mean))
+				for k := range h {
+					g := cmplx.Abs(alignment.Response(sections, float64(k)*s.step/(by*w.Keep)))
+					h[k] = g * g
+				}
+				for _, rate := range w.Rates {
+					if rate < 2*w.Keep {
+						continue
+					}
+					c := Candidate{Rate: rate, Order: order, Alignment: a, Corner: by * w.Keep, Overshoot: overshoot, Amplifiers: (order + 1) / 2}
+					c.judge(s, h, sections, w.Keep, halfSpan)
+					all = append(all, c)
+				}
+			}
+		}
+	}
+	return all, nil
+}
+
+func (c *Candidate) judge(s *Sound, h []float64, sections []alignment.Section, keep, halfSpan float64) {
+	response := func(f float64) float64 { return cmplx.Abs(alignment.Response(sections, f/c.Corner)) }
+	c.Droop = -20 * math.Log10(response(keep))
+	half := int(math.Ceil(c.Rate / 2 / s.step))
+	wanted, fold, weighted := 0., 0., 0.
+	for k := 1; k < len(h); k++ {
+		p := s.mean[k] * h[k]
+		if k < half {
+			wanted += p
+			continue
+		}
+		fold += p
+		weighted += p * math.Pow(10, level.AWeighting(math.Max(Folds(float64(k)*s.step, c.Rate), s.step))/10)
+	}
+	worst := 0.
+	for _, frame := range s.loud {
+		p := 0.
+		for k := min(half, len(h)); k < len(h); k++ {
+			p += frame[k] * h[k]
+		}
+		worst = math.Max(worst, p)
+	}
+	db := func(power float64) float64 { return level.DBFS(math.Sqrt(power) / halfSpan) }
+	c.Wanted, c.FoldBack, c.FoldBackA, c.Worst = db(wanted), db(fold), db(weighted), db(worst)
+	c.Below = math.Inf(1)
+	if fold > 0 {
+		c.Below = c.Wanted - c.FoldBack
+	}
+	// The nearest tone that lands within the band is the loudest: the filter falls from there on.
+	c.WorstTone = 20 * math.Log10(response(c.Rate-keep))
+}
+
+// Folds returns where a frequency lands after sampling at a rate, both in Hz.
+func Folds(f, rate float64) float64 {
+	r := math.Mod(f, rate)
+	return math.Min(r, rate-r)
+}
+
+// meets tells whether a candidate is good enough.
+func (c *Candidate) meets(w Wish) bool { return c.off() <= w.Droop && c.Below >= w.Below }
+
+// off is how far the band's edge is from flat, up or down.
+func (c *Candidate) off() float64 { return math.Abs(c.Droop) }
+
+// cost orders candidates by what they need: amplifiers first, then conversions, then how much they droop.
+func (c *Candidate) cost() [3]float64 { return [3]float64{float64(c.Amplifiers), c.Rate, c.off()} }
+
+func less(a, b [3]float64) bool {
+	for i := range a {
+		if a[i] != b[i] {
+			return a[i] < b[i]
+		}
+	}
+	return false
+}
+
+// Recommend returns the candidate that meets the wish with the fewest amplifiers, then the lowest rate, then the least
+// droop; where none does, the one of those with the wanted droop, or else of all, whose fold-back is lowest, and false.
+func Recommend(all []Candidate, w Wish) (Candidate, bool) {
+	var best *Candidate
+	for i := range all {
+		if c := &all[i]; c.meets(w) && (best == nil || less(c.cost(), best.cost())) {
+			best = c
+		}
+	}
+	if best != nil {
+		return *best, true
+	}
+	for i := range all {
+		c := &all[i]
+		if best == nil || (c.off() <= w.Droop) != (best.off() <= w.Droop) && c.off() <= w.Droop || (c.off() <= w.Droop) == (best.off() <= w.Droop) && c.Below > best.Below {
+			best = c
+		}
+	}
+	return *best, false
+}
+
+// Efficient returns the candidates than which none is better in every respect - rate, amplifiers, droop, fold-back - the
+// cheapest first, of those that droop no more than the wish.
+func Efficient(all []Candidate, w Wish) []Candidate {
+	var keep []Candidate
+	for i := range all {
+		c := &all[i]
+		if c.off() > w.Droop {
+			continue
+		}
+		beaten := false
+		for j := range all {
+			d := &all[j]
+			if d.Rate <= c.Rate && d.Amplifiers <= c.Amplifiers && d.off() <= c.off() && d.Below >= c.Below &&
+				(d.Rate < c.Rate || d.Amplifiers < c.Amplifiers || d.off() < c.off() || d.Below > c.Below || j < i) {
+				beaten = true
+				break
+			}
+		}
+		if !beaten {
+			keep = append(keep, *c)
+		}
+	}
+	sort.SliceStable(keep, func(i, j int) bool { return less(keep[i].cost(), keep[j].cost()) })
+	return keep
+}
