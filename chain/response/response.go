@@ -136,7 +136,7 @@ func (p *Path) Figures() Figures {
 	f.PeakAt, f.Peak = p.refinePeak(grid, gain, peak)
 	// Mid-band is midway between the corners, and the corners are told against mid-band: twice round settles it but
 	// for responses that have no flat part.
-	mid := grid[peak]
+	mid := grid[flattest(grid, gain, peak)]
 	for range 3 {
 		f.MidBand = p.db(mid)
 		f.LowCorner, f.HighCorner = p.corners(grid, gain, mid, f.MidBand-halfPower)
@@ -163,6 +163,37 @@ func (p *Path) Figures() Figures {
 		f.FloorFrom, f.Floor = p.floor(grid, gain, c)
 	}
 	return f
+}
+
+const (
+	flat    = 0.5 // dB to either side, of a pass band
+	passing = 12  // dB below the peak, that a pass band is looked for in
+	audible = 1.  // Hz, below which a flat part is a matter of DC alone
+	least   = 20  // points that a flat part has, half a decade: a peak has no more
+)
+
+// flattest returns the middle of the longest stretch of nearly one gain, among those that are not far below the peak; the
+// peak where there is none.
+func flattest(grid, gain []float64, peak int) int {
+	best, longest := peak, least
+	first := sort.SearchFloat64s(grid, audible)
+	for i := first; i < len(gain); i++ {
+		g := gain[i]
+		if g < gain[peak]-passing {
+			continue
+		}
+		low, high := i, i
+		for low > first && math.Abs(gain[low-1]-g) <= flat {
+			low--
+		}
+		for high+1 < len(gain) && math.Abs(gain[high+1]-g) <= flat {
+			high++
+		}
+		if n := high - low; n > longest {
+			best, longest = (low+high)/2, n
+		}
+	}
+	return best
 }
 
 // refinePeak finds the peak between the grid's points, by golden section.

@@ -169,3 +169,26 @@ func TestGroupDelay(t *testing.T) {
 		t.Error("found a stage that is not there")
 	}
 }
+
+// A gain of 5 that is 1 at 0 Hz, (1 + s·5τ)/(1 + s·τ), has its mid-band at 5 and a low corner where its power is half of 25:
+// 1 + 25·x² = 12.5·(1 + x²), x = √(11.5/12.5) of 1/(2πτ).
+func TestMidBandIsNotTheShelfBelow(t *testing.T) {
+	n := parse(t, fmt.Sprintf(head, `"ideal"`)+`
+[[stage]]
+name = "it"
+kind = "non-inverting"
+from = "line"
+amplifier = "one"
+r_f = "8k"
+r_g = "2k"
+c_g = "10u"
+`+tail)
+	p, err := NewPath(n, "", "")
+	if err != nil {
+		t.Fatal(err)
+	}
+	f := p.Figures()
+	near(t, "mid-band", f.MidBand, 20*math.Log10(5), 1e-3)
+	want := math.Sqrt(11.5/12.5) / (2 * math.Pi * 2e3 * 10e-6)
+	near(t, "low corner", f.LowCorner, want, midBand*want)
+}
