@@ -4,6 +4,7 @@ import (
 	"fmt"
 	"math"
 	"math/cmplx"
+	"slices"
 	"sort"
 
 	"midrail/bilinear"
@@ -272,7 +273,10 @@ type Pole struct {
 // Poles returns the network's natural frequencies around its rest point, the slowest first, one of each conjugate pair.
 func Poles(n *circuit.Network, at bilinear.Operating) ([]Pole, error) {
 	// The step's eigenvalues map back exactly at any rate; in the middle of the poles they are told most sharply.
-	c, err := bilinear.Compile(n.Description(), at, 1e5, nil)
+	// What stands for no part, as of a supply's rejection, has no natural frequency that anyone could find.
+	parts := *n
+	parts.Capacitors = slices.DeleteFunc(slices.Clone(n.Capacitors), func(c circuit.Component) bool { return c.Virtual })
+	c, err := bilinear.Compile(parts.Description(), at, 1e5, nil)
 	if err != nil {
 		return nil, err
 	}

@@ -192,3 +192,23 @@ c_g = "10u"
 	want := math.Sqrt(11.5/12.5) / (2 * math.Pi * 2e3 * 10e-6)
 	near(t, "low corner", f.LowCorner, want, midBand*want)
 }
+
+// A follower of finite gain-bandwidth has one pole, there; the supply's rejection adds none.
+func TestFollowerHasOnePole(t *testing.T) {
+	n := parse(t, fmt.Sprintf(head, `"ideal"
+gain_bandwidth = "1MHz"
+supply_rejection = "80dB"
+supply_rejection_corner = "100Hz"`)+"[[stage]]\nname = \"it\"\nkind = \"follower\"\nfrom = \"line\"\namplifier = \"one\"\n"+tail)
+	at, err := n.Rest()
+	if err != nil {
+		t.Fatal(err)
+	}
+	poles, err := Poles(n, at)
+	if err != nil {
+		t.Fatal(err)
+	}
+	if len(poles) != 1 {
+		t.Fatalf("poles: %+v", poles)
+	}
+	near(t, "pole", poles[0].Frequency, 1e6, 1e-2)
+}

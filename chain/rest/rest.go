@@ -163,6 +163,9 @@ func slow(n *circuit.Network, at bilinear.Operating) ([]Slow, error) {
 		list[i].Constant = 1 / p
 	}
 	for _, c := range n.Capacitors {
+		if c.Virtual {
+			continue
+		}
 		const change = 0.01
 		with, _ := n.With(c.Part.Name, c.Part.Value*(1+change))
 		moved, err := slowPoles(with, at)
