@@ -20,6 +20,7 @@ type Chain struct {
 	Stages      []Stage // in the order of the file
 	Converter   Converter
 	Interferers []Interferer
+	Tolerance   Tolerance
 	Limits      Limits
 	Warnings    []Fault // what reads well but may not be meant, such as the capacitor code "100"; in the order of Faults
 }
@@ -32,6 +33,13 @@ type Supply struct {
 	Pos        Pos
 }
 
+// Tolerance is how far a production run's parts lie from their values: half the width of an even spread, or three
+// standard deviations of a normal one. Shares of 1, 0 to 0.5.
+type Tolerance struct {
+	Resistors, Capacitors, GainBandwidth, Supply float64
+	Normal                                       bool
+}
+
 // Conditions are those the chain works in.
 type Conditions struct {
 	Temperature float64 // K, 223.15 to 473.15 (−50 to 200 °C); 298.15 where not given
@@ -40,13 +48,14 @@ type Conditions struct {
 
 // Part is one component on the board.
 type Part struct {
-	Name   string  // owner and key, as in "capsule amp.r_f"; what --set takes
-	Key    string  // "r_f"
-	Unit   Unit    // Ohm or Farad
-	Value  float64 // ohms, 0.01 to 1e11, or farads, 1e-14 to 1
-	Ref    string  // reference on the board, as in "R7"; empty: none
-	Series string  // preferred series, "E3" to "E192"; empty: the default
-	Pos    Pos
+	Name      string  // owner and key, as in "capsule amp.r_f"; what --set takes
+	Key       string  // "r_f"
+	Unit      Unit    // Ohm or Farad
+	Value     float64 // ohms, 0.01 to 1e11, or farads, 1e-14 to 1
+	Ref       string  // reference on the board, as in "R7"; empty: none
+	Series    string  // preferred series, "E3" to "E192"; empty: the default
+	Tolerance float64 // share of 1; 0: that of the [tolerance] table
+	Pos       Pos
 }
 
 // Unit tells what a part's value is in.

@@ -160,14 +160,11 @@ func TestFaults(t *testing.T) {
 		{"a misspelled table", []string{end, end + "\n[§limit]"}, []string{`the chain file takes no "limit"; did you mean "limits"?`}},
 		{"a key of another kind of input", []string{line, line + "\n§sensitivity = \"-42dBV/Pa\""}, []string{`input "aux" takes no "sensitivity"; the keys are kind, channel, full_scale, source_resistance`}},
 		{"keys that are not there yet", []string{
-			`title = "Test"`, "§clamp = 1\n[§tolerance]\nresistors = \"1%\"",
-			`r_1 = "10k"`, `r_1 = { value = "10k", §tolerance = "1%" }`,
+			`title = "Test"`, "§clamp = 1",
 			line, line + "\n§calibrate = 1",
 		}, []string{
-			`the chain file takes no "clamp"; the keys are title, notes, supply, conditions, bias, amplifier, input, stage, converter, interferer, limits`,
-			`the chain file takes no "tolerance"; the keys are title, notes, supply, conditions, bias, amplifier, input, stage, converter, interferer, limits`,
+			`the chain file takes no "clamp"; the keys are title, notes, supply, conditions, tolerance, bias, amplifier, input, stage, converter, interferer, limits`,
 			`input "aux" takes no "calibrate"; the keys are kind, channel, full_scale, source_resistance`,
-			`r_1 takes no "tolerance"; the keys are value, ref, series`,
 		}},
 		{"a part that is a table without value", []string{`r_1 = "10k"`, `r_1 = §{ ref = "R1" }`}, []string{`r_1 has no value; add it`}},
 		{"a series that is none", []string{`r_1 = "10k"`, `r_1 = { value = "10k", series = §"E25" }`}, []string{`series: "E25" is no series of preferred values; choose E3, E6, E12, E24, E48, E96 or E192`}},

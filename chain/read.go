@@ -76,6 +76,10 @@ func (r *reader) chain(root *node) *Chain {
 		c.Conditions.NoiseFrom = s.si("noise_from", May, quantity.Frequency, 1e-3, 1e5, c.Conditions.NoiseFrom)
 		s.done()
 	}
+	c.Tolerance = Tolerance{Resistors: 0.01, Capacitors: 0.1, GainBandwidth: 0.3, Supply: 0.05}
+	if s := t.sub("tolerance", May); s != nil {
+		s.tolerances(&c.Tolerance)
+	}
 	t.each("bias", func(name string, s *table) { c.Biases = append(c.Biases, s.bias(name)) })
 	t.each("amplifier", func(name string, s *table) { c.Amplifiers = append(c.Amplifiers, s.amplifier(name, c.Supply.Voltage)) })
 	t.each("input", func(name string, s *table) { c.Inputs = append(c.Inputs, s.input(name)) })
@@ -101,6 +105,20 @@ func (r *reader) chain(root *node) *Chain {
 	}
 	t.done()
 	return c
+}
+
+// mostTolerance is the largest tolerance, and leastTolerance the smallest but none.
+const leastTolerance, mostTolerance = 1e-6, 0.5
+
+// tolerances reads the [tolerance] table into the defaults, which are common practice, no source.
+func (t *table) tolerances(x *Tolerance) {
+	x.Resistors = t.si("resistors", May, quantity.Ratio, 0, mostTolerance, x.Resistors)
+	x.Capacitors = t.si("capacitors", May, quantity.Ratio, 0, mostTolerance, x.Capacitors)
+	x.GainBandwidth = t.si("gain_bandwidth", May, quantity.Ratio, 0, mostTolerance, x.GainBandwidth)
+	x.Supply = t.si("supply", May, quantity.Ratio, 0, mostTolerance, x.Supply)
+	distribution, _ := t.choice("distribution", May, "uniform", "uniform", "normal")
+	x.Normal = distribution == "normal"
+	t.done()
 }
 
 // sub returns the table of a key, or nil.

@@ -126,6 +126,9 @@ func TestEveryKeyIsRead(t *testing.T) {
 	c := mustRead(t, readFile(t, "every-key.toml"))
 	near(t, "temperature", c.Conditions.Temperature, 313.15)
 	near(t, "noise_from", c.Conditions.NoiseFrom, 10)
+	if want := (chain.Tolerance{Resistors: 0.005, Capacitors: 0.05, GainBandwidth: 0.2, Supply: 0.02, Normal: true}); c.Tolerance != want {
+		t.Errorf("tolerance is %+v", c.Tolerance)
+	}
 	if c.Biases[0].Buffer != "own" {
 		t.Errorf("bias is %+v", c.Biases[0])
 	}

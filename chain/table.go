@@ -254,6 +254,7 @@ func (t *table) part(owner, key string, unit Unit, need Need) *Part {
 		read(v)
 	}
 	p.Ref = in.text("ref", May)
+	p.Tolerance = in.si("tolerance", May, quantity.Ratio, leastTolerance, mostTolerance, 0)
 	if s := in.find("series", May); s != nil {
 		p.Series = s.text
 		if _, err := preferred.Parse(s.text); err != nil || s.shape != textShape {

@@ -269,3 +269,32 @@ func (n *Network) WithNoiseOf(entry string, m amplifier.Model) *Network {
 	}
 	return &other
 }
+
+// Varied returns a copy of the network in which every resistor and capacitor has its value times a factor, by its place
+// in Resistors and Capacitors, every amplifier its gain-bandwidth times that of its entry, and the supply its voltage
+// times one. Limits and a converter that follows the supply go with it.
+func (n *Network) Varied(resistors, capacitors []float64, gainBandwidth map[string]float64, supply float64) *Network {
+	other, c := *n, *n.Chain
+	other.Chain = &c
+	c.Supply.Voltage *= supply
+	if c.Converter.HighIsSupply {
+		c.Converter.High = c.Supply.Voltage
+	}
+	other.Resistors, other.Capacitors, other.Amplifiers = slices.Clone(n.Resistors), slices.Clone(n.Capacitors), slices.Clone(n.Amplifiers)
+	for i := range other.Resistors {
+		other.Resistors[i].Part.Value *= resistors[i]
+	}
+	for i := range other.Capacitors {
+		other.Capacitors[i].Part.Value *= capacitors[i]
+	}
+	for i := range other.Amplifiers {
+		a := &other.Amplifiers[i]
+		if by, there := gainBandwidth[a.Entry]; there && !a.Virtual {
+			a.Model.GainBandwidth *= by
+		}
+		if !a.Virtual {
+			a.Low, a.High = a.Model.Limits(c.Supply.Voltage)
+		}
+	}
+	return &other
+}

@@ -316,3 +316,45 @@ func Efficient(all []Candidate, w Wish) []Candidate {
 	sort.SliceStable(keep, func(i, j int) bool { return less(keep[i].cost(), keep[j].cost()) })
 	return keep
 }
+
+// foldPoints is how many frequencies [Sound.BelowWith] looks at, by equal ratios.
+const foldPoints = 64
+
+// BelowWith returns by how many dB fold-back lies below the wanted sound with the filter that a network of the same stages
+// has, from the means of the spectrum over equal ratios of frequency: for comparing boards of one chain.
+func (s *Sound) BelowWith(n *circuit.Network) float64 {
+	_, from := Filter(n)
+	node, _ := n.NodeOf(from)
+	half := n.Chain.Converter.Rate / 2
+	ratio := func(f float64) float64 {
+		h := n.At(f).FromInput(circuit.SoundInput(0))
+		if h[node] == 0 {
+			return 0
+		}
+		a := cmplx.Abs(h[n.Output] / h[node])
+		return a * a
+	}
+	wanted, fold := 0., 0.
+	band := func(low, high float64) (power float64) {
+		for k := max(1, int(math.Ceil(low/s.step))); k < len(s.mean) && float64(k)*s.step < high; k++ {
+			power += s.mean[k]
+		}
+		return power
+	}
+	edges := func(from, to float64, points int, into *float64) {
+		for i := range points {
+			low, high := from*math.Pow(to/from, float64(i)/float64(points)), from*math.Pow(to/from, float64(i+1)/float64(points))
+			if p := band(low, high); p > 0 {
+				*into += p * ratio(math.Sqrt(low*high))
+			}
+		}
+	}
+	edges(20, half, foldPoints/2, &wanted)
+	if s.Top > half {
+		edges(half, s.Top, foldPoints/2, &fold)
+	}
+	if fold == 0 {
+		return math.Inf(1)
+	}
+	return 10 * math.Log10(wanted/fold)
+}

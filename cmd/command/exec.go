@@ -62,7 +62,7 @@ numbers: what clipped and when, what folded back, how much room is left.`,
 	root.SetOut(s.out)
 	root.SetErr(s.err)
 	root.SetFlagErrorFunc(func(_ *cobra.Command, err error) error { return usageError{err} })
-	root.AddCommand(newRun(s), newResponse(s), newRest(s), newNoise(s), newRipple(s), newParts(s), newRoom(s), newCorner(s), newTracks(s), newNew(s))
+	root.AddCommand(newRun(s), newResponse(s), newRest(s), newNoise(s), newRipple(s), newParts(s), newRoom(s), newCorner(s), newSpread(s), newTracks(s), newNew(s))
 	return root
 }
 

@@ -1,0 +1,210 @@
+package command
+
+import (
+	"context"
+	"errors"
+	"fmt"
+	"io"
+	"math"
+
+	"github.com/spf13/cobra"
+
+	"midrail/chain/circuit"
+	"midrail/chain/quantity"
+	"midrail/chain/render"
+	"midrail/chain/response"
+	"midrail/chain/spread"
+	"midrail/cmd/report"
+)
+
+func newSpread(s streams) *cobra.Command {
+	var f chainFlags
+	var boards int
+	var seed uint64
+	var keep, svg string
+	cmd := &cobra.Command{
+		Use:   "spread CHAIN [TRACK]",
+		Short: "A production run at the given tolerances: percentiles, yield, governing parts",
+		Long: `spread draws a production run whose parts, amplifiers and supply lie within their tolerances ([tolerance] in the
+chain file, or tolerance of a part), and tells how corners, gain and droop spread, and with a recording room and fold-back;
+how many boards hold the chain's limits; which part governs; and each figure with every part at its worst end.`,
+		Example: "  midrail spread front-end.toml song.wav --boards 2000",
+		Args: func(cmd *cobra.Command, args []string) error {
+			if len(args) < 1 || len(args) > 2 {
+				return usageError{fmt.Errorf("%s: want a chain and at most one track", cmd.CommandPath())}
+			}
+			return nil
+		},
+		RunE: func(cmd *cobra.Command, args []string) error {
+			n, err := s.open(args[0], f.set)
+			if err != nil {
+				return err
+			}
+			if boards < 2 || boards > 1e6 {
+				return usageError{fmt.Errorf("--boards %d: 2 to a million can be drawn", boards)}
+			}
+			o := spread.Options{Boards: boards, Seed: seed}
+			if keep != "" {
+				if o.Keep, err = valueOf(quantity.Frequency, keep, 0.1, 1e6); err != nil {
+					return err
+				}
+			}
+			if len(args) > 1 {
+				if err := listenFor(cmd.Context(), n, fileRecording(args[1]), &o); err != nil {
+					return err
+				}
+			}
+			bar := newBar(s, "boards", int64(boards))
+			done := 0
+			o.Progress = func(d int) { done = max(done, d); bar.to(int64(d)) }
+			run, err := spread.Make(cmd.Context(), n, o)
+			bar.end(err == nil)
+			if errors.Is(err, context.Canceled) {
+				fmt.Fprintf(s.err, "%d of %d boards were done\n", done, boards)
+			}
+			if err != nil {
+				return err
+			}
+			if svg != "" {
+				if err := replaceFile(svg, func(w io.Writer) error { return report.PlotSVG(w, bands(n, o), 100) }); err != nil {
+					return err
+				}
+			}
+			if f.json {
+				return writeJSON(s.out, spreadJSON(run, seed))
+			}
+			return printSpread(s.out, run)
+		},
+	}
+	f.add(cmd)
+	cmd.Flags().IntVar(&boards, "boards", 1000, "boards to draw")
+	cmd.Flags().Uint64Var(&seed, "seed", 1, "seed of the draw")
+	cmd.Flags().StringVar(&keep, "keep", "", "frequency at which droop is told (default: the chain's limit)")
+	cmd.Flags().StringVar(&svg, "svg", "", "draw the band of responses into a `file`")
+	return cmd
+}
+
+// The production run as JSON.
+type spreadResult struct {
+	Boards  int            `json:"boards"`
+	Seed    uint64         `json:"seed"`
+	Yield   report.Number  `json:"yield"`
+	Limits  []spreadLimit  `json:"limits"`
+	Figures []spreadFigure `json:"figures"`
+}
+
+type spreadLimit struct {
+	Name  string        `json:"name"`
+	Limit report.Number `json:"limit"`
+	Yield report.Number `json:"yield"`
+}
+
+type spreadFigure struct {
+	Name      string        `json:"name"`
+	Unit      string        `json:"unit"`
+	Nominal   report.Number `json:"nominal"`
+	Lowest    report.Number `json:"lowest"`
+	P1        report.Number `json:"p1"`
+	P5        report.Number `json:"p5"`
+	P50       report.Number `json:"p50"`
+	P95       report.Number `json:"p95"`
+	P99       report.Number `json:"p99"`
+	Highest   report.Number `json:"highest"`
+	WorstLow  report.Number `json:"worst_case_low"`
+	WorstHigh report.Number `json:"worst_case_high"`
+	Governs   []spreadShare `json:"governs"`
+}
+
+type spreadShare struct {
+	Part  string        `json:"part"`
+	Share report.Number `json:"share"`
+}
+
+func spreadJSON(run *spread.Run, seed uint64) spreadResult {
+	of := report.Of
+	out := spreadResult{Boards: run.Boards, Seed: seed, Yield: of(run.Yield)}
+	for _, l := range run.Limits {
+		out.Limits = append(out.Limits, spreadLimit{l.Name, of(l.Bound), of(l.Yield)})
+	}
+	for i := range run.Figures {
+		f := &run.Figures[i]
+		p := func(x float64) report.Number { return of(f.Percentile(x)) }
+		one := spreadFigure{f.Name, f.Unit, of(f.Nominal), p(0), p(0.01), p(0.05), p(0.5), p(0.95), p(0.99), p(1), of(f.WorstLow), of(f.WorstHigh), nil}
+		for _, s := range f.Shares {
+			one.Governs = append(one.Governs, spreadShare{s.Part, of(s.Share)})
+		}
+		out.Figures = append(out.Figures, one)
+	}
+	return out
+}
+
+func printSpread(w io.Writer, run *spread.Run) error {
+	t := report.NewText(w)
+	t.Line("%d boards", run.Boards)
+	t.Line("")
+	say := func(f *spread.Figure, x float64) string {
+		if f.Unit == "Hz" {
+			return report.Hz(report.Of(x))
+		}
+		return report.DB(report.Of(x))
+	}
+	var rows, worst [][]string
+	for i := range run.Figures {
+		f := &run.Figures[i]
+		row := []string{f.Name, say(f, f.Nominal)}
+		for _, p := range [...]float64{0.01, 0.05, 0.5, 0.95, 0.99} {
+			row = append(row, say(f, f.Percentile(p)))
+		}
+		rows = append(rows, row)
+		governs := ""
+		for _, s := range f.Shares[:min(1, len(f.Shares))] {
+			if s.Share >= 0.01 {
+				governs += s.Part + " " + report.Percent(report.Of(s.Share))
+			}
+		}
+		worst = append(worst, []string{f.Name, say(f, f.WorstLow) + " to " + say(f, f.WorstHigh), governs})
+	}
+	t.Table([]string{"", "nominal", "1 %", "5 %", "half", "95 %", "99 %"}, rows)
+	t.Line("")
+	t.Table([]string{"", "every part at its worst end", "governed by"}, worst)
+	if len(run.Limits) > 0 {
+		t.Line("")
+		rows = nil
+		for _, l := range run.Limits {
+			rows = append(rows, []string{l.Name, report.Plain(report.Of(l.Bound), 4), report.Percent(report.Of(l.Yield))})
+		}
+		t.Table([]string{"limit", "", "boards that hold it"}, rows)
+		t.Line("")
+		t.Line("Yield against all of them: %s", report.Percent(report.Of(run.Yield)))
+	}
+	return t.Err()
+}
+
+// bands draws the response of the nominal chain and, at each frequency, the lowest, the highest and the 5 and 95 % of a
+// hundred boards.
+func bands(n *circuit.Network, o spread.Options) report.Plot {
+	grid := response.Grid(10, math.Max(50e3, 2*n.Chain.Converter.Rate), 20)
+	p := report.Plot{Title: "Responses of a production run", X: "frequency, Hz", Y: "gain, dB", Log: true}
+	for _, c := range spread.Bands(n, o, grid) {
+		p.Curves = append(p.Curves, report.PlotCurve{Label: c.Name, X: grid, Y: c.Gain})
+	}
+	return p
+}
+
+// listenFor runs a recording through the nominal chain for its room and its fold-back.
+func listenFor(ctx context.Context, n *circuit.Network, r recording, o *spread.Options) error {
+	j := job{tracks: make([]recording, len(n.Chain.Inputs))}
+	for i := range j.tracks {
+		j.tracks[i] = r
+	}
+	tracks, err := openTracks(n.Chain, j)
+	if err != nil {
+		return err
+	}
+	defer tracks.close()
+	if o.Result, err = render.Run(ctx, n, tracks.feeds, render.Options{}, func(*render.Block) error { return nil }); err != nil {
+		return err
+	}
+	o.Sound, err = soundOf(n, r)
+	return err
+}
