@@ -119,3 +119,36 @@ func (s Series) Nearest(x float64) float64 {
 	}
 	return high
 }
+
+// Pair is two values and what they make together.
+type Pair struct {
+	A, B   float64 // A ≥ B
+	Makes  float64 // A + B, or A·B/(A + B)
+	Summed bool    // whether the two add: resistors in series, capacitors in parallel
+}
+
+// Pairs returns the pair of the series whose sum comes nearest to x, and the pair whose A·B/(A + B) does. It panics for x
+// outside 1e-30 to 1e30.
+func (s Series) Pairs(x float64) (sum, share Pair) {
+	d := s.Decade()
+	sum, share = Pair{Summed: true, Makes: math.Inf(1)}, Pair{Makes: math.Inf(1)}
+	better := func(p *Pair, a, b, makes float64) {
+		if math.Abs(makes/x-1) < math.Abs(p.Makes/x-1) {
+			p.A, p.B, p.Makes = math.Max(a, b), math.Min(a, b), makes
+		}
+	}
+	// The larger of a sum is x/2 to x; the smaller of the others is x to 2x.
+	for k := s.at(d, x/2); s.value(d, k) <= x*(1+same); k++ {
+		if a := s.value(d, k); x-a > x*1e-6 {
+			b := s.Nearest(x - a)
+			better(&sum, a, b, a+b)
+		}
+	}
+	for k := s.at(d, x); s.value(d, k) <= 2*x*(1+same); k++ {
+		if b := s.value(d, k); b-x > x*1e-6 {
+			a := s.Nearest(b * x / (b - x))
+			better(&share, a, b, a*b/(a+b))
+		}
+	}
+	return sum, share
+}

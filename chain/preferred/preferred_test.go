@@ -85,3 +85,20 @@ func TestParse(t *testing.T) {
 		t.Error(`Parse("E25") found a series`)
 	}
 }
+
+func TestPairsAreNoFartherThanOne(t *testing.T) {
+	rapid.Check(t, func(t *rapid.T) {
+		s := rapid.SampledFrom([]Series{E12, E24, E96}).Draw(t, "series")
+		x := rapid.Float64Range(1, 1e6).Draw(t, "x")
+		sum, share := s.Pairs(x)
+		// Two values of E12 make any third within 5 %, where one may be 10 % off.
+		for _, p := range []Pair{sum, share} {
+			if d := p.Makes/x - 1; !(d < 0.05 && d > -0.05) {
+				t.Fatalf("%v at %g: %+v", s, x, p)
+			}
+		}
+		if want := sum.A + sum.B; sum.Makes != want {
+			t.Fatalf("%+v", sum)
+		}
+	})
+}

@@ -22,8 +22,10 @@ import (
 	"midrail/chain"
 	"midrail/chain/circuit"
 	"midrail/chain/corner"
+	"midrail/chain/noise"
 	"midrail/chain/render"
 	"midrail/chain/response"
+	"midrail/chain/rest"
 )
 
 // Options are what a production run is made with.
@@ -32,8 +34,10 @@ type Options struct {
 	Seed   uint64
 	Keep   float64 // Hz, where droop is told; 0: the chain's limit, or none
 	// Result and Sound are of a recording through the nominal chain; nil leaves room and fold-back out.
-	Result   *render.Result
-	Sound    *corner.Sound
+	Result *render.Result
+	Sound  *corner.Sound
+	// Thorough adds settling and noise, which take a hundred times as long.
+	Thorough bool
 	Progress func(done int) // called now and then, from several goroutines; may be nil
 }
 
@@ -45,12 +49,14 @@ const (
 	Droop      = "droop"
 	Room       = "room"
 	Below      = "fold-back below wanted"
+	Settling   = "settling to 1 %"
+	Noise      = "noise"
 )
 
 // Figure is one figure over all boards.
 type Figure struct {
 	Name    string
-	Unit    string    // "Hz" or "dB"
+	Unit    string    // "Hz", "dB", "dBFS" or "s"
 	Nominal float64   // of the board with every part at its value
 	Sorted  []float64 // of every board, ascending
 	Shares  []Share   // parts by their share of the variance, the largest first
@@ -250,6 +256,8 @@ func newMeasure(n *circuit.Network, o Options) *measure {
 	add(m.droopAt > 0, Droop, "dB")
 	add(o.Result != nil, Room, "dB")
 	add(o.Sound != nil, Below, "dB")
+	add(o.Thorough, Settling, "s")
+	add(o.Thorough, Noise, "dBFS")
 	if o.Result != nil {
 		m.asked = atOutputs(n, m.mid)
 	}
@@ -291,7 +299,23 @@ func (m *measure) figures(n *circuit.Network) []float64 {
 	if m.o.Sound != nil {
 		out = append(out, m.o.Sound.BelowWith(n))
 	}
+	if m.o.Thorough {
+		out = append(out, settling(n), noise.At(n).Figures(n).DBFS)
+	}
 	return out
+}
+
+// settling returns the time to 1 % of the rest point; +Inf where there is none.
+func settling(n *circuit.Network) float64 {
+	at, err := n.Rest()
+	if err != nil {
+		return math.Inf(1)
+	}
+	s, err := rest.Settle(n, at)
+	if err != nil {
+		return math.Inf(1)
+	}
+	return s.OnePercent
 }
 
 // cross finds where the gain goes through a level near a frequency, on the side where it rises (1) or falls (−1) with it,
@@ -391,6 +415,8 @@ func (m *measure) gather(n *circuit.Network, vars []variable, factors, values []
 		limit(Room, "overload_time", &zero, false)
 	}
 	limit(Below, "fold_back_below_wanted", l.FoldBackBelowWanted, false)
+	limit(Settling, "settling", l.Settling, true)
+	limit(Noise, "noise", l.Noise, true)
 	good := 0
 	for _, h := range holds {
 		if h {

@@ -29,7 +29,7 @@ land to what is wanted.`,
 		Args: cobra.NoArgs,
 		RunE: func(cmd *cobra.Command, _ []string) error { return cmd.Help() },
 	}
-	cmd.AddCommand(newFilterParts(s), newGainParts(s), newBiasParts(s), newCouplingParts(s))
+	cmd.AddCommand(newFilterParts(s), newGainParts(s), newBiasParts(s), newCouplingParts(s), newValueParts(s))
 	return cmd
 }
 
@@ -314,6 +314,60 @@ func newGainParts(s streams) *cobra.Command {
 	f.add(cmd)
 	cmd.Flags().BoolVar(&upright, "non-inverting", false, "1 + r_f/r_g in place of r_f/r_in")
 	return cmd
+}
+
+func newValueParts(s streams) *cobra.Command {
+	var f partsFlags
+	cmd := &cobra.Command{
+		Use: "value VALUE", Short: "The nearest preferred values to a resistance or a capacitance, alone and in pairs", Args: exactly(1),
+		RunE: func(_ *cobra.Command, args []string) error {
+			r, c, err := f.series()
+			if err != nil {
+				return err
+			}
+			kind, series := quantity.Resistance, r
+			v, err := quantity.Parse(kind, args[0])
+			if err != nil {
+				kind, series = quantity.Capacitance, c
+				if v, err = quantity.Parse(kind, args[0]); err != nil {
+					return usageError{fmt.Errorf("%q is neither a resistance nor a capacitance, such as 4k73 or 12n4", args[0])}
+				}
+			}
+			if !(v.SI > 1e-15 && v.SI < 1e12) {
+				return usageError{fmt.Errorf("%s is out of range", args[0])}
+			}
+			sum, share := series.Pairs(v.SI)
+			near := series.Nearest(v.SI)
+			words := map[bool]string{true: "in series", false: "in parallel"}
+			name := func(p preferred.Pair) string { return words[p.Summed == (kind == quantity.Resistance)] }
+			var out []valueChoice
+			out = append(out, valueChoice{"alone", report.Of(near), report.Number{}, report.Of(near), report.Of(near/v.SI - 1)})
+			for _, p := range []preferred.Pair{sum, share} {
+				out = append(out, valueChoice{name(p), report.Of(p.A), report.Of(p.B), report.Of(p.Makes), report.Of(p.Makes/v.SI - 1)})
+			}
+			if f.json {
+				return writeJSON(s.out, out)
+			}
+			t := report.NewText(s.out)
+			var rows [][]string
+			for _, x := range out {
+				makes, _ := x.Makes.Value()
+				rows = append(rows, []string{x.How, code(kind, x.A), code(kind, x.B), quantity.Format(kind, makes), report.Percent(x.Error)})
+			}
+			t.Table([]string{series.String(), "", "", "makes", "off"}, rows)
+			return t.Err()
+		},
+	}
+	f.add(cmd)
+	return cmd
+}
+
+type valueChoice struct {
+	How   string        `json:"how"`
+	A     report.Number `json:"a"`
+	B     report.Number `json:"b"`
+	Makes report.Number `json:"makes"`
+	Error report.Number `json:"error"`
 }
 
 func newBiasParts(s streams) *cobra.Command {

@@ -20,6 +20,7 @@ import (
 func newSpread(s streams) *cobra.Command {
 	var f chainFlags
 	var boards int
+	var thorough bool
 	var seed uint64
 	var keep, svg string
 	cmd := &cobra.Command{
@@ -43,7 +44,7 @@ how many boards hold the chain's limits; which part governs; and each figure wit
 			if boards < 2 || boards > 1e6 {
 				return usageError{fmt.Errorf("--boards %d: 2 to a million can be drawn", boards)}
 			}
-			o := spread.Options{Boards: boards, Seed: seed}
+			o := spread.Options{Boards: boards, Seed: seed, Thorough: thorough}
 			if keep != "" {
 				if o.Keep, err = valueOf(quantity.Frequency, keep, 0.1, 1e6); err != nil {
 					return err
@@ -80,6 +81,7 @@ how many boards hold the chain's limits; which part governs; and each figure wit
 	cmd.Flags().IntVar(&boards, "boards", 1000, "boards to draw")
 	cmd.Flags().Uint64Var(&seed, "seed", 1, "seed of the draw")
 	cmd.Flags().StringVar(&keep, "keep", "", "frequency at which droop is told (default: the chain's limit)")
+	cmd.Flags().BoolVar(&thorough, "thorough", false, "add settling and noise, which take a hundred times as long")
 	cmd.Flags().StringVar(&svg, "svg", "", "draw the band of responses into a `file`")
 	return cmd
 }
@@ -143,8 +145,13 @@ func printSpread(w io.Writer, run *spread.Run) error {
 	t.Line("%d boards", run.Boards)
 	t.Line("")
 	say := func(f *spread.Figure, x float64) string {
-		if f.Unit == "Hz" {
+		switch f.Unit {
+		case "Hz":
 			return report.Hz(report.Of(x))
+		case "s":
+			return report.Seconds(report.Of(x))
+		case "dBFS":
+			return report.DBFS(report.Of(x))
 		}
 		return report.DB(report.Of(x))
 	}
@@ -152,7 +159,7 @@ func printSpread(w io.Writer, run *spread.Run) error {
 	for i := range run.Figures {
 		f := &run.Figures[i]
 		row := []string{f.Name, say(f, f.Nominal)}
-		for _, p := range [...]float64{0.01, 0.05, 0.5, 0.95, 0.99} {
+		for _, p := range [...]float64{0.01, 0.05, 0.95, 0.99} {
 			row = append(row, say(f, f.Percentile(p)))
 		}
 		rows = append(rows, row)
@@ -164,7 +171,7 @@ func printSpread(w io.Writer, run *spread.Run) error {
 		}
 		worst = append(worst, []string{f.Name, say(f, f.WorstLow) + " to " + say(f, f.WorstHigh), governs})
 	}
-	t.Table([]string{"", "nominal", "1 %", "5 %", "half", "95 %", "99 %"}, rows)
+	t.Table([]string{"", "nominal", "1 %", "5 %", "95 %", "99 %"}, rows)
 	t.Line("")
 	t.Table([]string{"", "every part at its worst end", "governed by"}, worst)
 	if len(run.Limits) > 0 {
