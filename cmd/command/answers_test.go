@@ -4,8 +4,10 @@ import (
 	"bytes"
 	"context"
 	"encoding/json"
+	"html"
 	"io"
 	"math"
+	"os"
 	"path/filepath"
 	"slices"
 	"strings"
@@ -40,6 +42,27 @@ func TestAnswersFitEightyColumns(t *testing.T) {
 					t.Errorf("%s %s, line %d: %d columns: %s", command, file, i+1, n, line)
 				}
 			}
+		}
+	}
+}
+
+// The page of a run holds every line that the commands print of its chain.
+func TestPageHoldsTheAnswers(t *testing.T) {
+	const file = "../../testdata/chains/brood-box.toml"
+	track, folder := filepath.Join(t.TempDir(), "track.wav"), filepath.Join(t.TempDir(), "out")
+	answer(t, "tracks", "tone", track, "--seconds", "0.2")
+	var out, wrong bytes.Buffer
+	if status := Exec(context.Background(), []string{"run", file, track, "--out", folder}, strings.NewReader(""), &out, &wrong); status != Done && status != Broken {
+		t.Fatalf("status %d: %s", status, wrong.String())
+	}
+	data, err := os.ReadFile(filepath.Join(folder, "report.html"))
+	if err != nil {
+		t.Fatal(err)
+	}
+	page := html.UnescapeString(string(data))
+	for _, command := range []string{"response", "rest", "noise", "ripple"} {
+		if text := strings.TrimRight(answer(t, command, file), "\n"); !strings.Contains(page, text) {
+			t.Errorf("%s: the page lacks\n%s", command, text)
 		}
 	}
 }

@@ -50,7 +50,7 @@ each amplifier's loop is from oscillating. Gains are in dB of volts a volt, or v
 			if err != nil {
 				return usageError{err}
 			}
-			grid := response.Grid(10, math.Max(100e3, 4*n.Chain.Converter.Rate), 20)
+			grid := responseGrid(n)
 			if frequencies != "" {
 				if grid, err = parseFrequencies(frequencies); err != nil {
 					return usageError{err}
@@ -83,6 +83,11 @@ each amplifier's loop is from oscillating. Gains are in dB of volts a volt, or v
 	cmd.Flags().StringVar(&csv, "csv", "", "write the points to a `file`")
 	cmd.Flags().StringVar(&svg, "svg", "", "draw the gain into a `file`")
 	return cmd
+}
+
+// responseGrid is the frequencies told when none are asked for.
+func responseGrid(n *circuit.Network) []float64 {
+	return response.Grid(10, math.Max(100e3, 4*n.Chain.Converter.Rate), 20)
 }
 
 // parseFrequencies reads a list such as "20,1k,8k".

@@ -44,9 +44,12 @@ to the total.`,
 		},
 	}
 	f.add(cmd)
-	cmd.Flags().StringVar(&frequencies, "frequencies", "50,100,300,1k,3k,10k", "frequencies to tell")
+	cmd.Flags().StringVar(&frequencies, "frequencies", rippleFrequencies, "frequencies to tell")
 	return cmd
 }
+
+// rippleFrequencies are told when none are asked for: the mains, its rectified hum, and the switching of lamps.
+const rippleFrequencies = "50,100,300,1k,3k,10k"
 
 // The supply's ways as JSON.
 type rippleResult struct {

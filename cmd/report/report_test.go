@@ -97,7 +97,7 @@ func example() *Run {
 
 // samplePictures returns plots to go with example.
 func samplePictures() *Pictures {
-	p := &Pictures{HalfRate: 4000, Kept: 3000, Duration: 42, Spectra: []Spectrum{{Per: "third octave"}}}
+	p := &Pictures{Answers: []Answer{{"Supply ripple", []string{"by way of  50 Hz", "half.top    74.3"}}}, HalfRate: 4000, Kept: 3000, Duration: 42, Spectra: []Spectrum{{Per: "third octave"}}}
 	r := Response{Input: "brood"}
 	for f := 10.0; f <= 100e3; f *= math.Pow(10, 1.0/50) {
 		r.Frequency = append(r.Frequency, f)
