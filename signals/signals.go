@@ -129,3 +129,60 @@ func (s *Samples) Read(dst []float64) (int, error) {
 	}
 	return n, nil
 }
+
+// Join returns tracks as one, the second following the first without a gap. Closing it closes them. It panics without a
+// track, and returns [ErrUnlike], closing none, where they differ in rate or in channels.
+func Join(tracks ...Track) (Track, error) {
+	for _, t := range tracks[1:] {
+		if t.Rate() != tracks[0].Rate() || t.Channels() != tracks[0].Channels() {
+			return nil, ErrUnlike
+		}
+	}
+	return &joined{Track: tracks[0], all: tracks, rest: tracks}, nil
+}
+
+// ErrUnlike is the error of [Join].
+var ErrUnlike = errors.New("tracks of different rates or numbers of channels cannot follow each other")
+
+type joined struct {
+	Track // for rate and channels
+	all   []Track
+	rest  []Track
+}
+
+func (j *joined) Frames() int64 {
+	total := int64(0)
+	for _, t := range j.all {
+		if t.Frames() < 0 {
+			return -1
+		}
+		total += t.Frames()
+	}
+	return total
+}
+
+func (j *joined) ReadFrames(dst []float64) (int, error) {
+	width := j.Channels()
+	got := 0
+	for got*width < len(dst) {
+		if len(j.rest) == 0 {
+			return got, io.EOF
+		}
+		n, err := j.rest[0].ReadFrames(dst[got*width:])
+		got += n
+		if errors.Is(err, io.EOF) {
+			j.rest = j.rest[1:]
+		} else if err != nil {
+			return got, err
+		}
+	}
+	return got, nil
+}
+
+func (j *joined) Close() error {
+	var err error
+	for _, t := range j.all {
+		err = errors.Join(err, t.Close())
+	}
+	return err
+}

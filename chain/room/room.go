@@ -14,8 +14,8 @@ import (
 	"midrail/signals/tone"
 )
 
-// Stage is how far a stage's amplifier is taken, and how far it may go. Voltages are of its internal source, as the
-// linear chain asks.
+// Stage is how far a stage's amplifier is taken, and how far it may go. Voltages are those of its output, as the
+// linear chain asks, with the load that its swing is stated for.
 type Stage struct {
 	Name                string
 	Lowest, Highest     float64 // V
@@ -35,8 +35,10 @@ func Of(n *circuit.Network, r *render.Result) []Stage {
 		if a.Virtual {
 			continue
 		}
-		s := Stage{Name: a.Name, Lowest: x.Lowest, Highest: x.Highest, LimitLow: x.LimitLow, LimitHigh: x.LimitHigh}
+		s := Stage{Name: a.Name, LimitLow: a.Model.SwingLow, LimitHigh: n.Chain.Supply.Voltage - a.Model.SwingHigh}
 		s.Down, s.Up = left(x.Rest-x.LimitLow, x.Rest-x.Lowest), left(x.LimitHigh-x.Rest, x.Highest-x.Rest)
+		rest := r.At.Volts[a.Out]
+		s.Lowest, s.Highest = rest+(x.Lowest-x.Rest)*ratio(s.LimitLow-rest, x.LimitLow-x.Rest), rest+(x.Highest-x.Rest)*ratio(s.LimitHigh-rest, x.LimitHigh-x.Rest)
 		nearer := math.Min(x.LimitHigh-x.Rest, x.Rest-x.LimitLow)
 		for i := range n.Inputs {
 			full := n.Chain.Inputs[i].FullScale
@@ -48,6 +50,15 @@ func Of(n *circuit.Network, r *render.Result) []Stage {
 		stages = append(stages, s)
 	}
 	return stages
+}
+
+// ratio is how far the output goes for each volt of its source, into the load that its swing is stated for; 1 where it
+// rests at the limit.
+func ratio(output, source float64) float64 {
+	if source == 0 || output == 0 {
+		return 1
+	}
+	return output / source
 }
 
 // left is what a limit leaves of an excursion in dB.

@@ -27,19 +27,14 @@ func newCorner(s streams) *cobra.Command {
 	var f chainFlags
 	var keep, rates, droop, below, write string
 	cmd := &cobra.Command{
-		Use:   "corner CHAIN [TRACK]",
+		Use:   "corner CHAIN [TRACK...]",
 		Short: "Converter rate, filter order and corner, chosen together on a track",
 		Long: `corner tries common converter rates with filters of order 1 to 8, three alignments and ten corners in place of the
 chain's own anti-alias filter, and tells what each would let fold back of a recording (the demo's, if none is given):
 the efficient ones, than which none is better in every respect, and one recommendation with its parts, verified by a
-full run. --write puts it into a chain file.`,
+full run. Several recordings are taken as one, the second following the first. --write puts it into a chain file.`,
 		Example: "  midrail corner front-end.toml song.wav --keep 3kHz --write better.toml",
-		Args: func(cmd *cobra.Command, args []string) error {
-			if len(args) < 1 || len(args) > 2 {
-				return usageError{fmt.Errorf("%s: want a chain and at most one track", cmd.CommandPath())}
-			}
-			return nil
-		},
+		Args:    withChain,
 		RunE: func(cmd *cobra.Command, args []string) error {
 			n, err := s.open(args[0], f.set)
 			if err != nil {
@@ -61,10 +56,7 @@ full run. --write puts it into a chain file.`,
 					return usageError{err}
 				}
 			}
-			r := demoRecording()
-			if len(args) > 1 {
-				r = fileRecording(args[1])
-			}
+			r := recordingOf(args[1:])
 			text, err := os.ReadFile(args[0])
 			if err != nil {
 				return err
@@ -136,11 +128,7 @@ func candidateOf(c corner.Candidate) cornerCandidate {
 
 // soundOf reads a recording as it is in front of the filter.
 func soundOf(n *circuit.Network, r recording) (*corner.Sound, error) {
-	j := job{tracks: make([]recording, len(n.Chain.Inputs))}
-	for i := range j.tracks {
-		j.tracks[i] = r
-	}
-	tracks, err := openTracks(n.Chain, j)
+	tracks, err := openTracks(n.Chain, jobOf(n.Chain, r))
 	if err != nil {
 		return nil, err
 	}
@@ -185,11 +173,7 @@ func cornerOf(ctx context.Context, n *circuit.Network, text string, r recording,
 
 // fullRun renders the recording through the recommended chain.
 func fullRun(ctx context.Context, n *circuit.Network, r recording) (cornerRun, error) {
-	j := job{tracks: make([]recording, len(n.Chain.Inputs))}
-	for i := range j.tracks {
-		j.tracks[i] = r
-	}
-	tracks, err := openTracks(n.Chain, j)
+	tracks, err := openTracks(n.Chain, jobOf(n.Chain, r))
 	if err != nil {
 		return cornerRun{}, err
 	}

@@ -15,6 +15,27 @@ import (
 	"midrail/signals/tone"
 )
 
+func BenchmarkCandidates(b *testing.B) {
+	c, err := chain.Read("test.toml", demoChain, nil)
+	if err != nil {
+		b.Fatal(err)
+	}
+	n, track := circuit.New(c), tone.Demo()
+	heard, err := corner.Listen(n, signals.Channels(track, 1), track.Rate())
+	if err != nil {
+		b.Fatal(err)
+	}
+	tried := 0
+	for b.Loop() {
+		all, err := corner.Candidates(n, heard, corner.Wish{Keep: 3000, Rates: corner.Common(), Droop: 1, Below: 50})
+		if err != nil {
+			b.Fatal(err)
+		}
+		tried += len(all)
+	}
+	b.ReportMetric(float64(tried)/b.Elapsed().Seconds(), "candidates/s")
+}
+
 // What corner predicts of a filter and a rate, a full run of that chain with preferred values gives within half a dB, for
 // rates and orders from both ends, on noise and on the demo's track. Preferred values move a corner by up to 2 %, and
 // fold-back with it.

@@ -40,6 +40,14 @@ func exactly(n int) cobra.PositionalArgs {
 	}
 }
 
+// withChain takes a chain and any number of tracks.
+func withChain(cmd *cobra.Command, args []string) error {
+	if err := cobra.MinimumNArgs(1)(cmd, args); err != nil {
+		return usageError{fmt.Errorf("%s: %w", cmd.CommandPath(), err)}
+	}
+	return nil
+}
+
 // writeNew writes a file that must not exist yet. Where writing fails, nothing is left.
 func writeNew(path string, write func(*os.File) error) error {
 	f, err := os.OpenFile(path, os.O_WRONLY|os.O_CREATE|os.O_EXCL, 0o666)

@@ -2,7 +2,6 @@ package command
 
 import (
 	"context"
-	"fmt"
 	"io"
 	"math"
 
@@ -21,18 +20,13 @@ func newRoom(s streams) *cobra.Command {
 	var f chainFlags
 	var margin, svg string
 	cmd := &cobra.Command{
-		Use:   "room CHAIN [TRACK]",
+		Use:   "room CHAIN [TRACK...]",
 		Short: "Headroom of each stage on a track, and the gain and the bias that fit",
 		Long: `room runs a recording (the demo's, if none is given) through the chain and tells how far each stage is taken and how
 far it may go; the level at the input at which it first clips; and the gain and the bias, in preferred values, that leave
-a margin. The gain is verified by a full run. A sweep of a tone's level tells where THD+N comes to 1 %.`,
+a margin. The gain is verified by a full run. Several recordings are taken as one, the second following the first. A sweep of a tone's level tells where THD+N comes to 1 %.`,
 		Example: "  midrail room front-end.toml song.wav --margin 3dB",
-		Args: func(cmd *cobra.Command, args []string) error {
-			if len(args) < 1 || len(args) > 2 {
-				return usageError{fmt.Errorf("%s: want a chain and at most one track", cmd.CommandPath())}
-			}
-			return nil
-		},
+		Args:    withChain,
 		RunE: func(cmd *cobra.Command, args []string) error {
 			n, err := s.open(args[0], f.set)
 			if err != nil {
@@ -42,10 +36,7 @@ a margin. The gain is verified by a full run. A sweep of a tone's level tells wh
 			if err != nil {
 				return err
 			}
-			r := demoRecording()
-			if len(args) > 1 {
-				r = fileRecording(args[1])
-			}
+			r := recordingOf(args[1:])
 			out, err := roomOf(cmd.Context(), n, r, db)
 			if err != nil {
 				return err
@@ -115,11 +106,7 @@ type roomPoint struct {
 func roomOf(ctx context.Context, n *circuit.Network, r recording, margin float64) (*roomResult, error) {
 	crest := math.NaN()
 	run := func(n *circuit.Network) (*render.Result, error) {
-		j := job{tracks: make([]recording, len(n.Chain.Inputs))}
-		for i := range j.tracks {
-			j.tracks[i] = r
-		}
-		tracks, err := openTracks(n.Chain, j)
+		tracks, err := openTracks(n.Chain, jobOf(n.Chain, r))
 		if err != nil {
 			return nil, err
 		}

@@ -7,6 +7,7 @@ import (
 	"fmt"
 	"io"
 	"path/filepath"
+	"slices"
 	"strings"
 
 	"github.com/spf13/cobra"
@@ -79,6 +80,37 @@ func fileRecording(path string) recording {
 
 func demoRecording() recording {
 	return recording{name: "demo", open: func() (signals.Track, error) { return tone.Demo(), nil }, demo: true}
+}
+
+// recordingOf is the files, each following the one before without a gap; the demo's track where there are none.
+func recordingOf(paths []string) recording {
+	switch len(paths) {
+	case 0:
+		return demoRecording()
+	case 1:
+		return fileRecording(paths[0])
+	}
+	return recording{name: strings.Join(paths, ", "), open: func() (signals.Track, error) {
+		var tracks []signals.Track
+		shut := func(err error) (signals.Track, error) {
+			for _, t := range tracks {
+				t.Close()
+			}
+			return nil, err
+		}
+		for _, path := range paths {
+			t, err := wav.Open(path)
+			if err != nil {
+				return shut(err)
+			}
+			tracks = append(tracks, t)
+		}
+		joined, err := signals.Join(tracks...)
+		if err != nil {
+			return shut(usageError{err})
+		}
+		return joined, nil
+	}}
 }
 
 func run(ctx context.Context, s streams, f runFlags, args []string) error {
@@ -156,6 +188,11 @@ type job struct {
 	folder string
 }
 
+// jobOf is the job that feeds every input with one recording.
+func jobOf(c *chain.Chain, r recording) job {
+	return job{label: baseName(r.name), tracks: slices.Repeat([]recording{r}, len(c.Inputs))}
+}
+
 func jobsOf(c *chain.Chain, f runFlags, args []string) ([]job, error) {
 	base := baseName(c.File)
 	if len(f.tracks) > 0 {
@@ -191,11 +228,7 @@ func jobsOf(c *chain.Chain, f runFlags, args []string) ([]job, error) {
 	}
 	var jobs []job
 	for _, r := range recordings {
-		j := job{label: baseName(r.name), tracks: make([]recording, len(c.Inputs))}
-		for i := range j.tracks {
-			j.tracks[i] = r
-		}
-		jobs = append(jobs, j)
+		jobs = append(jobs, jobOf(c, r))
 	}
 	switch {
 	case len(jobs) == 1 && f.out != "":

@@ -24,18 +24,13 @@ func newSpread(s streams) *cobra.Command {
 	var seed uint64
 	var keep, svg string
 	cmd := &cobra.Command{
-		Use:   "spread CHAIN [TRACK]",
+		Use:   "spread CHAIN [TRACK...]",
 		Short: "A production run at the given tolerances: percentiles, yield, governing parts",
 		Long: `spread draws a production run whose parts, amplifiers and supply lie within their tolerances ([tolerance] in the
 chain file, or tolerance of a part), and tells how corners, gain and droop spread, and with a recording room and fold-back;
 how many boards hold the chain's limits; which part governs; and each figure with every part at its worst end.`,
 		Example: "  midrail spread front-end.toml song.wav --boards 2000",
-		Args: func(cmd *cobra.Command, args []string) error {
-			if len(args) < 1 || len(args) > 2 {
-				return usageError{fmt.Errorf("%s: want a chain and at most one track", cmd.CommandPath())}
-			}
-			return nil
-		},
+		Args:    withChain,
 		RunE: func(cmd *cobra.Command, args []string) error {
 			n, err := s.open(args[0], f.set)
 			if err != nil {
@@ -51,7 +46,7 @@ how many boards hold the chain's limits; which part governs; and each figure wit
 				}
 			}
 			if len(args) > 1 {
-				if err := listenFor(cmd.Context(), n, fileRecording(args[1]), &o); err != nil {
+				if err := listenFor(cmd.Context(), n, recordingOf(args[1:]), &o); err != nil {
 					return err
 				}
 			}
@@ -200,11 +195,7 @@ func bands(n *circuit.Network, o spread.Options) report.Plot {
 
 // listenFor runs a recording through the nominal chain for its room and its fold-back.
 func listenFor(ctx context.Context, n *circuit.Network, r recording, o *spread.Options) error {
-	j := job{tracks: make([]recording, len(n.Chain.Inputs))}
-	for i := range j.tracks {
-		j.tracks[i] = r
-	}
-	tracks, err := openTracks(n.Chain, j)
+	tracks, err := openTracks(n.Chain, jobOf(n.Chain, r))
 	if err != nil {
 		return err
 	}
