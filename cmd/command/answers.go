@@ -13,13 +13,9 @@ import (
 	"midrail/cmd/report"
 )
 
-// answersOf is what response, rest, noise and ripple print of a chain, for the page: response once for each input.
-func answersOf(n *circuit.Network, b *noise.Budget) ([]report.Answer, error) {
+// answersOf is what response, rest, noise and ripple print of a chain, for the report: response once for each input.
+func answersOf(n *circuit.Network, settled *rest.Rest, b *noise.Budget) ([]report.Answer, error) {
 	at, err := n.Rest()
-	if err != nil {
-		return nil, err
-	}
-	settled, err := rest.Find(n)
 	if err != nil {
 		return nil, err
 	}

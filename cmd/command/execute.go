@@ -428,6 +428,9 @@ func describe(n *circuit.Network, tracks *openedTracks, r *render.Result, res *r
 		return nil, err
 	}
 	run.Rest, run.Noise, run.Parts = restOf(c, atRest), noiseOf(n, budget), partsOf(c)
+	if run.Answers, err = answersOf(n, atRest, budget); err != nil {
+		return nil, err
+	}
 	margins := response.Margins(n)
 	run.Margins, run.SupplyPaths = marginsOf(margins), supplyOf(n, r.At)
 	for _, l := range residue.Limits(n, r, res, atRest.Settling.OnePercent) {

@@ -37,9 +37,6 @@ func writePage(n *circuit.Network, j job, out *folder, run *report.Run, r *rende
 		}
 		p.Grams = append(p.Grams, g)
 	}
-	if p.Answers, err = answersOf(n, budget); err != nil {
-		return err
-	}
 	return writeFile(out.file("report.html"), func(w io.Writer) error { return report.WriteHTML(w, run, p) })
 }
 

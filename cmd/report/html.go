@@ -34,7 +34,6 @@ type page struct {
 	Thirds   *thirds // nil where no layer has them
 	Purchase []bought
 	CutShort bool // whether the players hold passages only
-	Answers  []Answer
 }
 
 // player is one sound as the page has it.
@@ -84,7 +83,6 @@ func WriteHTML(w io.Writer, run *Run, pictures *Pictures) error {
 			return err
 		}
 		p.listen(pictures)
-		p.Answers = pictures.Answers
 	}
 	return fill(w, "page.html", func(head template.HTML) any { p.Head = head; return p })
 }

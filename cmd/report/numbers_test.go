@@ -81,7 +81,7 @@ func leaves(into map[string]any, path string, v any) map[string]any {
 
 var (
 	dataElement = regexp.MustCompile(`<data value="([^"]*)" data-at="([^"]*)">([^<]*)</data>`)
-	notWords    = regexp.MustCompile(`(?s)<svg.*?</svg>|<style>.*?</style>|<script.*?</script>|<data .*?</data>|<figcaption>.*?</figcaption>|<pre.*?</pre>|<[^>]*>`)
+	notWords    = regexp.MustCompile(`(?s)<svg.*?</svg>|<style>.*?</style>|<script.*?</script>|<data .*?</data>|<figcaption>.*?</figcaption>|<[^>]*>`)
 	numberText  = regexp.MustCompile(`−?\d[\d ]*(?:[.:]\d+)*`)
 )
 

@@ -92,12 +92,13 @@ func example() *Run {
 			{Note, "quad", "the figures of its class are typical: check the datasheet's worst case"},
 		},
 		Assumptions: []string{"25 °C, noise counted from 20 Hz", "the figures of bipolar single-supply are from memory"},
+		Answers:     []Answer{{"Supply ripple", []string{"by way of  50 Hz", "half.top    74.3"}}},
 	}
 }
 
 // samplePictures returns plots to go with example.
 func samplePictures() *Pictures {
-	p := &Pictures{Answers: []Answer{{"Supply ripple", []string{"by way of  50 Hz", "half.top    74.3"}}}, HalfRate: 4000, Kept: 3000, Duration: 42, Spectra: []Spectrum{{Per: "third octave"}}}
+	p := &Pictures{HalfRate: 4000, Kept: 3000, Duration: 42, Spectra: []Spectrum{{Per: "third octave"}}}
 	r := Response{Input: "brood"}
 	for f := 10.0; f <= 100e3; f *= math.Pow(10, 1.0/50) {
 		r.Frequency = append(r.Frequency, f)
@@ -278,8 +279,9 @@ func TestNumber(t *testing.T) {
 // The keys are those of the published form of report.json; a key that changes breaks its readers.
 func TestJSONKeys(t *testing.T) {
 	keys := map[string]string{
-		"":                       "tool chain track internal overload stages converter layers events waveforms noise rest margins supply_paths parts listen limits findings assumptions",
+		"":                       "tool chain track internal overload stages converter layers events waveforms noise rest margins supply_paths parts listen limits findings assumptions answers",
 		"waveforms":              "stage kind at_s over_db",
+		"answers":                "title lines",
 		"noise":                  "total sources equivalent_input",
 		"noise.equivalent_input": "input value unit",
 		"margins":                "amplifier crossover_hz phase_margin_deg gain_margin_db",

@@ -28,6 +28,14 @@ type Run struct {
 	Limits      []Limit     `json:"limits"`
 	Findings    []Finding   `json:"findings"` // the weightiest first
 	Assumptions []string    `json:"assumptions"`
+	Answers     []Answer    `json:"answers"`
+}
+
+// Answer is what a command that needs no recording prints of the chain; its figures in full precision are that command's
+// JSON.
+type Answer struct {
+	Title string   `json:"title"`
+	Lines []string `json:"lines"`
 }
 
 // Tool names the program that made the result.
@@ -300,7 +308,7 @@ type Finding struct {
 	Text     string `json:"text"`
 }
 
-// Pictures are what the plots of the page are drawn from, and what else only the page shows. None of it is in the JSON. A plot
+// Pictures are what the plots of the page are drawn from. None of it is in the JSON. A plot
 // without data is left out of the page. Values that are NaN or infinite are gaps in the line.
 type Pictures struct {
 	Responses []Response // from each input to the converter
@@ -314,13 +322,6 @@ type Pictures struct {
 	Grams     []Gram
 	Densities []Line        // noise at the converter's input, in V/√Hz
 	Sounds    []PlayerSound // one for each of Run.Listen.Players
-	Answers   []Answer      // each is JSON of a command of its own
-}
-
-// Answer is what a command that needs no recording prints of the chain.
-type Answer struct {
-	Title string
-	Lines []string
 }
 
 // Scope is the voltage of each stage around an overload.
