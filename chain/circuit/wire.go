@@ -444,10 +444,10 @@ func wireNetwork(w *stageWiring) {
 		}
 	}
 	for i, u := range w.s.Uses {
-		owner, stage := w.s.Name, w.index
+		owner := w.s.Name
 		if u.Output != "out" {
-			owner, stage = fmt.Sprintf("%s amplifier %d", w.s.Name, i+1), -1
+			owner = fmt.Sprintf("%s amplifier %d", w.s.Name, i+1)
 		}
-		w.amplifier(owner, stage, u.Amplifier, at(u.Plus), at(u.Minus), at(u.Output))
+		w.amplifier(owner, w.index, u.Amplifier, at(u.Plus), at(u.Minus), at(u.Output))
 	}
 }

@@ -337,8 +337,11 @@ func (m *Margin) find(n *circuit.Network, k int, a circuit.Amplifier) {
 		return forward * n.Feedback(k, f)
 	}
 	grid := Grid(0.1, 100*gbw, perDecade)
-	phase, last := 0., cmplx.Phase(loop(grid[0]))
-	phase = last
+	last := cmplx.Phase(loop(grid[0]))
+	phase := last
+	if phase > math.Pi/2 {
+		phase -= 2 * math.Pi // it lags, as two integrators within the loop do
+	}
 	lastGain := cmplx.Abs(loop(grid[0]))
 	for i := 1; i < len(grid); i++ {
 		h := loop(grid[i])

@@ -3,6 +3,7 @@ package response
 import (
 	"fmt"
 	"math"
+	"os"
 	"testing"
 
 	"midrail/chain"
@@ -148,6 +149,29 @@ c_2 = "1n5"
 	near(t, "Q", poles[0].Q, q, 1e-8)
 	if !math.IsNaN(f.LowCorner) {
 		t.Errorf("a low corner at %g Hz", f.LowCorner)
+	}
+}
+
+// Within a state-variable filter one amplifier's loop holds two integrators and begins at −180°: its margin is what is
+// left at the crossover, and never more than half a turn.
+func TestMarginsOfAStateVariableFilter(t *testing.T) {
+	const file = "../../testdata/chains/state-variable.toml"
+	text, err := os.ReadFile(file)
+	if err != nil {
+		t.Fatal(err)
+	}
+	c, err := chain.Read(file, text, nil)
+	if err != nil {
+		t.Fatal(err)
+	}
+	margins := Margins(circuit.New(c))
+	if len(margins) != 3 {
+		t.Fatalf("%d margins, want 3", len(margins))
+	}
+	for _, m := range margins {
+		if !(m.Phase > Wary && m.Phase < 180) {
+			t.Errorf("%s: %g°", m.Amplifier, m.Phase)
+		}
 	}
 }
 

@@ -13,6 +13,8 @@ import (
 	"strings"
 	"testing"
 	"unicode/utf8"
+
+	"midrail/cmd/report"
 )
 
 // chains are the chain files of the test data.
@@ -64,6 +66,21 @@ func TestPageHoldsTheAnswers(t *testing.T) {
 		if text := strings.TrimRight(answer(t, command, file), "\n"); !strings.Contains(page, text) {
 			t.Errorf("%s: the page lacks\n%s", command, text)
 		}
+	}
+}
+
+// A stage of several amplifiers is told to overload when any of them does.
+func TestStageOfSeveralAmplifiersOverloads(t *testing.T) {
+	track, folder := filepath.Join(t.TempDir(), "track.wav"), filepath.Join(t.TempDir(), "out")
+	answer(t, "tracks", "tone", track, "--seconds", "0.2", "--level", "0")
+	var got report.Run
+	text := answer(t, "run", "../../testdata/chains/state-variable.toml", track, "--set", "line.full_scale=3Vrms", "--no-html", "--json", "--out", folder)
+	if err := json.Unmarshal([]byte(text), &got); err != nil {
+		t.Fatal(err)
+	}
+	s := got.Stages[0]
+	if room, _ := s.RoomDB.Value(); s.Overload.Events == 0 || s.Overload.High == 0 || s.Overload.Low == 0 || !(room < 0) {
+		t.Errorf("room %v, overload %+v", s.RoomDB, s.Overload)
 	}
 }
 

@@ -7,6 +7,7 @@ import (
 	"io"
 	"math"
 	"os"
+	"slices"
 	"strings"
 	"time"
 
@@ -402,7 +403,7 @@ func describe(n *circuit.Network, tracks *openedTracks, r *render.Result, res *r
 			PeakDBFS: of(level.Peak(first.peak)), RMSDBFS: of(level.DBFS(first.rms())),
 		},
 		Internal: report.Internal{RateHz: of(r.Plan.Rate), LargestErrorDB: of(r.Plan.LargestError), ToHz: of(r.Plan.To)},
-		Overload: overloadOf(r, "", r.Overloaded),
+		Overload: overloadOf(r, nil),
 		Converter: report.Converter{
 			RateHz: of(c.Converter.Rate), Bits: c.Converter.Bits, LowV: of(c.Converter.Low), HighV: of(c.Converter.High),
 			Samples: r.Conversions, Saturated: r.Saturated, Rest: of(r.Rest),
@@ -442,13 +443,13 @@ func describe(n *circuit.Network, tracks *openedTracks, r *render.Result, res *r
 	return run, nil
 }
 
-// overloadOf gathers the overloads of one owner, or of all for "". What is only watched is no overload.
-func overloadOf(r *render.Result, owner string, seconds float64) report.Overload {
+// overloadOf gathers the overloads of some owners, or of all for nil. What is only watched is no overload.
+func overloadOf(r *render.Result, owners []string) report.Overload {
 	o := report.Overload{}
 	total := 0.
 	var worst render.Event
 	for _, x := range r.Overloads {
-		if owner != "" && x.Owner != owner || !x.Kind.Limits() {
+		if owners != nil && !slices.Contains(owners, x.Owner) || !x.Kind.Limits() {
 			continue
 		}
 		total += x.Seconds
@@ -466,8 +467,9 @@ func overloadOf(r *render.Result, owner string, seconds float64) report.Overload
 			o.Worst = &report.Worst{AtS: report.Of(worst.From), Seconds: report.Of(worst.To - worst.From), OverDB: report.Of(worst.Over)}
 		}
 	}
-	if owner != "" {
-		seconds = total
+	seconds := r.Overloaded
+	if owners != nil {
+		seconds = math.Min(total, r.Seconds)
 	}
 	o.Seconds, o.Fraction = report.Of(seconds), report.Of(seconds/r.Seconds)
 	return o
@@ -479,15 +481,21 @@ func stageOf(n *circuit.Network, r *render.Result, i int) report.Stage {
 	of := report.Of
 	stage := report.Stage{
 		Name: s.Name, Kind: s.Kind.Name, RestV: of(at.Rest), LowestV: of(at.Lowest), HighestV: of(at.Highest),
-		Overload: overloadOf(r, s.Name, 0),
 	}
+	owners, room := []string{s.Name}, math.NaN()
 	for k, a := range n.Amplifiers {
-		if a.Stage == i {
-			supply := n.Chain.Supply.Voltage
-			stage.LimitLowV, stage.LimitHighV = of(a.Model.SwingLow), of(supply-a.Model.SwingHigh)
-			stage.RoomDB = of(r.Amplifiers[k].Room())
+		if a.Stage != i {
+			continue
+		}
+		if a.Out == n.StageNode(i) {
+			stage.LimitLowV, stage.LimitHighV = of(a.Model.SwingLow), of(n.Chain.Supply.Voltage-a.Model.SwingHigh)
+		}
+		owners = append(owners, a.Name)
+		if left := r.Amplifiers[k].Room(); !(left > room) {
+			room = left
 		}
 	}
+	stage.RoomDB, stage.Overload = of(room), overloadOf(r, owners)
 	return stage
 }
 
