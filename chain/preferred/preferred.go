@@ -122,32 +122,52 @@ func (s Series) Nearest(x float64) float64 {
 
 // Pair is two values and what they make together.
 type Pair struct {
-	A, B   float64 // A ≥ B
+	A, B   float64 // A ≥ B ≥ A/1000
 	Makes  float64 // A + B, or A·B/(A + B)
 	Summed bool    // whether the two add: resistors in series, capacitors in parallel
 }
 
-// Pairs returns the pair of the series whose sum comes nearest to x, and the pair whose A·B/(A + B) does. It panics for x
-// outside 1e-30 to 1e30.
+// widest is the largest A/B of a [Pair]: beyond it, B is less than the tolerance of A.
+const widest = 1000
+
+// nearer is by how much, of the wanted value, a pair must come nearer than another: less is rounding.
+const nearer = 1e-12
+
+// Pairs returns the pair of the series whose sum comes nearest to x, and the pair whose A·B/(A + B) does; of pairs that
+// come equally near, the one whose values are closest to one another. It panics for x outside 1e-26 to 1e26.
 func (s Series) Pairs(x float64) (sum, share Pair) {
+	if !(x >= 1e-26 && x <= 1e26) {
+		panic("preferred: value out of range")
+	}
 	d := s.Decade()
 	sum, share = Pair{Summed: true, Makes: math.Inf(1)}, Pair{Makes: math.Inf(1)}
 	better := func(p *Pair, a, b, makes float64) {
-		if math.Abs(makes/x-1) < math.Abs(p.Makes/x-1) {
+		if math.Abs(makes-x) < math.Abs(p.Makes-x)-nearer*x {
 			p.A, p.B, p.Makes = math.Max(a, b), math.Min(a, b), makes
 		}
 	}
-	// The larger of a sum is x/2 to x; the smaller of the others is x to 2x.
-	for k := s.at(d, x/2); s.value(d, k) <= x*(1+same); k++ {
-		if a := s.value(d, k); x-a > x*1e-6 {
-			b := s.Nearest(x - a)
-			better(&sum, a, b, a+b)
+	// The larger of a sum goes from the last value up to x/2 to the first above x, the smaller of the others from the
+	// last value up to x to the first above 2x; the partner is a neighbour of what would be exact.
+	for k, last := s.at(d, x/2), s.at(d, x)+1; k <= last; k++ {
+		a := s.value(d, k)
+		below := s.at(d, math.Max(x-a, a/widest))
+		for j := below; j <= below+1; j++ {
+			if b := s.value(d, j); a <= widest*b*(1+same) {
+				better(&sum, a, b, a+b)
+			}
 		}
 	}
-	for k := s.at(d, x); s.value(d, k) <= 2*x*(1+same); k++ {
-		if b := s.value(d, k); b-x > x*1e-6 {
-			a := s.Nearest(b * x / (b - x))
-			better(&share, a, b, a*b/(a+b))
+	for k, last := s.at(d, 2*x)+1, s.at(d, x); k >= last; k-- {
+		b := s.value(d, k)
+		exact := widest * b
+		if b > x {
+			exact = math.Min(exact, b*x/(b-x))
+		}
+		below := s.at(d, exact)
+		for j := below; j <= below+1; j++ {
+			if a := s.value(d, j); a <= widest*b*(1+same) {
+				better(&share, a, b, a*b/(a+b))
+			}
 		}
 	}
 	return sum, share

@@ -1,6 +1,8 @@
 package preferred
 
 import (
+	"math"
+	"strconv"
 	"testing"
 
 	"pgregory.net/rapid"
@@ -86,19 +88,96 @@ func TestParse(t *testing.T) {
 	}
 }
 
-func TestPairsAreNoFartherThanOne(t *testing.T) {
+// rounding is what the sum, or the product over the sum, of two decimal values may be off by.
+const rounding = 1e-12
+
+func TestPairsAreTheNearestOfAll(t *testing.T) {
 	rapid.Check(t, func(t *rapid.T) {
-		s := rapid.SampledFrom([]Series{E12, E24, E96}).Draw(t, "series")
-		x := rapid.Float64Range(1, 1e6).Draw(t, "x")
-		sum, share := s.Pairs(x)
-		// Two values of E12 make any third within 5 %, where one may be 10 % off.
-		for _, p := range []Pair{sum, share} {
-			if d := p.Makes/x - 1; !(d < 0.05 && d > -0.05) {
-				t.Fatalf("%v at %g: %+v", s, x, p)
+		s := rapid.SampledFrom([]Series{E3, E6, E12, E24}).Draw(t, "series")
+		x := math.Pow(10, rapid.Float64Range(-12, 9).Draw(t, "decade"))
+		if rapid.Bool().Draw(t, "preferred") {
+			x = s.Nearest(x)
+		}
+		var values []float64
+		for v := s.Down(x / 2e3); v <= 2e3*x; v = s.Up(v) {
+			values = append(values, v)
+		}
+		sum, share := math.Inf(1), math.Inf(1)
+		for i, b := range values {
+			for _, a := range values[i:] {
+				if a <= 1000*b*(1+same) {
+					sum = math.Min(sum, math.Abs((a+b)/x-1))
+					share = math.Min(share, math.Abs(a*b/(a+b)/x-1))
+				}
 			}
 		}
-		if want := sum.A + sum.B; sum.Makes != want {
-			t.Fatalf("%+v", sum)
+		gotSum, gotShare := s.Pairs(x)
+		for _, c := range []struct {
+			got         Pair
+			makes, best float64
+		}{
+			{gotSum, gotSum.A + gotSum.B, sum},
+			{gotShare, gotShare.A * gotShare.B / (gotShare.A + gotShare.B), share},
+		} {
+			p := c.got
+			if !(p.A >= p.B && p.A <= 1000*p.B*(1+same) && s.Nearest(p.A) == p.A && s.Nearest(p.B) == p.B) {
+				t.Fatalf("%v at %g: %+v is no pair of the series", s, x, p)
+			}
+			if !(math.Abs(p.Makes/c.makes-1) <= rounding && math.Abs(p.Makes/x-1) <= c.best+rounding) {
+				t.Fatalf("%v at %g: %+v is off by %g, the nearest by %g", s, x, p, p.Makes/x-1, c.best)
+			}
 		}
 	})
+}
+
+// Of 4k7 = 3k6 + 1k1 = 2k7 + 2k0 = …, the pair of closest values.
+func TestPairsOfClosestValuesComeFirst(t *testing.T) {
+	if sum, _ := E24.Pairs(4700); sum != (Pair{2700, 2000, 4700, true}) {
+		t.Errorf("4700 is the sum %+v", sum)
+	}
+	if _, share := E12.Pairs(50); share != (Pair{100, 100, 50, false}) {
+		t.Errorf("50 is the share %+v", share)
+	}
+}
+
+// A value is the same number that its digits are: 4700 and 4.7e-10, not one beside it.
+func TestValuesAreExact(t *testing.T) {
+	for _, s := range All() {
+		for power := -18; power <= 12; power++ {
+			for _, figures := range s.Decade() {
+				want, err := strconv.ParseFloat(strconv.Itoa(figures)+"e"+strconv.Itoa(power-2), 64)
+				if err != nil {
+					t.Fatal(err)
+				}
+				// One ulp off, as sums of rounded factors are, is still it.
+				for _, x := range []float64{want, math.Nextafter(want, 0), math.Nextafter(want, math.Inf(1))} {
+					if got := s.Nearest(x); got != want {
+						t.Fatalf("%v.Nearest(%.17g) = %.17g, want %.17g", s, x, got, want)
+					}
+					if down, up := s.Down(x), s.Up(x); !(down < want && up > want) {
+						t.Fatalf("%v at %.17g: %.17g, %.17g", s, x, down, up)
+					}
+				}
+			}
+		}
+	}
+}
+
+func TestOutOfRangePanics(t *testing.T) {
+	E192.Pairs(1e-26)
+	E192.Pairs(1e26)
+	for _, f := range []func(x float64){
+		func(x float64) { E24.Nearest(x) }, func(x float64) { E24.Up(x) }, func(x float64) { E24.Down(x) }, func(x float64) { E24.Pairs(x) },
+	} {
+		for _, x := range []float64{0, -1, 1e31, 1e-31, math.Inf(1), math.NaN()} {
+			func() {
+				defer func() {
+					if recover() != "preferred: value out of range" {
+						t.Errorf("%g: no panic of ours", x)
+					}
+				}()
+				f(x)
+			}()
+		}
+	}
 }
