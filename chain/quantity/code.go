@@ -8,65 +8,68 @@ import (
 	"unicode/utf8"
 )
 
+// tolerances are the letters that IEC 60062 gives tolerances, symmetric and not.
+const tolerances = "ELPWBCDFGHJKMNQSTZ"
+
 // parseCode reads a letter code of IEC 60062, in which the multiplier stands for the decimal point ("4k7", "R47",
 // "2u2"), or for a capacitor the three digits of its marking ("104": 10·10⁴ pF). It reports false where the text is
 // neither; why is not empty where it is one that cannot be taken.
 func parseCode(k Kind, t string) (v Value, ok bool, why string) {
-	if k == Capacitance && len(t) == 3 && allDigits(t) {
-		return parseMarking(t)
+	whole, tail := leadingDigits(t)
+	if k == Capacitance && len(whole) == 3 {
+		switch {
+		case tail == "":
+			return parseMarking(t)
+		case tail != "F" && isTolerance(tail): // "104K"; "104F" is farads
+			return Value{}, false, hasTolerance(tail)
+		}
 	}
-	i := 0
-	for i < len(t) && isDigit(t[i]) {
-		i++
-	}
-	whole := t[:i]
-	letter, after := firstRune(t[i:])
-	if letter == "" || after == "" && whole == "" {
-		return Value{}, false, ""
-	}
-	j := 0
-	for j < len(after) && isDigit(after[j]) {
-		j++
-	}
-	fraction, rest := after[:j], after[j:]
-	if letter == "." || whole == "" && fraction == "" {
-		return Value{}, false, ""
-	}
+	letter, after := firstRune(tail)
+	fraction, rest := leadingDigits(after)
 	exponent, known := codeLetter(k, letter)
-	if !known {
+	if !known || whole == "" && fraction == "" {
 		return Value{}, false, ""
 	}
 	switch {
 	case rest == "":
-	case fraction != "" && len(rest) == 1 && strings.Contains("ELPWBCDFGHJKMNQSTZ", rest):
-		return Value{}, false, fmt.Sprintf("the letter %s at its end is a tolerance, which has its own key", rest)
-	case k == Resistance && (rest == "ohm" || rest == "ohms" || rest == "Ω" || rest == "\u2126"), k == Capacitance && rest == "F":
-		// 4k7ohm, 2u2F
-		if letter == "R" && rest != "" && k == Capacitance {
-			return Value{}, false, ""
+	case k == Capacitance && rest == "F": // a farad, or 1 %: the same value
+		if fraction == "" {
+			return Value{}, false, "" // "100nF" is a number with a unit
 		}
+		v.Note = fmt.Sprintf("F in %q is read as farad; a tolerance has its own key", t)
+	case isTolerance(rest):
+		return Value{}, false, hasTolerance(rest)
+	case k == Resistance && fraction != "" && (rest == "ohm" || rest == "ohms" || rest == "Ω" || rest == "\u2126"): // 4k7ohm
 	default:
 		return Value{}, false, ""
 	}
-	if fraction == "" && rest != "" {
-		return Value{}, false, "" // "100nF" is a number with a unit
-	}
-	if whole == "" {
-		whole = "0"
-	}
-	number := whole
+	number := "0" + whole
 	if fraction != "" {
 		number += "." + fraction
 	}
-	x := scaled(number, exponent)
-	if math.IsInf(x, 0) {
-		return Value{}, false, "the number is out of range"
-	}
-	v = Value{SI: x}
+	v.SI = scaled(number, exponent)
 	if k == Resistance && letter == "m" {
-		v.Note = fmt.Sprintf("%q is milliohms; M is mega", t)
+		v.Note = milliohms(t)
 	}
 	return v, true, ""
+}
+
+func isTolerance(s string) bool { return len(s) == 1 && strings.Contains(tolerances, s) }
+
+func hasTolerance(letter string) string {
+	return fmt.Sprintf("the letter %s at its end is a tolerance, which has its own key", letter)
+}
+
+// milliohms is the note on a resistance that ends in m.
+func milliohms(t string) string { return fmt.Sprintf("%q is milliohms; M is mega", t) }
+
+// leadingDigits parts the digits at the beginning from the rest.
+func leadingDigits(s string) (digits, rest string) {
+	i := 0
+	for i < len(s) && isDigit(s[i]) {
+		i++
+	}
+	return s[:i], s[i:]
 }
 
 // parseMarking reads the three digits on a capacitor: two figures and the power of ten, in picofarads.
@@ -92,7 +95,7 @@ func codeLetter(k Kind, letter string) (exponent int, ok bool) {
 		switch letter {
 		case "R", "Ω", "\u2126": // omega and the ohm sign
 			return 0, true
-		case "m", "k", "K", "M", "G":
+		case "m", "k", "K", "M", "G", "T":
 			return prefixOf(letter)
 		}
 		return 0, false
@@ -112,7 +115,7 @@ func firstRune(s string) (first, rest string) {
 }
 
 // Format prints a value in SI as the trade writes it, with up to four significant digits: "4.7 kΩ", "100 nF",
-// "3.3 V", "16 kHz", "0.4 V/µs", "40 nV/√Hz".
+// "3.3 V", "16 kHz", "0.4 V/µs", "40 nV/√Hz". [Parse] reads it back. It panics for a kind that there is not.
 func Format(k Kind, si float64) string {
 	unit := ""
 	switch k {

@@ -89,7 +89,7 @@ func kindTable(k Kind) kindOf {
 		return kindOf{"a voltage", []unit{volt("V", 1, "V")}, true, `"3.3V", "20mV" or 3.3`, false}
 	case Level:
 		return kindOf{"a signal level", []unit{
-			volt("Vrms", 1, "Vrms", "VRMS"), volt("Vpp", 1/(2*math.Sqrt2), "Vpp"), volt("Vp", 1/math.Sqrt2, "Vp"),
+			volt("Vrms", 1, "Vrms", "VRMS", "V RMS"), volt("Vpp", 1/(2*math.Sqrt2), "Vpp"), volt("Vp", 1/math.Sqrt2, "Vp"),
 			{name: "dBV", spelled: []string{"dBV"}, factor: 1, decibels: true}, {name: "dBu", spelled: []string{"dBu"}, factor: DBu, decibels: true},
 		}, false, `"2Vrms", "0.8Vpp", "0.4Vp", "-10dBV" or "+4dBu"`, false}
 	case SoundLevel:
@@ -118,8 +118,7 @@ func kindTable(k Kind) kindOf {
 		return kindOf{"a level in decibels", []unit{{name: "dBFS", spelled: []string{"dBFS"}, factor: 1}, {name: "dB", spelled: []string{"dB"}, factor: 1}}, true, `"40dB" or 40`, false}
 	case Temperature:
 		return kindOf{"a temperature", []unit{{name: "°C", spelled: []string{"°C", "C"}, factor: 1}, {name: "K", spelled: []string{"K"}, factor: 1}}, false, `"25C" or "298K"`, false}
-	}
-	if k == Angle {
+	case Angle:
 		return kindOf{"an angle", []unit{{name: "°", spelled: []string{"°", "deg"}, factor: 1}}, true, `"60deg" or 60`, false}
 	}
 	panic("quantity: no such kind")
@@ -128,8 +127,9 @@ func kindTable(k Kind) kindOf {
 // longest is the length in bytes of the longest text that is read.
 const longest = 64
 
-// Parse reads a value of the kind as people write it. The error says what is wrong and how to write it; it has no
-// position.
+// Parse reads a value of the kind as people write it; blanks around it and before the unit do not matter. The value is
+// finite; whether it is in range is the caller's to tell. The error is one line without a position: what is wrong, "; ",
+// how to write it. Parse panics for a kind that there is not.
 func Parse(k Kind, text string) (Value, error) {
 	kind := kindTable(k)
 	wrong := func(why string) (Value, error) {
@@ -184,8 +184,13 @@ func Parse(k Kind, text string) (Value, error) {
 			return u.value(k, number, x, exponent)
 		}
 	}
-	if exponent, ok := prefixOf(rest); ok && kind.bare && k != Ratio && k != Decibels && k != Temperature && k != Angle {
-		return Value{SI: scaled(number, exponent)}, nil
+	// A prefix alone, "16k", where the unit may be left out and takes one.
+	if exponent, ok := prefixOf(rest); ok && kind.bare && kind.units[0].prefixes {
+		v.SI = scaled(number, exponent)
+		if k == Resistance && rest == "m" {
+			v.Note = milliohms(t)
+		}
+		return v, nil
 	}
 	return wrong(fmt.Sprintf("%q is no unit of it", rest))
 }
@@ -240,6 +245,8 @@ func prefixOf(s string) (exponent int, ok bool) {
 		return 6, true
 	case "G":
 		return 9, true
+	case "T":
+		return 12, true
 	}
 	return 0, false
 }
@@ -279,12 +286,3 @@ func splitNumber(t string) (number, rest string) {
 }
 
 func isDigit(b byte) bool { return '0' <= b && b <= '9' }
-
-func allDigits(s string) bool {
-	for i := range len(s) {
-		if !isDigit(s[i]) {
-			return false
-		}
-	}
-	return s != ""
-}

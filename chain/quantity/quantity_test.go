@@ -1,9 +1,13 @@
 package quantity
 
 import (
+	"fmt"
 	"math"
+	"strconv"
 	"strings"
 	"testing"
+
+	"midrail/chain/preferred"
 
 	"pgregory.net/rapid"
 )
@@ -89,9 +93,12 @@ func TestWhatIsWrongIsTold(t *testing.T) {
 		want string
 	}{
 		{Resistance, "", "nothing is there"}, {Resistance, "4,7k", "decimal mark"}, {Resistance, "10nF", "no unit of it"}, {Resistance, "4K7J", "tolerance"},
+		{Resistance, "47KJ", "tolerance"}, {Resistance, "100RF", "tolerance"}, {Resistance, "R47F", "tolerance"}, {Resistance, "6K8K", "letter K"},
+		{Capacitance, "104K", "letter K"}, {Capacitance, "104M", "letter M"}, {Capacitance, "100nJ", "tolerance"}, {Capacitance, "4k7", "no unit of it"},
+		{Resistance, "NaN", "number"}, {Resistance, "Inf", "number"}, {Resistance, "-1e999", "out of range"}, {Voltage, "2Vrms", "no unit of it"},
 		{Resistance, "1e400", "out of range"}, {Resistance, "k", "does not begin with a number"}, {Resistance, strings.Repeat("1", 1<<16), "too long"},
 		{Resistance, "1\xfck", ""}, {Capacitance, "2n2K", "tolerance"}, {Capacitance, "999", "power of ten"}, {Capacitance, "001", "two figures"},
-		{Level, "1V", "Vrms"}, {Level, "1", "unit is missing"}, {Temperature, "25", "unit is missing"}, {Frequency, "NaN", "number"}, {Voltage, "1.2.3V", "number"},
+		{Level, "1V", "Vrms"}, {Level, "20mV", "Vrms"}, {Level, "1e9dBV", "out of range"}, {Level, "1", "unit is missing"}, {Temperature, "25", "unit is missing"}, {Frequency, "NaN", "number"}, {Voltage, "1.2.3V", "number"},
 	} {
 		if v, err := Parse(c.kind, c.text); err == nil {
 			t.Errorf("%q reads %v", c.text, v)
@@ -99,9 +106,29 @@ func TestWhatIsWrongIsTold(t *testing.T) {
 			t.Errorf("%q: %v", c.text, err)
 		}
 	}
-	for kind, text := range map[Kind]string{Capacitance: "100", Resistance: "1m"} {
-		if v, err := Parse(kind, text); err != nil || v.Note == "" {
-			t.Errorf("%q reads without a word: %+v, %v", text, v, err)
+}
+
+// What can be read, but may not have been meant.
+func TestNotes(t *testing.T) {
+	for _, c := range []struct {
+		kind Kind
+		text string
+		si   float64
+		note string
+	}{
+		{Capacitance, "100", 10e-12, `"10p" or "100p"`}, {Capacitance, "470", 47e-12, `"47p" or "470p"`}, {Capacitance, "2u2F", 2.2e-6, "farad"},
+		{Resistance, "1m", 1e-3, "M is mega"}, {Resistance, "4.7m", 4.7e-3, "M is mega"}, {Resistance, "4m7", 4.7e-3, "M is mega"},
+		{Capacitance, "104", 1e-7, ""}, {Capacitance, "479e-12", 479e-12, ""}, {Capacitance, "10m", 1e-2, ""}, {Resistance, "1mohm", 1e-3, ""}, {Resistance, "100", 100, ""},
+		{Resistance, "1T", 1e12, ""}, {Resistance, "1M", 1e6, ""}, {Capacitance, "100nF", 1e-7, ""}, {Capacitance, "104F", 104, ""},
+	} {
+		v, err := Parse(c.kind, c.text)
+		if err != nil {
+			t.Error(err)
+			continue
+		}
+		near(t, c.text, v.SI, c.si, read)
+		if !strings.Contains(v.Note, c.note) || (v.Note == "") != (c.note == "") {
+			t.Errorf("the note on %q is %q, want %q", c.text, v.Note, c.note)
 		}
 	}
 }
@@ -122,25 +149,65 @@ func TestFormat(t *testing.T) {
 	}
 }
 
+// Every preferred value of IEC 60063 that a part comes in is typed, and read back as the same number.
 func TestCodesReadBack(t *testing.T) {
-	rapid.Check(t, func(t *rapid.T) {
-		k := rapid.SampledFrom([]Kind{Resistance, Capacitance}).Draw(t, "kind")
-		figures := rapid.IntRange(100, 999).Draw(t, "figures")
-		low, high := -2, 9
-		if k == Capacitance {
-			low, high = -14, -3
+	for kind, powers := range map[Kind][2]int{Resistance: {-2, 11}, Capacitance: {-14, 0}} {
+		for power := powers[0]; power <= powers[1]; power++ {
+			for _, series := range []preferred.Series{preferred.E24, preferred.E192} {
+				for _, figures := range series.Decade() {
+					want, err := strconv.ParseFloat(fmt.Sprintf("%de%d", figures, power-2), 64)
+					if err != nil {
+						t.Fatal(err)
+					}
+					code := FormatCode(kind, want)
+					// The note is on milliohms, which nobody can type without.
+					if v, err := Parse(kind, code); err != nil || v.SI != want || v.Note != "" && want >= 1 {
+						t.Fatalf("%g is %q, which reads %+v, %v", want, code, v, err)
+					}
+				}
+			}
 		}
-		want := float64(figures) * math.Pow(10, float64(rapid.IntRange(low, high).Draw(t, "power")-2))
-		code := FormatCode(k, want)
-		v, err := Parse(k, code)
-		if err != nil || !(math.Abs(v.SI-want) <= 1e-12*want) || v.Note != "" && want >= 1 {
-			t.Fatalf("%g is %q, which reads %+v, %v", want, code, v, err)
+	}
+}
+
+// fourFigures is what is lost at most, of a number, by printing four figures of it.
+const fourFigures = 0.5e-3
+
+func TestFormatReadsBack(t *testing.T) {
+	rapid.Check(t, func(t *rapid.T) {
+		k := Kind(rapid.IntRange(int(Resistance), int(Angle)).Draw(t, "kind"))
+		// As large and small as the prefixes from f to T go, in the figure that is printed.
+		shown := math.Pow(10, rapid.Float64Range(-15, 14).Draw(t, "power"))
+		if rapid.Bool().Draw(t, "negative") {
+			shown = -shown
+		}
+		want, loss := shown, fourFigures*math.Abs(shown)
+		switch k {
+		case SoundLevel:
+			shown = math.Remainder(shown, 200)
+			want = Hearing * math.Pow(10, shown/20)
+			loss = want * math.Expm1(fourFigures*math.Abs(shown)*math.Ln10/20) * 1.01
+			loss += want * 1e-9 // a level near 0 dB is that of a number near 1
+		case Temperature:
+			want = math.Abs(math.Remainder(shown, 1000))
+			loss = fourFigures*math.Abs(want-273.15) + 1e-9
+		}
+		text := Format(k, want)
+		v, err := Parse(k, text)
+		switch {
+		case err != nil:
+			t.Fatal(err)
+		case !(math.Abs(v.SI-want) <= loss*(1+1e-9)):
+			t.Fatalf("%g is %q, which reads %g", want, text, v.SI)
 		}
 	})
 }
 
+// longestError has room for the text twice, each byte written as \x12, and for the words.
+const longestError = 2*4*longest + 200
+
 func FuzzParse(f *testing.F) {
-	for _, s := range []string{"4k7", "-42dBV/Pa", "1\xfck", "104", "4µ7", "0.5V/us", "1e-400", "−", "2.2 kΩ"} {
+	for _, s := range []string{"4k7", "-42dBV/Pa", "1\xfck", "104", "4µ7", "0.5V/us", "1e-400", "−", "2.2 kΩ", "4K7J", "1e400", "NaN", "4,7k", "\n", "n33", "104K"} {
 		for k := Resistance; k <= Angle; k++ {
 			f.Add(uint8(k), s)
 		}
@@ -153,6 +220,8 @@ func FuzzParse(f *testing.F) {
 		}
 		if err == nil {
 			Format(k, v.SI)
+		} else if len(err.Error()) > longestError || strings.Contains(err.Error(), "\n") {
+			t.Errorf("%q: %v", text, err)
 		}
 	})
 }
