@@ -41,7 +41,8 @@ func classes() []Model {
 	}
 }
 
-// Class returns the typical figures of a class, and whether there is one of that name.
+// Class returns the typical figures of a class, from memory, and whether there is one of that name, which is spelled as
+// [Classes] does.
 func Class(name string) (Model, bool) {
 	for _, m := range classes() {
 		if m.Class == name {
@@ -51,7 +52,7 @@ func Class(name string) (Model, bool) {
 	return Model{}, false
 }
 
-// Classes returns the names of all classes.
+// Classes returns the names of all classes, in the order in which they are told; the slice is the caller's.
 func Classes() []string {
 	var names []string
 	for _, m := range classes() {
