@@ -2,6 +2,7 @@ package command
 
 import (
 	"context"
+	"errors"
 	"fmt"
 	"io"
 	"math"
@@ -26,6 +27,7 @@ import (
 func newCorner(s streams) *cobra.Command {
 	var f chainFlags
 	var keep, rates, droop, below, write string
+	var read reading
 	cmd := &cobra.Command{
 		Use:   "corner CHAIN [TRACK...]",
 		Short: "Converter rate, filter order and corner, chosen together on a track",
@@ -35,7 +37,8 @@ the efficient ones, than which none is better in every respect, and one recommen
 full run. Several recordings are taken as one, the second following the first. --write puts it into a chain file.`,
 		Example: "  midrail corner front-end.toml song.wav --keep 3kHz --write better.toml",
 		Args:    withChain,
-		RunE: func(cmd *cobra.Command, args []string) error {
+		RunE: func(cmd *cobra.Command, args []string) (err error) {
+			defer func() { err = errors.Join(err, read.close()) }()
 			n, err := s.open(args[0], f.set)
 			if err != nil {
 				return err
@@ -56,7 +59,10 @@ full run. Several recordings are taken as one, the second following the first. -
 					return usageError{err}
 				}
 			}
-			r := recordingOf(args[1:])
+			r, err := read.one(cmd.Context(), n.Chain, s.in, args[1:])
+			if err != nil {
+				return err
+			}
 			text, err := os.ReadFile(args[0])
 			if err != nil {
 				return err
@@ -78,6 +84,7 @@ full run. Several recordings are taken as one, the second following the first. -
 		},
 	}
 	f.add(cmd)
+	read.add(cmd)
 	cmd.Flags().StringVar(&keep, "keep", "3kHz", "edge of the band that is kept")
 	cmd.Flags().StringVar(&rates, "rates", "", "converter rates to try (default: common ones)")
 	cmd.Flags().StringVar(&droop, "droop", "1dB", "loss at the band's edge that is allowed")

@@ -13,7 +13,7 @@ import (
 	"github.com/spf13/cobra"
 
 	"midrail/chain"
-	"midrail/signals/wav"
+	"midrail/signals"
 )
 
 // Exit statuses.
@@ -78,7 +78,7 @@ var errBroken = errors.New("a limit is broken")
 // status prints what err says, and returns the exit status that goes with it.
 func (s streams) status(err error) int {
 	var faults chain.Faults
-	var format *wav.FormatError
+	var format *signals.FormatError
 	var usage usageError
 	var refused refusal
 	switch {

@@ -67,15 +67,13 @@ func isTerminal(w io.Writer) bool {
 }
 
 // execute does one job: it renders, measures, and writes the folder.
-func execute(ctx context.Context, s streams, f runFlags, n *circuit.Network, j job) (*finished, error) {
+func execute(ctx context.Context, s streams, f *runFlags, n *circuit.Network, j job) (*finished, error) {
 	tracks, err := openTracks(n.Chain, j)
 	if err != nil {
 		return nil, err
 	}
 	defer tracks.close()
-	for _, note := range tracks.notes() {
-		fmt.Fprintln(s.err, "warning:", note)
-	}
+	defer tracks.tell(s.err)
 	out, err := newFolder(j.folder)
 	if err != nil {
 		return nil, err
@@ -201,15 +199,13 @@ func (o *openedTracks) close() {
 	}
 }
 
-// notes returns what is to be said of the tracks' files.
-func (o *openedTracks) notes() []string {
-	var list []string
+// tell says what there is to be said of the tracks' files, which is known when they have been read.
+func (o *openedTracks) tell(out io.Writer) {
 	for _, t := range o.list {
-		if f, ok := t.Track.(*wav.File); ok && f.Note() != "" {
-			list = append(list, t.name+": "+f.Note())
+		if f, ok := t.Track.(interface{ Note() string }); ok && f.Note() != "" {
+			fmt.Fprintf(out, "warning: %s: %s\n", t.name, f.Note())
 		}
 	}
-	return list
 }
 
 // frames returns the length of the longest track in s, 0 where it is not known.
@@ -222,7 +218,7 @@ func (o *openedTracks) seconds() float64 {
 }
 
 // renderInto renders a job and writes its sound into the folder.
-func renderInto(ctx context.Context, s streams, f runFlags, n *circuit.Network, j job, tracks *openedTracks, budget *noise.Budget, out *folder) (*render.Result, *residue.Residue, error) {
+func renderInto(ctx context.Context, s streams, f *runFlags, n *circuit.Network, j job, tracks *openedTracks, budget *noise.Budget, out *folder) (*render.Result, *residue.Residue, error) {
 	files, err := newSoundFiles(out, n.Chain.Converter.Rate, n.Chain.Converter.Bits)
 	if err != nil {
 		return nil, nil, err

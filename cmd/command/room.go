@@ -2,6 +2,7 @@ package command
 
 import (
 	"context"
+	"errors"
 	"io"
 	"math"
 
@@ -19,6 +20,7 @@ import (
 func newRoom(s streams) *cobra.Command {
 	var f chainFlags
 	var margin, svg string
+	var read reading
 	cmd := &cobra.Command{
 		Use:   "room CHAIN [TRACK...]",
 		Short: "Headroom of each stage on a track, and the gain and the bias that fit",
@@ -27,7 +29,8 @@ far it may go; the level at the input at which it first clips; and the gain and 
 a margin. The gain is verified by a full run. Several recordings are taken as one, the second following the first. A sweep of a tone's level tells where THD+N comes to 1 %.`,
 		Example: "  midrail room front-end.toml song.wav --margin 3dB",
 		Args:    withChain,
-		RunE: func(cmd *cobra.Command, args []string) error {
+		RunE: func(cmd *cobra.Command, args []string) (err error) {
+			defer func() { err = errors.Join(err, read.close()) }()
 			n, err := s.open(args[0], f.set)
 			if err != nil {
 				return err
@@ -36,7 +39,10 @@ a margin. The gain is verified by a full run. Several recordings are taken as on
 			if err != nil {
 				return err
 			}
-			r := recordingOf(args[1:])
+			r, err := read.one(cmd.Context(), n.Chain, s.in, args[1:])
+			if err != nil {
+				return err
+			}
 			out, err := roomOf(cmd.Context(), n, r, db)
 			if err != nil {
 				return err
@@ -53,6 +59,7 @@ a margin. The gain is verified by a full run. Several recordings are taken as on
 		},
 	}
 	f.add(cmd)
+	read.add(cmd)
 	cmd.Flags().StringVar(&margin, "margin", "3dB", "room that the suggested gain is to leave")
 	cmd.Flags().StringVar(&svg, "svg", "", "draw THD+N against the input's level into a `file`")
 	return cmd

@@ -14,9 +14,6 @@ import (
 
 	"midrail/chain"
 	"midrail/cmd/report"
-	"midrail/signals"
-	"midrail/signals/tone"
-	"midrail/signals/wav"
 )
 
 // demoName is the name of the embedded chain.
@@ -27,6 +24,7 @@ var demoChain []byte
 
 // runFlags are what the command line of run says.
 type runFlags struct {
+	reading
 	set    []string
 	tracks []string // INPUT=FILE
 	out    string
@@ -53,7 +51,7 @@ Caution: the layers can be loud; start with the volume low.`,
   midrail run front-end.toml song.wav --set "mic amp.r_f=82k" --out louder
   midrail run mixer.toml --track voice=a.wav --track music=b.wav`,
 		RunE: func(cmd *cobra.Command, args []string) error {
-			return run(cmd.Context(), s, f, args)
+			return errors.Join(run(cmd.Context(), s, &f, args), f.reading.close())
 		},
 	}
 	cmd.Flags().StringArrayVar(&f.set, "set", nil, `change a value for this run: "NAME.key=value"; repeatable`)
@@ -64,56 +62,11 @@ Caution: the layers can be loud; start with the volume low.`,
 	cmd.Flags().BoolVar(&f.noPage, "no-html", false, "write no report.html")
 	cmd.Flags().BoolVar(&f.open, "open", false, "open the report in the browser")
 	cmd.Flags().BoolVar(&f.times, "times", false, "tell on standard error where the time went")
+	f.reading.add(cmd)
 	return cmd
 }
 
-// recording is a track of the user's, or the demo's.
-type recording struct {
-	name string // as told to people
-	open func() (signals.Track, error)
-	demo bool
-}
-
-func fileRecording(path string) recording {
-	return recording{name: path, open: func() (signals.Track, error) { return wav.Open(path) }}
-}
-
-func demoRecording() recording {
-	return recording{name: "demo", open: func() (signals.Track, error) { return tone.Demo(), nil }, demo: true}
-}
-
-// recordingOf is the files, each following the one before without a gap; the demo's track where there are none.
-func recordingOf(paths []string) recording {
-	switch len(paths) {
-	case 0:
-		return demoRecording()
-	case 1:
-		return fileRecording(paths[0])
-	}
-	return recording{name: strings.Join(paths, ", "), open: func() (signals.Track, error) {
-		var tracks []signals.Track
-		shut := func(err error) (signals.Track, error) {
-			for _, t := range tracks {
-				t.Close()
-			}
-			return nil, err
-		}
-		for _, path := range paths {
-			t, err := wav.Open(path)
-			if err != nil {
-				return shut(err)
-			}
-			tracks = append(tracks, t)
-		}
-		joined, err := signals.Join(tracks...)
-		if err != nil {
-			return shut(usageError{err})
-		}
-		return joined, nil
-	}}
-}
-
-func run(ctx context.Context, s streams, f runFlags, args []string) error {
+func run(ctx context.Context, s streams, f *runFlags, args []string) error {
 	path := ""
 	if len(args) > 0 {
 		path = args[0]
@@ -123,7 +76,7 @@ func run(ctx context.Context, s streams, f runFlags, args []string) error {
 		return err
 	}
 	c := n.Chain
-	jobs, err := jobsOf(c, f, args)
+	jobs, err := jobsOf(ctx, s, c, f, args)
 	if err != nil {
 		return err
 	}
@@ -193,22 +146,35 @@ func jobOf(c *chain.Chain, r recording) job {
 	return job{label: baseName(r.name), tracks: slices.Repeat([]recording{r}, len(c.Inputs))}
 }
 
-func jobsOf(c *chain.Chain, f runFlags, args []string) ([]job, error) {
+func jobsOf(ctx context.Context, s streams, c *chain.Chain, f *runFlags, args []string) ([]job, error) {
 	base := baseName(c.File)
 	if len(f.tracks) > 0 {
-		if len(args) > 1 {
-			return nil, usageError{errors.New("give tracks either as arguments or with --track, not both")}
+		if len(args) > 1 || f.counts+f.volts != "" {
+			return nil, usageError{errors.New("give tracks either with --track or as arguments, not both")}
 		}
+		var paths []string
 		j := job{tracks: make([]recording, len(c.Inputs))}
 		var labels []string
+		var into []int
 		for _, t := range f.tracks {
 			input, path, ok := strings.Cut(t, "=")
 			i := inputIndex(c, input)
 			if !ok || i < 0 {
 				return nil, usageError{fmt.Errorf("--track %q: want INPUT=FILE, with an input of the chain: %s", t, strings.Join(inputNames(c), ", "))}
 			}
-			j.tracks[i] = fileRecording(path)
-			labels = append(labels, baseName(path))
+			paths = append(paths, path)
+			into = append(into, i)
+		}
+		list, err := f.recordings(ctx, c, s.in, paths)
+		if err != nil {
+			return nil, err
+		}
+		if len(list) != len(into) {
+			return nil, usageError{errors.New("--track takes a file, not a folder")}
+		}
+		for k, one := range list {
+			j.tracks[into[k]] = one
+			labels = append(labels, baseName(one.name))
 		}
 		j.label = strings.Join(labels, "+")
 		j.folder = f.out
@@ -217,14 +183,19 @@ func jobsOf(c *chain.Chain, f runFlags, args []string) ([]job, error) {
 		}
 		return []job{j}, nil
 	}
-	recordings := []recording{demoRecording()}
-	if len(args) > 1 {
-		recordings = nil
-		for _, path := range args[1:] {
-			recordings = append(recordings, fileRecording(path))
+	var paths []string
+	if len(args) > 0 {
+		paths = args[1:]
+	}
+	recordings, err := f.recordings(ctx, c, s.in, paths)
+	if err != nil {
+		return nil, err
+	}
+	if len(recordings) == 0 {
+		if len(args) == 1 {
+			return nil, usageError{fmt.Errorf("no track: midrail run %s RECORDING.wav", args[0])}
 		}
-	} else if len(args) == 1 {
-		return nil, usageError{fmt.Errorf("no track: midrail run %s RECORDING.wav", args[0])}
+		recordings = []recording{demoRecording()}
 	}
 	var jobs []job
 	for _, r := range recordings {

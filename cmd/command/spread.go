@@ -23,6 +23,7 @@ func newSpread(s streams) *cobra.Command {
 	var thorough bool
 	var seed uint64
 	var keep, svg string
+	var read reading
 	cmd := &cobra.Command{
 		Use:   "spread CHAIN [TRACK...]",
 		Short: "A production run at the given tolerances: percentiles, yield, governing parts",
@@ -31,7 +32,8 @@ chain file, or tolerance of a part), and tells how corners, gain and droop sprea
 how many boards hold the chain's limits; which part governs; and each figure with every part at its worst end.`,
 		Example: "  midrail spread front-end.toml song.wav --boards 2000",
 		Args:    withChain,
-		RunE: func(cmd *cobra.Command, args []string) error {
+		RunE: func(cmd *cobra.Command, args []string) (err error) {
+			defer func() { err = errors.Join(err, read.close()) }()
 			n, err := s.open(args[0], f.set)
 			if err != nil {
 				return err
@@ -45,8 +47,12 @@ how many boards hold the chain's limits; which part governs; and each figure wit
 					return err
 				}
 			}
-			if len(args) > 1 {
-				if err := listenFor(cmd.Context(), n, recordingOf(args[1:]), &o); err != nil {
+			r, err := read.one(cmd.Context(), n.Chain, s.in, args[1:])
+			if err != nil {
+				return err
+			}
+			if !r.demo {
+				if err := listenFor(cmd.Context(), n, r, &o); err != nil {
 					return err
 				}
 			}
@@ -73,6 +79,7 @@ how many boards hold the chain's limits; which part governs; and each figure wit
 		},
 	}
 	f.add(cmd)
+	read.add(cmd)
 	cmd.Flags().IntVar(&boards, "boards", 1000, "boards to draw")
 	cmd.Flags().Uint64Var(&seed, "seed", 1, "seed of the draw")
 	cmd.Flags().StringVar(&keep, "keep", "", "frequency at which droop is told (default: the chain's limit)")

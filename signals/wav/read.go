@@ -10,12 +10,8 @@ import (
 
 	"github.com/go-audio/audio"
 	"github.com/go-audio/wav"
-)
 
-// What is read.
-const (
-	leastRate, mostRate = 4000, 768000 // Hz
-	mostChannels        = 64
+	"midrail/signals"
 )
 
 // Format tags of the fmt chunk.
@@ -35,7 +31,7 @@ type format struct {
 	valid    int // of them, those that carry sound
 }
 
-// File is a WAV file opened for reading. It is a [midrail/signals.Track].
+// File is a WAV file opened for reading. It is a [signals.Track].
 type File struct {
 	name   string
 	closer io.Closer
@@ -50,7 +46,7 @@ type File struct {
 	buffer audio.IntBuffer
 }
 
-// Open opens a WAV file. The error is a *[FormatError] where the file is not one that is read.
+// Open opens a WAV file. The error is a *[signals.FormatError] where the file is not one that is read.
 func Open(path string) (*File, error) {
 	f, err := os.Open(path)
 	if err != nil {
@@ -97,11 +93,16 @@ func open(name string, src io.ReadSeeker) (*File, error) {
 	return f, nil
 }
 
-func (f *File) fault(chunk string, at int64, text, remedy string) *FormatError {
-	return &FormatError{File: f.name, Chunk: chunk, Offset: at, Text: text, Remedy: remedy}
+// fault is one in a chunk, or, without its name, in the file as a whole.
+func (f *File) fault(chunk string, at int64, text, remedy string) *signals.FormatError {
+	where := fmt.Sprintf("at byte %d", at)
+	if chunk != "" {
+		where = fmt.Sprintf("chunk %q %s", chunk, where)
+	}
+	return &signals.FormatError{File: f.name, At: where, Text: text, Remedy: remedy}
 }
 
-func (f *File) unsupported(chunk string, at int64, text, remedy string) *FormatError {
+func (f *File) unsupported(chunk string, at int64, text, remedy string) *signals.FormatError {
 	e := f.fault(chunk, at, text, remedy)
 	e.Unsupported = true
 	return e
@@ -121,7 +122,7 @@ func (f *File) walk(src io.ReadSeeker, size int64) error {
 	case "RIFX":
 		return f.unsupported("", 0, "its bytes are in the other order (RIFX)", "convert it to RIFF")
 	default:
-		return f.fault("", 0, fmt.Sprintf("it begins with %q, not RIFF", printable(head[:4])), "is this a WAV file?")
+		return f.fault("", 0, fmt.Sprintf("it begins with %q, not RIFF", printable(head[:4])), "is this a recording? samples without a header are read with --raw")
 	}
 	if string(head[8:]) != "WAVE" {
 		return f.fault("", 8, fmt.Sprintf("it holds %q, not WAVE", printable(head[8:])), "is this a WAV file?")
@@ -262,10 +263,10 @@ func (f *File) readFormat(src io.Reader, at, length int64) error {
 		return f.unsupported("fmt ", at, fmt.Sprintf("format %d is not PCM", x.tag), "convert it to integer or floating-point PCM")
 	}
 	switch {
-	case x.channels < 1 || x.channels > mostChannels:
-		return f.unsupported("fmt ", at+2, fmt.Sprintf("%d channels", x.channels), fmt.Sprintf("1 to %d are read", mostChannels))
-	case x.rate < leastRate || x.rate > mostRate:
-		return f.unsupported("fmt ", at+4, fmt.Sprintf("a rate of %d Hz", x.rate), fmt.Sprintf("%d to %d Hz are read", leastRate, mostRate))
+	case x.channels < 1 || x.channels > signals.MostChannels:
+		return f.unsupported("fmt ", at+2, fmt.Sprintf("%d channels", x.channels), fmt.Sprintf("1 to %d are read", signals.MostChannels))
+	case float64(x.rate) < signals.LeastRate || float64(x.rate) > signals.MostRate:
+		return f.unsupported("fmt ", at+4, fmt.Sprintf("a rate of %d Hz", x.rate), fmt.Sprintf("%g to %g Hz are read", signals.LeastRate, signals.MostRate))
 	case x.align != x.channels*x.bits/8:
 		return f.fault("fmt ", at+12, fmt.Sprintf("a frame of %d bytes does not hold %d channels of %d bits", x.align, x.channels, x.bits), "convert the file")
 	case x.valid > x.bits:
@@ -298,7 +299,7 @@ func (f *File) Close() error {
 // blockFrames is how many frames are taken from the file at once.
 const blockFrames = 4096
 
-// ReadFrames implements [midrail/signals.Track]. A floating-point sample that is not a finite number is a fault.
+// ReadFrames implements [signals.Track]. Floating-point samples are given as they are, finite or not.
 func (f *File) ReadFrames(dst []float64) (int, error) {
 	width := f.format.channels
 	if len(dst)%width != 0 {
@@ -330,7 +331,7 @@ func (f *File) readBlock(dst []float64) (int, error) {
 	dst = dst[:frames*width]
 	var err error
 	if f.format.tag == tagFloat {
-		err = f.floats(dst)
+		f.floats(dst)
 	} else {
 		err = f.codes(dst)
 	}
@@ -380,7 +381,7 @@ func (f *File) codes(dst []float64) error {
 }
 
 // floats decodes a block of floating-point samples, which the library reads as integers.
-func (f *File) floats(dst []float64) error {
+func (f *File) floats(dst []float64) {
 	b := f.block[headerSize:]
 	for i := range dst {
 		if f.format.bits == 64 {
@@ -388,10 +389,5 @@ func (f *File) floats(dst []float64) error {
 		} else {
 			dst[i] = float64(math.Float32frombits(binary.LittleEndian.Uint32(b[4*i:])))
 		}
-		if v := dst[i]; math.IsNaN(v) || math.IsInf(v, 0) {
-			frame := f.read + int64(i/f.format.channels)
-			return f.fault("data", f.data+frame*int64(f.format.align), fmt.Sprintf("frame %d, channel %d is no finite number", frame, i%f.format.channels+1), "mend the recording")
-		}
 	}
-	return nil
 }

@@ -1,0 +1,298 @@
+package command
+
+import (
+	"context"
+	"errors"
+	"fmt"
+	"io"
+	"io/fs"
+	"math"
+	"os"
+	"path/filepath"
+	"slices"
+	"strings"
+
+	"github.com/spf13/cobra"
+
+	"midrail/chain"
+	"midrail/signals"
+	"midrail/signals/column"
+	"midrail/signals/flac"
+	"midrail/signals/raw"
+	"midrail/signals/tone"
+	"midrail/signals/wav"
+)
+
+// recording is a track of the user's, or the demo's.
+type recording struct {
+	name string // as told to people
+	path string // of its file; empty: none
+	open func() (signals.Track, error)
+	demo bool
+}
+
+func demoRecording() recording {
+	return recording{name: "demo", open: func() (signals.Track, error) { return tone.Demo(), nil }, demo: true}
+}
+
+// stdin is what standard input is called: on the command line, and to people.
+const stdin, stdinName = "-", "stdin"
+
+// endings are those of the files that are taken from a folder.
+var endings = []string{".wav", ".wave", ".bwf", ".rf64", ".flac"}
+
+// reading is what the command line says of how recordings are read.
+type reading struct {
+	raw           string
+	counts, volts string
+	rate          float64
+	bits, column  int
+	repair        bool
+
+	format *raw.Format // nil: files say themselves what they are
+	spool  *os.File    // what came from standard input; nil: nothing
+}
+
+// add adds the flags.
+func (r *reading) add(cmd *cobra.Command) {
+	f := cmd.Flags()
+	f.StringVar(&r.raw, "raw", "", "recordings are samples without a header: `SAMPLES,RATE,CHANNELS`, as s16le,16000,1")
+	f.StringVar(&r.counts, "counts", "", "a `file` with a column of a converter's counts is a recording; needs --rate and --bits")
+	f.StringVar(&r.volts, "volts", "", "a `file` with a column of volts at the chain's line input is a recording; needs --rate")
+	f.Float64Var(&r.rate, "rate", 0, "rate of a column in `Hz`")
+	f.IntVar(&r.bits, "bits", 0, "bits of the counts, 1 to 32")
+	f.IntVar(&r.column, "column", 1, "which column it is, from 1")
+	f.BoolVar(&r.repair, "repair", false, "replace samples that are no finite numbers by those before them")
+}
+
+// close removes what was kept of standard input.
+func (r *reading) close() error {
+	if r.spool == nil {
+		return nil
+	}
+	err := r.spool.Close()
+	if gone := os.Remove(r.spool.Name()); !errors.Is(gone, fs.ErrNotExist) {
+		err = errors.Join(err, gone)
+	}
+	return err
+}
+
+// recordings are those of the paths, of folders the recordings in them, and of the column; the path "-" is in.
+func (r *reading) recordings(ctx context.Context, c *chain.Chain, in io.Reader, paths []string) ([]recording, error) {
+	form, err := r.check(c)
+	if err != nil {
+		return nil, err
+	}
+	var list []recording
+	for _, path := range paths {
+		files, err := r.filesOf(path)
+		if err != nil {
+			return nil, err
+		}
+		for _, file := range files {
+			list = append(list, r.file(file))
+		}
+	}
+	if file := r.counts + r.volts; file != "" {
+		list = append(list, r.recording(file, func(name string, src io.ReadSeeker) (signals.Track, error) { return column.New(name, src, form) }))
+	}
+	piped := 0
+	for _, one := range list {
+		if one.path == stdin {
+			piped++
+		}
+	}
+	if piped > 1 {
+		return nil, usageError{errors.New("standard input is one recording only")}
+	}
+	if piped == 1 && r.spool == nil {
+		return list, r.keep(ctx, in)
+	}
+	return list, nil
+}
+
+// check makes sense of the flags.
+func (r *reading) check(c *chain.Chain) (column.Form, error) {
+	form := column.Form{Column: r.column, Rate: r.rate}
+	if r.raw != "" {
+		f, err := raw.Parse(r.raw)
+		if err != nil {
+			return form, usageError{fmt.Errorf("--raw %w", err)}
+		}
+		r.format = &f
+	}
+	if r.counts == "" && r.volts == "" {
+		if r.rate != 0 || r.bits != 0 {
+			return form, usageError{errors.New("--rate and --bits are those of --counts or --volts; --raw has its own")}
+		}
+		return form, nil
+	}
+	switch {
+	case r.counts != "" && r.volts != "":
+		return form, usageError{errors.New("give either --counts or --volts")}
+	case !(r.rate >= signals.LeastRate && r.rate <= signals.MostRate):
+		return form, usageError{fmt.Errorf("a column needs its rate: --rate HZ, %g to %g", signals.LeastRate, signals.MostRate)}
+	case r.column < 1:
+		return form, usageError{errors.New("--column counts from 1")}
+	case r.counts != "":
+		if r.bits < 1 || r.bits > 32 {
+			return form, usageError{errors.New("counts need their bits: --bits N, 1 to 32")}
+		}
+		form.Zero, form.Scale = column.Counts(r.bits)
+	default:
+		full := c.Inputs[0].FullScale
+		for i := range c.Inputs {
+			if in := &c.Inputs[i]; in.Kind != chain.Line || in.FullScale != full {
+				return form, usageError{fmt.Errorf("--volts are those at line inputs of one full_scale; input %q is none of those", in.Name)}
+			}
+		}
+		form.Scale = 1 / (full * math.Sqrt2)
+	}
+	return form, nil
+}
+
+// filesOf is the path itself or, of a folder, the recordings in it, in the order of their names; of raw samples every
+// file whose name does not begin with a point. Folders in it are left alone.
+func (r *reading) filesOf(path string) ([]string, error) {
+	info, err := os.Stat(path)
+	if path == stdin || err != nil || !info.IsDir() {
+		return []string{path}, nil // what cannot be opened is told with the others
+	}
+	entries, err := os.ReadDir(path)
+	if err != nil {
+		return nil, err
+	}
+	var files []string
+	for _, e := range entries {
+		file := filepath.Join(path, e.Name())
+		info, err := os.Stat(file)
+		if strings.HasPrefix(e.Name(), ".") || err == nil && !info.Mode().IsRegular() {
+			continue
+		}
+		if r.format != nil || slices.Contains(endings, strings.ToLower(filepath.Ext(file))) {
+			files = append(files, file)
+		}
+	}
+	if len(files) == 0 {
+		return nil, refusal{fmt.Errorf("%s: there is no recording in it (%s)", path, strings.Join(endings, " "))}
+	}
+	return files, nil
+}
+
+// keep copies standard input into a file: a recording is read more than once.
+func (r *reading) keep(ctx context.Context, in io.Reader) error {
+	spool, err := os.CreateTemp("", "midrail-stdin-*")
+	if err != nil {
+		return err
+	}
+	r.spool = spool
+	os.Remove(spool.Name()) // where an open file can be; else close does
+	copied := make(chan error, 1)
+	go func() {
+		_, err := io.Copy(spool, in)
+		copied <- err
+	}()
+	select {
+	case err := <-copied:
+		return err
+	case <-ctx.Done():
+		return ctx.Err()
+	}
+}
+
+// one is the recordings of the paths and of the column as one, each following the one before without a gap; the demo's
+// track where there are none.
+func (r *reading) one(ctx context.Context, c *chain.Chain, in io.Reader, paths []string) (recording, error) {
+	list, err := r.recordings(ctx, c, in, paths)
+	if err != nil {
+		return recording{}, err
+	}
+	switch len(list) {
+	case 0:
+		return demoRecording(), nil
+	case 1:
+		return list[0], nil
+	}
+	var names []string
+	for _, one := range list {
+		names = append(names, one.name)
+	}
+	return recording{name: strings.Join(names, ", "), open: func() (signals.Track, error) {
+		var tracks []signals.Track
+		shut := func(err error) (signals.Track, error) {
+			for _, t := range tracks {
+				t.Close()
+			}
+			return nil, err
+		}
+		for _, one := range list {
+			t, err := one.open()
+			if err != nil {
+				return shut(err)
+			}
+			tracks = append(tracks, t)
+		}
+		joined, err := signals.Join(tracks...)
+		if err != nil {
+			return shut(usageError{err})
+		}
+		return joined, nil
+	}}, nil
+}
+
+// file is the recording in a file, whose first bytes tell what it is.
+func (r *reading) file(path string) recording {
+	return r.recording(path, func(name string, src io.ReadSeeker) (signals.Track, error) {
+		if r.format != nil {
+			return raw.New(name, src, *r.format)
+		}
+		var start [len(flac.Signature)]byte
+		n, _ := io.ReadFull(src, start[:])
+		if _, err := src.Seek(0, io.SeekStart); err != nil {
+			return nil, err
+		}
+		if string(start[:n]) == flac.Signature {
+			return flac.New(name, src)
+		}
+		return wav.New(name, src)
+	})
+}
+
+// recording is that in a file, or in standard input, as read by some function.
+func (r *reading) recording(path string, read func(name string, src io.ReadSeeker) (signals.Track, error)) recording {
+	one := recording{name: path, path: path}
+	if path == stdin {
+		one.name = stdinName
+	}
+	one.open = func() (signals.Track, error) {
+		var src io.ReadSeeker
+		var closer io.Closer = io.NopCloser(nil)
+		if path == stdin {
+			info, err := r.spool.Stat()
+			if err != nil {
+				return nil, err
+			}
+			src = io.NewSectionReader(r.spool, 0, info.Size())
+		} else {
+			file, err := os.Open(path)
+			if err != nil {
+				return nil, err
+			}
+			src, closer = file, file
+		}
+		t, err := read(one.name, src)
+		if err != nil {
+			return nil, errors.Join(err, closer.Close())
+		}
+		return &openFile{signals.NewFinite(t, one.name, r.repair), closer}, nil
+	}
+	return one
+}
+
+// openFile is the track in an open file.
+type openFile struct {
+	*signals.Finite
+	file io.Closer
+}
+
+func (f *openFile) Close() error { return errors.Join(f.Finite.Close(), f.file.Close()) }
