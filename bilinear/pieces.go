@@ -143,11 +143,21 @@ type solver struct {
 	rhs    []float64
 	sense  []float64
 	trial  []Piece
+	key    []byte
+	// inverses are those of the matrices of the combinations of pieces met so far; nil for a singular one. What they are
+	// made from, den and resist of the laws, is the same at every step.
+	inverses map[string][]float64
 }
 
 func newSolver(k int, b []float64) solver {
-	return solver{k: k, b: b, matrix: make([]float64, k*k), rhs: make([]float64, k), sense: make([]float64, k), trial: make([]Piece, k)}
+	return solver{
+		k: k, b: b, matrix: make([]float64, k*k), rhs: make([]float64, k), sense: make([]float64, k),
+		trial: make([]Piece, k), key: make([]byte, k), inverses: map[string][]float64{},
+	}
 }
+
+// mostInverses bounds what is kept of the combinations met.
+const mostInverses = 1024
 
 const (
 	// policyTries is how often all elements are put on their proper pieces before the search turns to one at a time.
@@ -233,28 +243,74 @@ func (v *solver) copyOf(p []Piece) []Piece {
 // linear solves for e with every element on its piece, and leaves the senses. It reports false where the equations
 // are singular.
 func (v *solver) linear(laws []law, s0 []float64, pieces []Piece, e []float64) bool {
-	k := v.k
-	for i := range k {
-		a, b, c := laws[i].row(pieces[i])
-		row := v.matrix[i*k : (i+1)*k]
-		for j := range row {
-			row[j] = b * v.b[i*k+j]
-		}
-		row[i] += a
-		v.rhs[i] = c - b*s0[i]
-	}
-	if !gauss(v.matrix, v.rhs, k) {
+	inverse := v.inverse(laws, pieces)
+	if inverse == nil {
 		return false
 	}
-	copy(e, v.rhs)
+	k := v.k
+	for i := range k {
+		_, b, c := laws[i].row(pieces[i])
+		v.rhs[i] = c - float64(b*s0[i])
+	}
+	times(e, inverse, v.rhs)
 	for i := range k {
 		sum := s0[i]
 		for j, x := range e {
-			sum += v.b[i*k+j] * x
+			sum = math.FMA(v.b[i*k+j], x, sum)
 		}
 		v.sense[i] = sum
 	}
 	return true
+}
+
+// times sets y = m·x for a square matrix m.
+func times(y, m, x []float64) {
+	k := len(x)
+	for i := range y {
+		sum := 0.
+		for j, v := range x {
+			sum = math.FMA(m[i*k+j], v, sum)
+		}
+		y[i] = sum
+	}
+}
+
+// inverse returns the inverse of the equations' matrix, (a + b·B)⁻¹; nil where there is none.
+func (v *solver) inverse(laws []law, pieces []Piece) []float64 {
+	for i, p := range pieces {
+		v.key[i] = byte(p)
+	}
+	inverse, known := v.inverses[string(v.key)]
+	if known {
+		return inverse
+	}
+	k := v.k
+	inverse = make([]float64, k*k)
+	column := make([]float64, k)
+	for j := range k {
+		for i := range k {
+			a, b, _ := laws[i].row(pieces[i])
+			row := v.matrix[i*k : (i+1)*k]
+			for m := range row {
+				row[m] = b * v.b[i*k+m]
+			}
+			row[i] += a
+			column[i] = 0
+		}
+		column[j] = 1
+		if !gauss(v.matrix, column, k) {
+			inverse = nil
+			break
+		}
+		for i, x := range column {
+			inverse[i*k+j] = x
+		}
+	}
+	if len(v.inverses) == mostInverses {
+		clear(v.inverses)
+	}
+	v.inverses[string(v.key)] = inverse
+	return inverse
 }
 
 // gauss solves m·x = b in place, b becoming x; false where m is singular or the result is not finite.

@@ -14,15 +14,20 @@ import (
 //
 // solved exactly for all elements at once. It panics where u or y has another length than the network's.
 func (c *Compiled) Step(s *State, u, y []float64) (touched bool) {
-	c.linearSources(s, u, true)
-	for i := range s.Pieces {
-		s.Pieces[i] = Linear
+	c.senses(s, u)
+	for _, p := range s.Pieces {
+		touched = touched || p != Linear
 	}
-	if c.beyond(s, u) {
+	if !touched {
+		c.linearSources(s, u, true)
+		touched = c.beyond(s, u)
+	}
+	if touched { // from the last step's pieces on
 		c.fill(s.laws, u, s.H)
 		if !s.solve.solve(s.laws, s.s0, s.Pieces, s.E) {
 			panic("bilinear: the elements' laws have no common solution")
 		}
+		touched = false
 		for _, p := range s.Pieces {
 			touched = touched || p != Linear
 		}
@@ -34,6 +39,7 @@ func (c *Compiled) Step(s *State, u, y []float64) (touched bool) {
 // StepLinear is [Compiled.Step] with every element on its linear piece, whatever its limits. Where Step would touch
 // no limit the two give the same bits.
 func (c *Compiled) StepLinear(s *State, u, y []float64) {
+	c.senses(s, u)
 	c.linearSources(s, u, false)
 	for i := range s.Pieces {
 		s.Pieces[i] = Linear
@@ -41,14 +47,13 @@ func (c *Compiled) StepLinear(s *State, u, y []float64) {
 	c.advance(s, u, y)
 }
 
-// linearSources finds the senses without the sources, and the sources of the linear pieces. Only a limited step
-// knows of an amplifier that rests on a limit.
-func (c *Compiled) linearSources(s *State, u []float64, limited bool) {
+// senses finds the senses without the sources.
+func (c *Compiled) senses(s *State, u []float64) {
 	if len(u) != c.inputs {
 		panic("bilinear: wrong number of inputs")
 	}
-	k, width := c.elements, c.modes+c.inputs
-	for i := range k {
+	width := c.modes + c.inputs
+	for i := range s.s0 {
 		row := c.sense[i*width : (i+1)*width]
 		sum := 0.
 		for j, z := range s.Z {
@@ -59,6 +64,10 @@ func (c *Compiled) linearSources(s *State, u []float64, limited bool) {
 		}
 		s.s0[i] = sum
 	}
+}
+
+// linearSources finds the sources of the linear pieces. Only a limited step knows of an amplifier that rests on a limit.
+func (c *Compiled) linearSources(s *State, u []float64, limited bool) {
 	for i := range c.amplifiers {
 		a := &c.amplifiers[i]
 		s.num[i] = s.s0[i] + float64(a.perSlope*s.H[i])
@@ -82,14 +91,7 @@ func (c *Compiled) linearSources(s *State, u []float64, limited bool) {
 		}
 		i++
 	}
-	for i := range k {
-		row := c.linear[i*k : (i+1)*k]
-		sum := 0.
-		for j, x := range s.num {
-			sum = math.FMA(row[j], x, sum)
-		}
-		s.E[i] = sum
-	}
+	times(s.E, c.linear, s.num)
 }
 
 // beyond reports whether the sources of the linear pieces pass any limit.
@@ -212,10 +214,8 @@ func (c *Compiled) advance(s *State, u, y []float64) {
 			} else {
 				s.H[i] = e
 			}
-		case SlewUp:
-			s.H[i] = e + c.amplifiers[i].slew
-		case SlewDown:
-			s.H[i] = e - c.amplifiers[i].slew
+		case SlewUp, SlewDown:
+			s.H[i] = 2*e - s.H[i]
 		default:
 			s.H[i] = e
 		}

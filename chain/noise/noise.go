@@ -80,7 +80,21 @@ type Budget struct {
 // At computes the noise budget of a network.
 func At(n *circuit.Network) *Budget {
 	c := n.Chain
-	b := &Budget{Step: c.Converter.Rate / 2 / bins}
+	b := unfolded(n)
+	b.fold(c.Converter.Rate)
+	for _, s := range converterSources(c) {
+		for i := range b.Folded {
+			b.Folded[i] += s.Power / (c.Converter.Rate / 2)
+		}
+	}
+	sort.SliceStable(b.Sources, func(i, j int) bool { return b.Sources[i].Power > b.Sources[j].Power })
+	return b
+}
+
+// unfolded computes the budget but for the folded spectrum, its sources in no order.
+func unfolded(n *circuit.Network) *Budget {
+	c := n.Chain
+	b := &Budget{}
 	sources := circuitSources(n)
 	b.Sources = make([]Source, len(sources))
 	for i, s := range sources {
@@ -115,14 +129,7 @@ func At(n *circuit.Network) *Budget {
 		b.Sources[i].Power = integral(b.Frequencies, b.Sources[i].Density)
 	}
 	b.Highest = b.Frequencies[len(b.Frequencies)-1]
-	b.Folded = b.fold(c.Converter.Rate)
-	for _, s := range converterSources(c) {
-		b.Sources = append(b.Sources, s)
-		for i := range b.Folded {
-			b.Folded[i] += s.Power / (c.Converter.Rate / 2)
-		}
-	}
-	sort.SliceStable(b.Sources, func(i, j int) bool { return b.Sources[i].Power > b.Sources[j].Power })
+	b.Sources = append(b.Sources, converterSources(c)...)
 	for _, s := range b.Sources {
 		b.Power += s.Power
 	}
@@ -229,35 +236,51 @@ func integral(f, s []float64) float64 {
 	return sum
 }
 
-// at returns the density of the circuit at f: between the points of the grid as a power law, 0 below the grid,
-// beyond it falling as 1/f².
-func (b *Budget) at(f float64) float64 {
-	first, last := b.Frequencies[0], b.Frequencies[len(b.Frequencies)-1]
-	switch {
-	case f < first:
-		return 0
-	case f >= last:
-		r := last / f
-		return b.Density[len(b.Density)-1] * r * r
-	}
-	x := math.Log10(f/first) * perDecade
-	i := min(int(x), len(b.Density)-2)
-	s1, s2 := b.Density[i], b.Density[i+1]
-	if s1 <= 0 || s2 <= 0 {
-		return 0
-	}
-	return s1 * math.Pow(s2/s1, x-float64(i))
+// curve is a budget's density as a power law between the points of its grid: straight lines of logarithms.
+type curve struct {
+	first, last float64 // Hz
+	logs        []float64
+	end         float64 // V²/Hz at last
 }
 
-func (b *Budget) fold(rate float64) []float64 {
-	folded := make([]float64, bins+1)
-	for i := range folded {
+func (b *Budget) curve() curve {
+	c := curve{first: b.Frequencies[0], last: b.Highest, end: b.Density[len(b.Density)-1]}
+	for _, d := range b.Density {
+		c.logs = append(c.logs, math.Log(d)) // −Inf where nothing is
+	}
+	return c
+}
+
+// at returns the density at f: 0 below the grid, beyond it falling as 1/f².
+func (c *curve) at(f float64) float64 {
+	switch {
+	case f < c.first:
+		return 0
+	case f >= c.last:
+		r := c.last / f
+		return c.end * r * r
+	}
+	x := math.Log(f/c.first) * (perDecade / math.Ln10)
+	i := min(int(x), len(c.logs)-2)
+	from, to := c.logs[i], c.logs[i+1]
+	if math.IsInf(from, -1) || math.IsInf(to, -1) {
+		return 0
+	}
+	return math.Exp(from + (x-float64(i))*(to-from))
+}
+
+// fold sets the folded spectrum of the circuit's sources.
+func (b *Budget) fold(rate float64) {
+	b.Step = rate / 2 / bins
+	b.Folded = make([]float64, bins+1)
+	density := b.curve()
+	for i := range b.Folded {
 		f := float64(i) * b.Step
-		sum := b.at(f)
+		sum := density.at(f)
 		for k := 1; k <= explicit; k++ {
-			sum += b.at(float64(k)*rate-f) + b.at(float64(k)*rate+f)
+			sum += density.at(float64(k)*rate-f) + density.at(float64(k)*rate+f)
 		}
-		folded[i] = sum
+		b.Folded[i] = sum
 	}
 	// Beyond: from (explicit + ½)·rate on, two images a rate.
 	from := (explicit + 0.5) * rate
@@ -265,11 +288,10 @@ func (b *Budget) fold(rate float64) []float64 {
 	for i := 1; i < len(b.Frequencies); i++ {
 		if f1, f2 := b.Frequencies[i-1], b.Frequencies[i]; f2 > from {
 			lo := math.Max(f1, from)
-			rest += area(lo, f2, b.at(lo), b.Density[i])
+			rest += area(lo, f2, density.at(lo), b.Density[i])
 		}
 	}
-	for i := range folded {
-		folded[i] += rest * 2 / rate
+	for i := range b.Folded {
+		b.Folded[i] += rest * 2 / rate
 	}
-	return folded
 }
