@@ -52,64 +52,8 @@ func (c *Compiled) Unpack(s *State, x []float64) {
 // Lift builds the map over a number of steps for the network's given input by probing [Compiled.StepLinear] with unit
 // vectors, so that it agrees with it but for rounding.
 func (c *Compiled) Lift(steps, input int, readings []Reading) *Lifted {
-	states := c.States()
-	rows := states + len(readings)
-	l := &Lifted{
-		States:    states,
-		FromState: blas64.General{Rows: rows, Cols: states, Stride: max(states, 1), Data: make([]float64, rows*max(states, 1))},
-		FromInput: blas64.General{Rows: rows, Cols: steps, Stride: steps, Data: make([]float64, rows*steps)},
-	}
-	at := make([][]int, steps) // readings of each step
-	for i, r := range readings {
-		at[r.Step] = append(at[r.Step], i)
-	}
-	s, u, y, before := c.Start(), make([]float64, c.inputs), make([]float64, c.watched), make([]float64, len(c.amplifiers))
-	read := func(r Reading) float64 {
-		switch r.Of {
-		case Node:
-			return y[r.Item]
-		case Source:
-			return s.E[r.Item]
-		case Sense:
-			return c.senseOf(s, r.Item)
-		}
-		return s.E[r.Item] - before[r.Item]
-	}
-	step := func() {
-		copy(before, s.H)
-		c.StepLinear(s, u, y)
-	}
-	for from := range states {
-		clear(s.Z)
-		clear(s.H)
-		*c.place(s, from) = 1
-		for j := range steps {
-			step()
-			for _, i := range at[j] {
-				l.FromState.Data[(states+i)*l.FromState.Stride+from] = read(readings[i])
-			}
-		}
-		for i := range states {
-			l.FromState.Data[i*l.FromState.Stride+from] = *c.place(s, i)
-		}
-	}
-	// What a unit at one step does later depends on how much later alone.
-	clear(s.Z)
-	clear(s.H)
-	u[input] = 1
-	for later := range steps {
-		step()
-		u[input] = 0
-		for i := range states {
-			l.FromInput.Data[i*steps+steps-1-later] = *c.place(s, i)
-		}
-		for j := later; j < steps; j++ {
-			for _, i := range at[j] {
-				l.FromInput.Data[(states+i)*steps+j-later] = read(readings[i])
-			}
-		}
-	}
-	return l
+	p := c.newProber(steps, readings)
+	return &Lifted{States: c.States(), FromState: p.fromState(), FromInput: p.fromInput(input)}
 }
 
 // Apply adds m·x to y, for a matrix of a [Lifted] or a part of its rows.
