@@ -132,11 +132,10 @@ func Run(ctx context.Context, n *circuit.Network, feeds []Feed, o Options, sink 
 	blocks := (before + int64(g.conversions) - 1) / int64(g.conversions)
 	first := -blocks * int64(g.conversions)
 	feed := newFeeder(n, feeds, g, first, o.Seed)
-	sim, err := newSimulator(n, at, g, settle, feed.lanes)
+	sim, err := newSimulator(n, at, g, settle, feed.lanes, o.plain)
 	if err != nil {
 		return nil, err
 	}
-	sim.always = sim.always || o.plain
 	p := &pipeline{
 		feed: feed, sim: sim, conv: newConverter(n, at, settle, o, g.plan.Instants),
 		conversion: first + 1, blocks: max(1, cmp.Or(o.chunk, chunkBase)/g.base),

@@ -56,10 +56,11 @@ type simulator struct {
 	looked, moved      []float64   // readings of a block: of the linear run, and by how much the limited one differs
 	change             []float64
 
-	limitedRun *bilinear.State // the limited run, in a block that is stepped
-	touched    bool            // whether it touched a limit there
-	u, y       []float64
-	steps      [][]float64 // of each input, a block's internal steps
+	limited   *limiter // the limited run, in a block that is stepped
+	touched   bool     // whether it touched a limit there
+	u         []float64
+	steps     [][]float64 // of each input, a cell's internal steps
+	converted []float64
 
 	stages   []excursion // of each stage's output, limited run
 	asked    []excursion // of each amplifier's internal source, linear run
@@ -135,7 +136,7 @@ type conversions struct {
 	end      int64     // as chunk.end
 }
 
-func newSimulator(n *circuit.Network, at bilinear.Operating, g grid, settle settling, lanes []*lane) (*simulator, error) {
+func newSimulator(n *circuit.Network, at bilinear.Operating, g grid, settle settling, lanes []*lane, plain bool) (*simulator, error) {
 	s := &simulator{n: n, grid: g, indexOf: map[int]int{}, inputs: 1 + len(n.Inputs)}
 	see := func(node int) int {
 		if _, ok := s.indexOf[node]; !ok {
@@ -162,9 +163,8 @@ func newSimulator(n *circuit.Network, at bilinear.Operating, g grid, settle sett
 		return nil, err
 	}
 	s.bounds = s.circuit.Bounds()
-	s.always = s.circuit.RestsOnLimit()
-	s.limitedRun = s.circuit.Start()
-	s.u, s.y = make([]float64, s.inputs), make([]float64, len(s.watch))
+	s.always = plain || s.circuit.RestsOnLimit()
+	s.u = make([]float64, s.inputs)
 	s.clip = make([]float64, s.inputs)
 	s.clip[circuit.SupplyInput] = math.Inf(1)
 	for i, in := range n.Inputs {
@@ -182,6 +182,7 @@ func newSimulator(n *circuit.Network, at bilinear.Operating, g grid, settle sett
 	}
 	s.layReadings(top)
 	s.lift(lanes)
+	s.limited = newLimiter(s, plain)
 	s.scope = newScope(s, at)
 	s.watchers = newWatchers(n, at, s.indexOf, 1/g.plan.Rate, &s.list, s.scope)
 	rest := at.Volts[n.Output]
@@ -276,7 +277,7 @@ func (s *simulator) lift(lanes []*lane) {
 	s.looked, s.moved = make([]float64, s.inspectState.Rows), make([]float64, s.inspectState.Rows)
 	s.sums, s.fineSums, s.steps = make([][]float64, s.inputs), make([][]float64, s.inputs), make([][]float64, s.inputs)
 	for u := range s.inputs {
-		s.steps[u] = make([]float64, g.steps)
+		s.steps[u] = make([]float64, scale)
 		if s.coarse[u].present {
 			s.sums[u] = make([]float64, g.window())
 		}
@@ -332,6 +333,7 @@ func (s *simulator) block(c *chunk, o *conversions, b int, step int64) {
 	if stepped {
 		s.stepBlock(o, first, step)
 	} else {
+		clear(s.limited.state.Pieces)
 		s.passBlock(o, first, step)
 	}
 	s.advanceLanes(c, o, b, stepped)

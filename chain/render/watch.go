@@ -86,11 +86,11 @@ func newWatchers(n *circuit.Network, at bilinear.Operating, indexOf map[int]int,
 	return w
 }
 
-// touched notes which limits hold at a block's j-th step. By how much the linear run passes them is told by its nearest
-// instant at the base rate.
-func (w *watchers) touched(s *simulator, j int, step int64) {
-	w.union++
-	near := min((j+1)>>s.grid.plan.Doublings, s.grid.base-1)
+// touched notes which limits hold at a step that stands for several. By how much the linear run passes them is told by
+// the nearer ones, as they are numbered in the block, of its instants at the base rate.
+func (w *watchers) touched(s *simulator, near int, step, several int64) {
+	w.union += several
+	near = min(near, s.grid.base-1)
 	linear := func(q int) float64 {
 		x, _ := s.read(q)
 		if near > 0 && math.Abs(x[near-1]) > math.Abs(x[near]) {
@@ -100,31 +100,31 @@ func (w *watchers) touched(s *simulator, j int, step int64) {
 	}
 	for k := range w.amplifiers {
 		a, e := &w.amplifiers[k], s.elements[k]
-		switch s.limitedRun.Pieces[k] {
+		switch s.limited.state.Pieces[k] {
 		case bilinear.High:
-			a.high.touch(step, linear(e.source)/a.highest, 1)
+			a.high.touch(step, linear(e.source)/a.highest, several)
 		case bilinear.Low:
-			a.low.touch(step, linear(e.source)/a.lowest, 1)
+			a.low.touch(step, linear(e.source)/a.lowest, several)
 		case bilinear.SlewUp, bilinear.SlewDown:
 			ratio := 0.
 			if e.slope >= 0 {
 				ratio = math.Abs(linear(e.slope)) / a.slewStep
 			}
-			a.slew.touch(step, ratio, 1)
+			a.slew.touch(step, ratio, several)
 		}
 	}
 	for i := range w.capsules {
 		c := &w.capsules[i]
-		switch s.limitedRun.Pieces[c.element] {
+		switch s.limited.state.Pieces[c.element] {
 		case bilinear.CutOff:
-			c.cutOff.touch(step, math.Abs(s.u[c.input])/c.current, 1)
+			c.cutOff.touch(step, math.Abs(s.u[c.input])/c.current, several)
 		case bilinear.Saturated:
-			c.saturated.touch(step, 0, 1)
+			c.saturated.touch(step, 0, several)
 		}
 	}
 	for i, d := range w.diodes {
-		if s.limitedRun.Pieces[len(w.amplifiers)+len(w.capsules)+i] != bilinear.Linear {
-			d.touch(step, 0, 1)
+		if s.limited.state.Pieces[len(w.amplifiers)+len(w.capsules)+i] != bilinear.Linear {
+			d.touch(step, 0, several)
 		}
 	}
 }
