@@ -223,10 +223,16 @@ func (c *Compiled) conditions(dst []float64, s *State) int {
 					put(l.forward + l.resist*l.off - sense)
 				}
 			}
-		case High: // it asks for more
+		case High: // it asks for more, and can follow its rail
 			put(sense + l.num - l.den*l.high)
+			if a := &c.amplifiers[i]; a.highIn >= 0 && !math.IsInf(a.slew, 1) {
+				put(l.up - l.high)
+			}
 		case Low:
 			put(l.den*l.low - sense - l.num)
+			if a := &c.amplifiers[i]; a.lowIn >= 0 && !math.IsInf(a.slew, 1) {
+				put(l.low - l.down)
+			}
 		case SlewUp:
 			put(sense + l.num - l.den*l.up)
 			put(l.high - e)

@@ -8,24 +8,30 @@ import (
 	"midrail/bilinear"
 )
 
-// limiter takes the limited run through the blocks in which a limit could be touched, cell by cell; a cell is the steps
-// of one base sample. As long as every element stays on one piece the circuit is affine, so a cell is one map; only where
-// an element may leave its piece is it stepped.
+// limiter takes the limited run through the blocks in which a limit could be touched. As long as every element stays on
+// one piece the circuit is affine: a cell, which is the steps of one base sample, is one map, or else each eighth of it
+// is. Only an eighth in which an element may leave its piece is stepped.
 type limiter struct {
-	grid  grid // of blocks of one cell
-	plain bool // step every cell
-	state *bilinear.State
-	// held are the cells with the elements on the pieces met so far; nil where there is none.
-	held    map[string]*heldCell
-	key     []byte
-	columns int       // of the maps
-	x, rows []float64 // what a map is applied to, and what it gives
-	y       []float64 // watched nodes at a cell's end
+	plain         bool // step everything
+	state         *bilinear.State
+	cell          grid // of blocks of one cell
+	cells, eighth *holder
+	x, rows       []float64 // what a map is applied to, and what it gives
+	y             []float64 // watched nodes
 }
 
-// heldCell is a cell with every element on one piece. The columns of the maps are the state, then what each of the
-// inputs is given: a window of base samples, then the steps of fine lanes.
-type heldCell struct {
+// holder has the maps over a stretch of steps with the elements on the pieces met so far.
+type holder struct {
+	steps   int
+	windows bool // whether coarse inputs are given as windows of base samples, not as steps
+	columns int
+	held    map[string]*heldRun // nil where there is none
+	key     []byte
+}
+
+// heldRun is some steps with every element on one piece. The columns of the maps are the state, then what each of the
+// inputs is given.
+type heldRun struct {
 	looks       int            // at each condition
 	maps        blas64.General // to the states after, the conditions, the watched nodes and the sources at the end
 	constant    []float64
@@ -34,75 +40,97 @@ type heldCell struct {
 	limits      bool           // whether any piece is not the linear one
 }
 
-// mostHeld bounds how many cells are kept.
-const mostHeld = 256
+const (
+	// mostHeld bounds how many stretches are kept.
+	mostHeld = 256
+	// eighths is how many stretches a cell has: they are looked at for excursions, too, at least 16 times to a period of
+	// the tracks' highest frequency.
+	eighths = 8
+)
 
 func newLimiter(s *simulator, plain bool) *limiter {
-	l := &limiter{grid: s.grid, plain: plain, state: s.circuit.Start(), held: map[string]*heldCell{}}
-	l.grid.base, l.grid.steps = 1, 1<<s.grid.plan.Doublings
-	l.key = make([]byte, len(l.state.Pieces))
-	l.columns = s.circuit.States()
-	for u := range s.inputs {
-		if s.coarse[u].present {
-			l.columns += l.grid.window()
-		}
-		if s.fine[u].present {
-			l.columns += l.grid.steps
-		}
-	}
-	l.x, l.y = make([]float64, l.columns), make([]float64, len(s.watch))
+	l := &limiter{plain: plain, state: s.circuit.Start(), cell: s.grid, y: make([]float64, len(s.watch))}
+	l.cell.base, l.cell.steps = 1, 1<<s.grid.plan.Doublings
+	l.cells = newHolder(s, l.cell.steps, true)
+	l.eighth = newHolder(s, max(1, l.cell.steps/eighths), false)
+	l.x = make([]float64, max(l.cells.columns, l.eighth.columns))
 	return l
 }
 
-// cell returns the held cell of the pieces that the last step ended on.
-func (l *limiter) cell(s *simulator) *heldCell {
-	for i, p := range l.state.Pieces {
-		l.key[i] = byte(p)
-	}
-	h, known := l.held[string(l.key)]
-	if !known {
-		if len(l.held) == mostHeld {
-			clear(l.held)
+func newHolder(s *simulator, steps int, windows bool) *holder {
+	h := &holder{steps: steps, windows: windows, columns: s.circuit.States(), held: map[string]*heldRun{}, key: make([]byte, len(s.bounds))}
+	for u := range s.inputs {
+		switch {
+		case windows && s.coarse[u].present && s.fine[u].present:
+			h.columns += 1 + 2*s.grid.reach + steps
+		case windows && s.coarse[u].present:
+			h.columns += 1 + 2*s.grid.reach
+		case s.coarse[u].present || s.fine[u].present:
+			h.columns += steps
 		}
-		h = l.hold(s)
-		l.held[string(l.key)] = h
 	}
 	return h
 }
 
-// hold builds a held cell; nil where the pieces allow none.
-func (l *limiter) hold(s *simulator) *heldCell {
-	steps := l.grid.steps
-	// The first step, and the last of each quarter or, where a fine lane is as fast as its steps allow, of each two.
+// of returns the stretch with the elements on the pieces that the last step ended on.
+func (h *holder) of(s *simulator) *heldRun {
+	for i, p := range s.limited.state.Pieces {
+		h.key[i] = byte(p)
+	}
+	one, known := h.held[string(h.key)]
+	if !known {
+		if len(h.held) == mostHeld {
+			clear(h.held)
+		}
+		one = h.build(s)
+		h.held[string(h.key)] = one
+	}
+	return one
+}
+
+// looks are the steps at which conditions are looked at: the first, and the last of each quarter or, where a fine lane
+// is as fast as its steps allow, of each two.
+func (h *holder) looks(s *simulator) []int {
 	parts := 4
 	for _, in := range s.fine {
 		if in.present {
-			parts = max(parts, steps/2)
+			parts = max(parts, h.steps/2)
 		}
 	}
-	looks := []int{0}
+	list := []int{0}
 	for part := 1; part <= parts; part++ {
-		if at := part*steps/parts - 1; at > looks[len(looks)-1] {
-			looks = append(looks, at)
+		if at := part*h.steps/parts - 1; at > list[len(list)-1] {
+			list = append(list, at)
 		}
+	}
+	return list
+}
+
+// build makes a stretch; nil where the pieces allow none.
+func (h *holder) build(s *simulator) *heldRun {
+	if h.steps < 2 {
+		return nil
 	}
 	var readings []bilinear.Reading
+	last := h.steps - 1
 	for w := range s.watch {
-		readings = append(readings, bilinear.Reading{Step: steps - 1, Of: bilinear.Node, Item: w})
+		readings = append(readings, bilinear.Reading{Step: last, Of: bilinear.Node, Item: w})
 	}
 	for k := range s.n.Amplifiers {
-		readings = append(readings, bilinear.Reading{Step: steps - 1, Of: bilinear.Source, Item: k})
+		readings = append(readings, bilinear.Reading{Step: last, Of: bilinear.Source, Item: k})
 	}
 	converted := len(s.ports) + 1
 	for _, p := range s.ports {
-		readings = append(readings, bilinear.Reading{Step: steps - 1, Of: bilinear.Node, Item: p})
+		readings = append(readings, bilinear.Reading{Step: last, Of: bilinear.Node, Item: p})
 	}
-	readings = append(readings, bilinear.Reading{Step: steps - 2, Of: bilinear.Node, Item: s.ports[0]})
-	held := s.circuit.Hold(l.state.Pieces, steps, looks, readings)
+	readings = append(readings, bilinear.Reading{Step: last - 1, Of: bilinear.Node, Item: s.ports[0]})
+	looks := h.looks(s)
+	pieces := s.limited.state.Pieces
+	held := s.circuit.Hold(pieces, h.steps, looks, readings)
 	if held == nil {
 		return nil
 	}
-	all := blas64.General{Rows: len(held.Constant), Cols: l.columns, Stride: l.columns, Data: make([]float64, len(held.Constant)*l.columns)}
+	all := blas64.General{Rows: len(held.Constant), Cols: h.columns, Stride: h.columns, Data: make([]float64, len(held.Constant)*h.columns)}
 	at := 0
 	put := func(m blas64.General) {
 		for r := range m.Rows {
@@ -112,22 +140,22 @@ func (l *limiter) hold(s *simulator) *heldCell {
 	}
 	put(held.FromState)
 	for u := range s.inputs {
-		if s.coarse[u].present {
-			put(l.grid.fold(held.FromInput[u]))
+		if h.windows && s.coarse[u].present {
+			put(s.limited.cell.fold(held.FromInput[u]))
 		}
-		if s.fine[u].present {
+		if s.fine[u].present || !h.windows && s.coarse[u].present {
 			put(held.FromInput[u])
 		}
 	}
 	main := all.Rows - converted
-	h := &heldCell{
+	one := &heldRun{
 		looks: len(looks), maps: rows(all, 0, main), constant: held.Constant[:main],
 		convert: rows(all, main, all.Rows), convertFrom: held.Constant[main:],
 	}
-	for _, p := range l.state.Pieces {
-		h.limits = h.limits || p != bilinear.Linear
+	for _, p := range pieces {
+		one.limits = one.limits || p != bilinear.Linear
 	}
-	return h
+	return one
 }
 
 // stays tells whether a condition, by its values at the looks, is kept throughout: none comes nearer to 0 than the values
@@ -135,7 +163,9 @@ func (l *limiter) hold(s *simulator) *heldCell {
 func stays(v []float64) bool {
 	bend := 0.
 	for i := 1; i+1 < len(v); i++ {
-		bend = math.Max(bend, math.Abs(v[i-1]-2*v[i]+v[i+1]))
+		if b := math.Abs(v[i-1] - 2*v[i] + v[i+1]); b > bend {
+			bend = b
+		}
 	}
 	for _, x := range v {
 		if !(x > bend) {
@@ -161,129 +191,150 @@ func (s *simulator) stepBlock(o *conversions, first int, step int64) {
 	for u, clip := range s.clip {
 		plain = plain || s.inputMost[u]*margin >= clip
 	}
-	for cell := range s.grid.base {
-		if plain || !s.holdCell(o, first, cell, step) {
-			s.stepCell(o, first, cell, step)
+	b := limitedBlock{s: s, o: o, first: first, step: step}
+	for from := 0; from < s.grid.steps; from += l.cell.steps {
+		if !plain && b.take(l.cells, from) {
+			continue
+		}
+		b.prepare(from)
+		for part := from; part < from+l.cell.steps; part += l.eighth.steps {
+			if plain || !b.take(l.eighth, part) {
+				b.walk(part, part+l.eighth.steps)
+			}
 		}
 	}
 }
 
-// holdCell takes the limited run through a cell of a block in one go, if all elements stay on the pieces they are on.
-func (s *simulator) holdCell(o *conversions, first, cell int, step int64) bool {
-	l := s.limited
-	h := l.cell(s)
-	if h == nil {
+// limitedBlock is a block on which the limited run is.
+type limitedBlock struct {
+	s     *simulator
+	o     *conversions
+	first int   // conversion
+	step  int64 // of the run, the block's first
+}
+
+// take takes the limited run through a stretch that begins with a step of the block, if all elements stay on the pieces
+// they are on.
+func (b *limitedBlock) take(h *holder, from int) bool {
+	s, l := b.s, b.s.limited
+	one := h.of(s)
+	if one == nil {
 		return false
 	}
 	states := len(s.linear)
-	s.circuit.Pack(l.x, l.state)
-	at := states
+	x := l.x[:h.columns]
+	s.circuit.Pack(x, l.state)
+	at, cell, in := states, from/l.cell.steps, from%l.cell.steps
 	for u := range s.inputs {
-		if s.coarse[u].present {
-			at += copy(l.x[at:], s.sums[u][cell:cell+l.grid.window()])
+		if h.windows && s.coarse[u].present {
+			at += copy(x[at:], s.sums[u][cell:cell+l.cell.window()])
 		}
-		if s.fine[u].present {
-			at += copy(l.x[at:], s.fineSums[u][cell*l.grid.steps:(cell+1)*l.grid.steps])
+		switch {
+		case h.windows && s.fine[u].present:
+			at += copy(x[at:], s.fineSums[u][from:from+h.steps])
+		case !h.windows && (s.coarse[u].present || s.fine[u].present):
+			at += copy(x[at:], s.steps[u][in:in+h.steps])
 		}
 	}
-	out := append(l.rows[:0], h.constant...)
+	out := append(l.rows[:0], one.constant...)
 	l.rows = out
-	bilinear.Apply(out, h.maps, l.x)
+	bilinear.Apply(out, one.maps, x)
 	conditions := len(out) - states - len(s.watch) - len(s.n.Amplifiers)
-	for i := 0; i < conditions; i += h.looks {
-		if !stays(out[states+i : states+i+h.looks]) {
+	for i := 0; i < conditions; i += one.looks {
+		if !stays(out[states+i : states+i+one.looks]) {
 			return false
 		}
 	}
 	s.circuit.Unpack(l.state, out[:states])
-	several := int64(l.grid.steps)
-	last := step + int64(cell+1)*several - 1
-	if h.limits {
+	to := from + h.steps
+	last := b.step + int64(to) - 1
+	if one.limits {
 		s.touched = true
-		s.watchers.touched(s, cell+1, last, several)
+		s.watchers.touched(s, to/l.cell.steps, last, int64(h.steps))
 	}
 	y, sources := out[states+conditions:states+conditions+len(s.watch)], out[states+conditions+len(s.watch):]
-	s.scope.see(cell, y)
-	s.see(y, sources, last, several)
-	if (cell+1)%s.grid.plan.Base == 0 {
-		k := first + cell/s.grid.plan.Base
-		out := append(s.converted[:0], h.convertFrom...)
+	b.see(to, y, sources, int64(h.steps))
+	if to%s.grid.plan.Steps() == 0 {
+		out := append(s.converted[:0], one.convertFrom...)
 		s.converted = out
-		bilinear.Apply(out, h.convert, l.x)
-		for p := range s.ports {
-			o.overload[p][k] = out[p]
-		}
-		o.slope[k] = (out[0] - out[len(s.ports)]) * s.grid.plan.Rate
+		bilinear.Apply(out, one.convert, x)
+		b.convert(to, out, out[len(s.ports)])
 	}
 	return true
 }
 
-// stepCell steps the limited run through a cell of a block.
-func (s *simulator) stepCell(o *conversions, first, cell int, step int64) {
-	l := s.limited
-	steps := l.grid.steps
-	from := cell * steps
-	for u := range s.inputs {
-		dst := s.steps[u]
+// prepare finds the steps of the cell that begins with a step of the block.
+func (b *limitedBlock) prepare(from int) {
+	s, l := b.s, b.s.limited
+	cell := from / l.cell.steps
+	for u, dst := range s.steps {
 		clear(dst)
 		if s.coarse[u].present {
-			l.grid.refine(dst, s.sums[u][cell:cell+l.grid.window()])
+			l.cell.refine(dst, s.sums[u][cell:cell+l.cell.window()])
 		}
 		if s.fine[u].present {
-			for j, v := range s.fineSums[u][from : from+steps] {
+			for j, v := range s.fineSums[u][from : from+l.cell.steps] {
 				dst[j] += v
 			}
 		}
 	}
-	converts := (cell+1)%s.grid.plan.Base == 0
-	every := max(1, steps/watchedPerBase)
+}
+
+// walk steps the limited run from a step of the block to another.
+func (b *limitedBlock) walk(from, to int) {
+	s, l := b.s, b.s.limited
+	converts := to%s.grid.plan.Steps() == 0
 	before := 0.
-	for j := range steps {
-		at := step + int64(from+j)
-		clipped := s.inputsAt(j, at)
-		y := l.y
-		if (j+1)%every != 0 && !(converts && j == steps-2) {
-			y = nil
+	for j := from; j < to; j++ {
+		at := b.step + int64(j)
+		clipped := s.inputsAt(j%l.cell.steps, at)
+		var y []float64
+		if j == to-1 || converts && j == to-2 {
+			y = l.y
 		}
 		if s.circuit.Step(l.state, s.u, y) || clipped {
 			s.touched = true
-			s.watchers.touched(s, (from+j+1)/steps, at, 1)
+			s.watchers.touched(s, (j+1)/l.cell.steps, at, 1)
 		}
-		if y == nil {
-			continue
-		}
-		if (j+1)%every == 0 {
-			s.see(y, l.state.E, at, int64(every))
-		}
-		if j == steps-2 {
+		if y != nil && j == to-2 {
 			before = y[s.ports[0]]
 		}
 	}
-	s.scope.see(cell, l.y)
+	b.see(to, l.y, l.state.E, int64(to-from))
 	if converts {
-		k := first + cell/s.grid.plan.Base
 		for p, i := range s.ports {
-			o.overload[p][k] = l.y[i]
+			s.converted[p] = l.y[i]
 		}
-		o.slope[k] = (l.y[s.ports[0]] - before) * s.grid.plan.Rate
+		b.convert(to, s.converted, before)
 	}
 }
 
-// see notes where the watched voltages of the limited run and the amplifiers' sources are at a step that stands for
-// several.
-func (s *simulator) see(y, sources []float64, step, several int64) {
+// convert tells of the conversion that ends with the step before the given one of the block: the voltages at the ports,
+// and that at the first of them one step earlier.
+func (b *limitedBlock) convert(to int, ports []float64, before float64) {
+	s := b.s
+	k := b.first + to/s.grid.plan.Steps() - 1
+	for p := range s.ports {
+		b.o.overload[p][k] = ports[p]
+	}
+	b.o.slope[k] = (ports[0] - before) * s.grid.plan.Rate
+}
+
+// see notes where the watched voltages of the limited run and the amplifiers' sources are at the last of several steps,
+// which end before the given one of the block.
+func (b *limitedBlock) see(to int, y, sources []float64, several int64) {
+	s := b.s
+	if scale := s.limited.cell.steps; to%scale == 0 {
+		s.scope.see(to/scale-1, y)
+	}
 	for k, q := range s.stageIndex {
 		s.stages[k].see(y[q])
 	}
 	for k := range s.watchers.amplifiers {
 		a := &s.watchers.amplifiers[k]
-		a.watch(y[a.plus], y[a.minus], y[a.out], sources[k], step, several)
+		a.watch(y[a.plus], y[a.minus], y[a.out], sources[k], b.step+int64(to)-1, several)
 	}
 }
-
-// watchedPerBase is how often a cell's steps are looked at for excursions while the limited run is stepped: at least 16
-// times to a period of the tracks' highest frequency.
-const watchedPerBase = 8
 
 // compare takes the linear run, which the lanes have made of a block that was stepped, from the limited one.
 func (s *simulator) compare(o *conversions, first int) {

@@ -182,7 +182,7 @@ func newSimulator(n *circuit.Network, at bilinear.Operating, g grid, settle sett
 	}
 	s.layReadings(top)
 	s.lift(lanes)
-	s.limited = newLimiter(s, plain)
+	s.limited, s.converted = newLimiter(s, plain), make([]float64, len(s.ports)+1)
 	s.scope = newScope(s, at)
 	s.watchers = newWatchers(n, at, s.indexOf, 1/g.plan.Rate, &s.list, s.scope)
 	rest := at.Volts[n.Output]
