@@ -10,7 +10,7 @@ import (
 
 const (
 	fineStep = 2.5e-9 // s; halving it moves the solutions by less than −140 dB of swing
-	coarse   = 3072e3 // Hz, the internal rate of a run of a 48 kHz track
+	coarse   = 6144e3 // Hz, the internal rate of a run of a 48 kHz track
 )
 
 // limited is the slope of an internal source: slew-limited, and nothing beyond a rail that it has reached.
@@ -104,11 +104,9 @@ func tone(f1, a1, f2, a2 float64) func(s float64) float64 {
 	}
 }
 
-// The error is of second order, 24 dB for a rate four times finer, but it starts higher than the linear circuit's: leaving a
-// rail costs more, and the more so the faster the source leaves it. Measured, worst output, bipolar amplifiers, in dB of
-// swing at 768, 3072 and 12288 kHz: 1 kHz −92, −116, −139; 3 kHz −77, −99, −125; 9 kHz −67, −90, −113; 3 kHz without
-// limits −99 at 768 kHz. Each row is allowed what was measured at 3072 kHz with 1 to 11 dB to spare: it holds the accuracy
-// as it is, which is no better than that.
+// The error is of second order, 12 dB for twice the rate, but it starts higher than the linear circuit's: leaving a rail
+// costs more, and the more so the faster the source leaves it. What is allowed is what a run promises at its least
+// internal rate.
 func TestOverloadedTwoStagesMatchRungeKutta(t *testing.T) {
 	bipolar := twoStages{rIn: 10e3, cIn: 1e-6, rF: 68e3, cF: 33e-12, r1: 9.1e3, r2: 9.1e3, c1: 2.2e-9, c2: 1e-9,
 		ro: 200, gbw: 1e6, gain: 1e5, slew: 0.4e6, low: -0.9, high: 0.8}
@@ -122,12 +120,12 @@ func TestOverloadedTwoStagesMatchRungeKutta(t *testing.T) {
 		seconds float64
 		allowed float64 // dB of swing
 	}{
-		{"1 kHz, 13 dB over", bipolar, tone(1000, over(13), 0, 0), 3e-3, -105},
+		{"1 kHz, 13 dB over", bipolar, tone(1000, over(13), 0, 0), 3e-3, -115},
 		{"440 Hz and 3.1 kHz, 10 dB over", bipolar, tone(440, over(4), 3100, over(4)), 5e-3, -105},
-		{"3 kHz, 13 dB over", bipolar, tone(3000, over(13), 0, 0), 2e-3, -95},
-		{"9 kHz, 10 dB over", bipolar, tone(9000, over(10), 0, 0), 1e-3, -89},
-		{"1 kHz, 13 dB over, fast amplifiers", fast, tone(1000, over(13), 0, 0), 2e-3, -105},
-		{"3 kHz, 13 dB over, fast amplifiers", fast, tone(3000, over(13), 0, 0), 1e-3, -95},
+		{"3 kHz, 13 dB over", bipolar, tone(3000, over(13), 0, 0), 2e-3, -105},
+		{"9 kHz, 10 dB over", bipolar, tone(9000, over(10), 0, 0), 1e-3, -99},
+		{"1 kHz, 13 dB over, fast amplifiers", fast, tone(1000, over(13), 0, 0), 2e-3, -115},
+		{"3 kHz, 13 dB over, fast amplifiers", fast, tone(3000, over(13), 0, 0), 1e-3, -105},
 	} {
 		t.Run(c.name, func(t *testing.T) {
 			n, at := c.circuit.network()
