@@ -34,11 +34,12 @@ const (
 // lane is one way of sound into the network: the part of a track or of an interferer that goes into one input, at the
 // base rate or, where that is too coarse for it, at the internal rate.
 type lane struct {
-	part  part
-	input int     // of the network's u
-	fine  bool    // at the internal rate
-	scale float64 // V or A of u for 1 of the lane's values
-	fill  func(dst []float64, first int64) error
+	part   part
+	input  int     // of the network's u
+	fine   bool    // at the internal rate
+	scale  float64 // V or A of u for 1 of the lane's values
+	fill   func(dst []float64, first int64) error
+	stairs stairs // where it is set, the lane has no values but those that it gives of a block
 
 	next int64     // index of the next value at the lane's rate
 	tail []float64 // values that the next chunk needs again
@@ -117,6 +118,10 @@ func newFeeder(n *circuit.Network, feeds []Feed, g grid, first int64, seed uint6
 	}
 	fineStart := first*int64(g.plan.Steps()) + 1
 	for _, x := range newInterferers(n, g.plan, seed) {
+		if x.stairs != nil {
+			f.lanes = append(f.lanes, &lane{part: x.part, input: x.input, scale: x.scale, stairs: x.stairs})
+			continue
+		}
 		l := &lane{part: x.part, input: x.input, fine: x.fine, scale: x.scale, next: start, fill: func(dst []float64, first int64) error {
 			clear(dst)
 			x.signal.add(dst, first)
@@ -128,7 +133,7 @@ func newFeeder(n *circuit.Network, feeds []Feed, g grid, first int64, seed uint6
 		f.lanes = append(f.lanes, l)
 	}
 	for _, l := range f.lanes {
-		if !l.fine {
+		if !l.fine && l.stairs == nil {
 			l.tail = make([]float64, 2*g.reach)
 			// What the first chunk needs before its own values.
 			l.next += int64(len(l.tail))
@@ -144,6 +149,9 @@ func newFeeder(n *circuit.Network, feeds []Feed, g grid, first int64, seed uint6
 // fill puts the next values of every lane into the chunk.
 func (f *feeder) fill(c *chunk) error {
 	for i, l := range f.lanes {
+		if l.stairs != nil {
+			continue
+		}
 		dst := c.lanes[i]
 		fresh := dst[copy(dst, l.tail):]
 		if err := l.fill(fresh, l.next); err != nil {

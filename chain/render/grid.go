@@ -88,3 +88,18 @@ func (g grid) means(dst, steps []float64) {
 		dst[i] = sum / float64(scale)
 	}
 }
+
+// stairMeans adds the means of the steps of each base sample to dst.
+func (g grid) stairMeans(dst []float64, t *stair) {
+	scale := 1 << g.plan.Doublings
+	for i := range dst {
+		dst[i] += t.from
+	}
+	for _, c := range t.changes {
+		cell := c.step / scale
+		dst[cell] += c.by * float64((cell+1)*scale-c.step) / float64(scale)
+		for i := cell + 1; i < len(dst); i++ {
+			dst[i] += c.by
+		}
+	}
+}

@@ -10,18 +10,34 @@ import (
 	"midrail/chain/circuit"
 )
 
-// interferer is one part of an interferer on its way into one input of the network.
+// interferer is one part of the interferers on its way into one input of the network.
 type interferer struct {
 	part   part
 	input  int     // of the network's u
 	scale  float64 // volts or amperes of u for one unit of the interferer
 	fine   bool    // made at the internal rate
 	signal generator
+	stairs stairs // what is made of in place of signal: at the internal rate too, but constant over long stretches
 }
 
 // generator adds its signal at the steps first, first+1, … of the internal rate to dst.
 type generator interface {
 	add(dst []float64, first int64)
+}
+
+// stairs is a signal at the internal rate that rarely changes.
+type stairs interface {
+	// over sets t to the steps first, first+1, … of a block of n.
+	over(t *stair, first int64, n int)
+}
+
+// generators are several at once.
+type generators []generator
+
+func (all generators) add(dst []float64, first int64) {
+	for _, g := range all {
+		g.add(dst, first)
+	}
 }
 
 // newInterferers prepares the chain's interferers, parted at half the converter's rate, with noise drawn from the seed.
@@ -39,9 +55,16 @@ func newInterferers(n *circuit.Network, plan Plan, seed uint64) []*interferer {
 			}
 		}
 		add := func(p part, fine bool, g generator) {
-			if g != nil {
-				all = append(all, &interferer{p, one.input, one.scale, fine, g})
+			if g == nil {
+				return
 			}
+			for _, other := range all { // that go the same way
+				if other.stairs == nil && other.part == p && other.input == one.input && other.fine == fine {
+					other.signal = append(other.signal.(generators), g)
+					return
+				}
+			}
+			all = append(all, &interferer{part: p, input: one.input, scale: one.scale, fine: fine, signal: generators{g}})
 		}
 		tone := func(f, level float64) (g generator, fine bool) {
 			if f <= baseTone*plan.To {
@@ -52,7 +75,7 @@ func newInterferers(n *circuit.Network, plan Plan, seed uint64) []*interferer {
 		switch x.Shape {
 		case "square":
 			// Its harmonics below half the converter's rate are put where they belong and taken from the rest.
-			add(outOfBandPart, true, square{level: x.Level, cycles: x.Frequency / plan.Rate})
+			all = append(all, &interferer{part: outOfBandPart, input: one.input, scale: one.scale, stairs: square{level: x.Level, cycles: x.Frequency / plan.Rate}})
 			for k := 1; float64(k)*x.Frequency < half; k += 2 {
 				g, fine := tone(float64(k)*x.Frequency, 4/math.Pi/float64(k)*x.Level)
 				add(inBandPart, fine, g)
@@ -133,19 +156,106 @@ type square struct {
 	cycles float64
 }
 
-func (s square) add(dst []float64, first int64) {
+// at returns the value at a step.
+func (s square) at(step int64) float64 {
+	_, phase := math.Modf(s.cycles * float64(step))
+	if phase < 0 {
+		phase++
+	}
+	v := 1.
+	if phase >= 0.5 {
+		v = -1
+	}
+	_, opposite := math.Modf(phase + 0.5)
+	return s.level * (v + edge(phase, s.cycles) - edge(opposite, s.cycles))
+}
+
+func (s square) over(t *stair, first int64, n int) {
+	before := s.at(first)
+	t.from, t.changes = before, t.changes[:0]
+	// Edges are 1/(2·cycles) steps apart, and nothing changes but from the step before one to the second after it.
+	half := 0.5 / s.cycles
+	next := 1 // step of the block
+	for k := math.Floor(float64(first) / half); ; k++ {
+		at := int64(math.Floor(k*half)) - first
+		if at-1 >= int64(n) {
+			return
+		}
+		for ; int64(next) <= at+2 && next < n; next++ {
+			if int64(next) < at-1 {
+				next = int(at - 1)
+			}
+			if v := s.at(first + int64(next)); v != before {
+				t.changes = append(t.changes, change{next, v - before})
+				before = v
+			}
+		}
+	}
+}
+
+// stair is a signal over a block: a value at its first step, and by how much it changes at others, in their order.
+type stair struct {
+	from    float64
+	changes []change
+}
+
+type change struct {
+	step int
+	by   float64
+}
+
+// at returns the value at a step of the block.
+func (t *stair) at(step int) float64 {
+	v := t.from
+	for _, c := range t.changes {
+		if c.step <= step {
+			v += c.by
+		}
+	}
+	return v
+}
+
+// flat tells whether the value is the same from a step of the block to before another.
+func (t *stair) flat(from, to int) bool {
+	for _, c := range t.changes {
+		if c.step > from && c.step < to {
+			return false
+		}
+	}
+	return true
+}
+
+// addTo adds the values from a step on to dst.
+func (t *stair) addTo(dst []float64, from int) {
+	v := t.at(from)
+	next := 0
+	for next < len(t.changes) && t.changes[next].step <= from {
+		next++
+	}
 	for i := range dst {
-		_, phase := math.Modf(s.cycles * float64(first+int64(i)))
-		if phase < 0 {
-			phase++
+		for ; next < len(t.changes) && t.changes[next].step == from+i; next++ {
+			v += t.changes[next].by
 		}
-		v := 1.
-		if phase >= 0.5 {
-			v = -1
-		}
-		_, opposite := math.Modf(phase + 0.5)
-		v += edge(phase, s.cycles) - edge(opposite, s.cycles)
-		dst[i] += s.level * v
+		dst[i] += v
+	}
+}
+
+// most returns the largest magnitude.
+func (t *stair) most() float64 {
+	v := t.from
+	most := math.Abs(v)
+	for _, c := range t.changes {
+		v += c.by
+		most = math.Max(most, math.Abs(v))
+	}
+	return most
+}
+
+// scaleBy multiplies the signal.
+func (t *stair) scaleBy(by float64) {
+	t.from *= by
+	for i := range t.changes {
+		t.changes[i].by *= by
 	}
 }
 

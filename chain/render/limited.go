@@ -4,6 +4,7 @@ import (
 	"math"
 
 	"gonum.org/v1/gonum/blas/blas64"
+	"gonum.org/v1/gonum/floats"
 
 	"midrail/bilinear"
 )
@@ -60,16 +61,28 @@ func newLimiter(s *simulator, plain bool) *limiter {
 func newHolder(s *simulator, steps int, windows bool) *holder {
 	h := &holder{steps: steps, windows: windows, columns: s.circuit.States(), held: map[string]*heldRun{}, key: make([]byte, len(s.bounds))}
 	for u := range s.inputs {
-		switch {
-		case windows && s.coarse[u].present && s.fine[u].present:
-			h.columns += 1 + 2*s.grid.reach + steps
-		case windows && s.coarse[u].present:
+		if !windows {
+			if s.driven(u) {
+				h.columns += steps
+			}
+			continue
+		}
+		if s.coarse[u].present {
 			h.columns += 1 + 2*s.grid.reach
-		case s.coarse[u].present || s.fine[u].present:
+		}
+		if s.fine[u].present {
 			h.columns += steps
+		}
+		if s.stairs[u].present {
+			h.columns++
 		}
 	}
 	return h
+}
+
+// driven tells whether anything goes into an input.
+func (s *simulator) driven(u int) bool {
+	return s.coarse[u].present || s.fine[u].present || s.stairs[u].present
 }
 
 // of returns the stretch with the elements on the pieces that the last step ended on.
@@ -140,11 +153,20 @@ func (h *holder) build(s *simulator) *heldRun {
 	}
 	put(held.FromState)
 	for u := range s.inputs {
-		if h.windows && s.coarse[u].present {
+		if !h.windows {
+			if s.driven(u) {
+				put(held.FromInput[u])
+			}
+			continue
+		}
+		if s.coarse[u].present {
 			put(s.limited.cell.fold(held.FromInput[u]))
 		}
-		if s.fine[u].present || !h.windows && s.coarse[u].present {
+		if s.fine[u].present {
 			put(held.FromInput[u])
+		}
+		if s.stairs[u].present {
+			put(constant(held.FromInput[u]))
 		}
 	}
 	main := all.Rows - converted
@@ -156,6 +178,15 @@ func (h *holder) build(s *simulator) *heldRun {
 		one.limits = one.limits || p != bilinear.Linear
 	}
 	return one
+}
+
+// constant returns a matrix, whose columns are steps, for a value that is the same at all of them.
+func constant(m blas64.General) blas64.General {
+	out := blas64.General{Rows: m.Rows, Cols: 1, Stride: 1, Data: make([]float64, m.Rows)}
+	for r := range m.Rows {
+		out.Data[r] = floats.Sum(m.Data[r*m.Stride : r*m.Stride+m.Cols])
+	}
+	return out
 }
 
 // stays tells whether a condition, by its values at the looks, is kept throughout: none comes nearer to 0 than the values
@@ -226,14 +257,30 @@ func (b *limitedBlock) take(h *holder, from int) bool {
 	s.circuit.Pack(x, l.state)
 	at, cell, in := states, from/l.cell.steps, from%l.cell.steps
 	for u := range s.inputs {
-		if h.windows && s.coarse[u].present {
+		if !h.windows {
+			if s.driven(u) {
+				at += copy(x[at:], s.steps[u][in:in+h.steps])
+			}
+			continue
+		}
+		if s.coarse[u].present {
 			at += copy(x[at:], s.sums[u][cell:cell+l.cell.window()])
 		}
-		switch {
-		case h.windows && s.fine[u].present:
+		if s.fine[u].present {
 			at += copy(x[at:], s.fineSums[u][from:from+h.steps])
-		case !h.windows && (s.coarse[u].present || s.fine[u].present):
-			at += copy(x[at:], s.steps[u][in:in+h.steps])
+		}
+		if s.stairs[u].present {
+			x[at] = 0
+			for _, lane := range s.lanes {
+				if lane.stairs == nil || lane.input != u {
+					continue
+				}
+				if !lane.stair.flat(from, from+h.steps) {
+					return false
+				}
+				x[at] += lane.stair.at(from)
+			}
+			at++
 		}
 	}
 	out := append(l.rows[:0], one.constant...)
@@ -276,6 +323,11 @@ func (b *limitedBlock) prepare(from int) {
 			for j, v := range s.fineSums[u][from : from+l.cell.steps] {
 				dst[j] += v
 			}
+		}
+	}
+	for _, lane := range s.lanes {
+		if lane.stairs != nil {
+			lane.stair.addTo(s.steps[lane.input], from)
 		}
 	}
 }

@@ -235,7 +235,10 @@ func (p *pipeline) newWork() *work {
 	w := &work{chunk: &chunk{}, out: &conversions{}}
 	for _, l := range p.feed.lanes {
 		length := p.blocks * g.steps
-		if !l.fine {
+		switch {
+		case l.stairs != nil:
+			length = 0
+		case !l.fine:
 			length = p.blocks*g.base + 2*g.reach
 		}
 		w.chunk.lanes = append(w.chunk.lanes, make([]float64, length))

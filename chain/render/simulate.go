@@ -4,6 +4,7 @@ import (
 	"math"
 
 	"gonum.org/v1/gonum/blas/blas64"
+	"gonum.org/v1/gonum/floats"
 
 	"midrail/bilinear"
 	"midrail/chain/circuit"
@@ -45,12 +46,14 @@ type simulator struct {
 	lanes                      []*laneRun
 	inputs                     int
 	coarse, fine               []inputMaps // of each input of u
+	stairs                     []stairMaps
+	cells                      []blas64.General // of each input with fine lanes or stairs, to the quantities
 
 	linear, difference []float64 // states: the sum of the lanes'; limited minus linear
 	parted             bool      // whether difference is not 0
 	held               bool      // whether the last block could touch a limit
 	sums, fineSums     [][]float64
-	cellMeans          [][]float64 // of each input with fine lanes
+	cellMeans          [][]float64 // of each input with fine lanes or stairs
 	inputMost          []float64   // V or A, how large each input of u gets in the block
 	isRead             []bool      // of each quantity, in this block
 	looked, moved      []float64   // readings of a block: of the linear run, and by how much the limited one differs
@@ -73,7 +76,13 @@ type simulator struct {
 // inputMaps are what a block's values at one input add.
 type inputMaps struct {
 	present          bool
-	advance, inspect blas64.General
+	advance, inspect blas64.General // of fine lanes, cells has the latter
+}
+
+// stairMaps are what a change by 1 at a step of the block, which is a row, adds.
+type stairMaps struct {
+	present bool
+	advance blas64.General
 }
 
 // quantityReach bounds the quantities over a block by the sizes of what makes them: |q| ≤ Σ state·|x| + Σ input·max|u|.
@@ -109,6 +118,7 @@ func (s *simulator) reachOf(m blas64.General, byColumn bool) []float64 {
 type laneRun struct {
 	*lane
 	state, next []float64
+	stair       stair // of the block
 }
 
 // excursion is how far a voltage went from rest.
@@ -247,15 +257,19 @@ func (s *simulator) lift(lanes []*lane) {
 		put(e.slope, bilinear.Slope, k)
 		put(e.sense, bilinear.Sense, k)
 	}
-	s.coarse, s.fine = make([]inputMaps, s.inputs), make([]inputMaps, s.inputs)
+	s.coarse, s.fine, s.stairs = make([]inputMaps, s.inputs), make([]inputMaps, s.inputs), make([]stairMaps, s.inputs)
+	s.cells = make([]blas64.General, s.inputs)
 	states := s.circuit.States()
 	for u := range s.inputs {
-		var coarse, fine bool
+		var coarse, fine, stairs bool
 		for _, l := range lanes {
-			coarse = coarse || l.input == u && !l.fine
-			fine = fine || l.input == u && l.fine
+			if l.input == u {
+				stairs = stairs || l.stairs != nil
+				fine = fine || l.fine
+				coarse = coarse || l.stairs == nil && !l.fine
+			}
 		}
-		if !coarse && !fine && u != circuit.SupplyInput {
+		if !coarse && !fine && !stairs && u != circuit.SupplyInput {
 			continue
 		}
 		a, i := s.circuit.Lift(g.steps, u, advance), s.circuit.Lift(g.steps, u, inspect)
@@ -264,8 +278,14 @@ func (s *simulator) lift(lanes []*lane) {
 		if coarse {
 			s.coarse[u] = inputMaps{true, g.fold(ai), g.fold(ii)}
 		}
+		if fine || stairs {
+			s.cells[u] = g.cells(ii)
+		}
 		if fine {
-			s.fine[u] = inputMaps{true, ai, g.cells(ii)}
+			s.fine[u] = inputMaps{present: true, advance: ai}
+		}
+		if stairs {
+			s.stairs[u] = stairMaps{true, rises(ai)}
 		}
 	}
 	for _, l := range lanes {
@@ -293,11 +313,25 @@ func (s *simulator) lift(lanes []*lane) {
 		if s.coarse[u].present {
 			copy(s.reach.coarse[u*s.quantities:], s.reachOf(s.coarse[u].inspect, false))
 		}
-		if s.fine[u].present {
-			copy(s.reach.fine[u*s.quantities:], s.reachOf(s.fine[u].inspect, false))
+		if s.cells[u].Rows > 0 {
+			copy(s.reach.fine[u*s.quantities:], s.reachOf(s.cells[u], false))
 			s.cellMeans[u] = make([]float64, g.base)
 		}
 	}
+}
+
+// rises returns, for a matrix whose columns are a block's steps, a matrix with a row for each: what the columns from that
+// step on add up to.
+func rises(m blas64.General) blas64.General {
+	out := blas64.General{Rows: m.Cols, Cols: m.Rows, Stride: m.Rows, Data: make([]float64, m.Cols*m.Rows)}
+	for r := range m.Rows {
+		sum := 0.
+		for j := m.Cols - 1; j >= 0; j-- {
+			sum += m.Data[r*m.Stride+j]
+			out.Data[j*out.Stride+r] = sum
+		}
+	}
+	return out
 }
 
 // below returns a matrix without its first rows.
@@ -323,7 +357,7 @@ func (s *simulator) run(c *chunk, o *conversions) {
 
 // block takes the circuit through the chunk's b-th block, whose first internal step is given.
 func (s *simulator) block(c *chunk, o *conversions, b int, step int64) {
-	s.gather(c, b)
+	s.gather(c, b, step)
 	s.size()
 	s.scope.open(step)
 	near := s.look()
@@ -382,13 +416,23 @@ func (s *simulator) size() {
 				s.most[q] += s.reach.coarse[u*s.quantities+q] * m
 			}
 		}
-		if s.fine[u].present {
-			m := largest(s.fineSums[u])
+		if s.cells[u].Rows > 0 {
+			m := 0.
+			clear(s.cellMeans[u])
+			if s.fine[u].present {
+				m = largest(s.fineSums[u])
+				s.grid.means(s.cellMeans[u], s.fineSums[u])
+			}
+			for _, l := range s.lanes {
+				if l.stairs != nil && l.input == u {
+					m += l.stair.most()
+					s.grid.stairMeans(s.cellMeans[u], &l.stair)
+				}
+			}
 			s.inputMost[u] += m
 			for q := range s.most {
 				s.most[q] += s.reach.fine[u*s.quantities+q] * m
 			}
-			s.grid.means(s.cellMeans[u], s.fineSums[u])
 		}
 	}
 }
@@ -420,8 +464,8 @@ func (s *simulator) readFrom(dst []float64, q int, state []float64, sums, means 
 		if s.coarse[u].present {
 			bilinear.Apply(dst, rows(s.coarse[u].inspect, from, to), sums[u])
 		}
-		if s.fine[u].present {
-			bilinear.Apply(dst, rows(s.fine[u].inspect, from, to), means[u])
+		if s.cells[u].Rows > 0 {
+			bilinear.Apply(dst, rows(s.cells[u], from, to), means[u])
 		}
 	}
 }
@@ -432,8 +476,8 @@ func rows(m blas64.General, from, to int) blas64.General {
 	return m
 }
 
-// gather sums the lanes' values over a block by input, and their states.
-func (s *simulator) gather(c *chunk, b int) {
+// gather sums the lanes' values over a block, whose first step is given, by input, and their states.
+func (s *simulator) gather(c *chunk, b int, step int64) {
 	clear(s.linear)
 	for u := range s.inputs {
 		clear(s.sums[u])
@@ -442,6 +486,11 @@ func (s *simulator) gather(c *chunk, b int) {
 	for i, l := range s.lanes {
 		for k := range s.linear {
 			s.linear[k] += l.state[k]
+		}
+		if l.stairs != nil {
+			l.stairs.over(&l.stair, step, s.grid.steps)
+			l.stair.scaleBy(l.scale)
+			continue
 		}
 		sum := s.sums[l.input]
 		if l.fine {
@@ -601,11 +650,19 @@ func (s *simulator) advanceLanes(c *chunk, o *conversions, b int, stepped bool) 
 	for i, l := range s.lanes {
 		clear(l.next)
 		bilinear.Apply(l.next, s.advanceState, l.state[:states])
-		m := s.coarse[l.input]
-		if l.fine {
-			m = s.fine[l.input]
+		switch {
+		case l.stairs != nil:
+			m := s.stairs[l.input].advance
+			row := func(step int) []float64 { return m.Data[step*m.Stride : step*m.Stride+m.Cols] }
+			floats.AddScaled(l.next, l.stair.from, row(0))
+			for _, c := range l.stair.changes {
+				floats.AddScaled(l.next, c.by, row(c.step))
+			}
+		case l.fine:
+			bilinear.Apply(l.next, s.fine[l.input].advance, s.valuesOf(c, i, b))
+		default:
+			bilinear.Apply(l.next, s.coarse[l.input].advance, s.valuesOf(c, i, b))
 		}
-		bilinear.Apply(l.next, m.advance, s.valuesOf(c, i, b))
 		rows := o.parts[l.part]
 		for k := range s.grid.conversions {
 			r := l.next[states+k*(len(s.ports)+1):]
@@ -631,6 +688,11 @@ func (s *simulator) supplyAt(k int) float64 {
 	}
 	if sum := s.fineSums[circuit.SupplyInput]; sum != nil {
 		v += sum[(k+1)*s.grid.plan.Steps()-1]
+	}
+	for _, l := range s.lanes {
+		if l.stairs != nil && l.input == circuit.SupplyInput {
+			v += l.stair.at((k+1)*s.grid.plan.Steps() - 1)
+		}
 	}
 	return v
 }
