@@ -33,9 +33,11 @@ type simulator struct {
 	always  bool      // step every block
 
 	elements   []element
-	quantities int           // that are read at each instant: first the watched nodes
-	reach      quantityReach // how far a state and an input can take each
-	most       []float64     // how far each quantity can go in this block
+	quantities int            // that are read at each instant: first the watched nodes
+	reach      quantityReach  // how far a state and an input can take each
+	most       []float64      // how far each quantity can go in this block
+	smooth     blas64.General // to the quantities' values, from the state and the middles of what the inputs are given
+	middles    []float64
 
 	watch      []int // watched nodes
 	indexOf    map[int]int
@@ -55,9 +57,12 @@ type simulator struct {
 	sums, fineSums     [][]float64
 	cellMeans          [][]float64 // of each input with fine lanes or stairs
 	inputMost          []float64   // V or A, how large each input of u gets in the block
-	isRead             []bool      // of each quantity, in this block
-	looked, moved      []float64   // readings of a block: of the linear run, and by how much the limited one differs
-	change             []float64
+	// By how much what an input is given deviates in the block from its middle.
+	deviation     struct{ coarse, fine []float64 }
+	level         []float64
+	isRead        []bool    // of each quantity, in this block
+	looked, moved []float64 // readings of a block: of the linear run, and by how much the limited one differs
+	change        []float64
 
 	limited   *limiter // the limited run, in a block that is stepped
 	touched   bool     // whether it touched a limit there
@@ -132,8 +137,14 @@ func (e *excursion) see(v float64) {
 	}
 }
 
-// within tells whether something as large could lie beyond what was seen.
-func (e *excursion) within(most float64) bool { return most > e.highest || -most < e.lowest }
+// widens tells whether a quantity could go beyond what was seen of it.
+func (s *simulator) widens(e *excursion, q int) bool {
+	if s.most[q] <= e.highest && -s.most[q] >= e.lowest {
+		return false
+	}
+	low, high := s.between(q)
+	return low < e.lowest || high > e.highest
+}
 
 // conversions is what the circuit gives at the converter's instants over a chunk, in volts from rest. Each part has a
 // row for each of the simulator's ports.
@@ -309,6 +320,9 @@ func (s *simulator) lift(lanes []*lane) {
 	s.isRead, s.most = make([]bool, s.quantities), make([]float64, s.quantities)
 	s.reach.coarse, s.reach.fine = make([]float64, s.inputs*s.quantities), make([]float64, s.inputs*s.quantities)
 	s.reach.state = s.reachOf(s.inspectState, true)
+	s.smooth = s.smoothed()
+	s.middles, s.level = make([]float64, s.smooth.Cols), make([]float64, g.base)
+	s.deviation.coarse, s.deviation.fine = make([]float64, s.inputs), make([]float64, s.inputs)
 	for u := range s.inputs {
 		if s.coarse[u].present {
 			copy(s.reach.coarse[u*s.quantities:], s.reachOf(s.coarse[u].inspect, false))
@@ -318,6 +332,25 @@ func (s *simulator) lift(lanes []*lane) {
 			s.cellMeans[u] = make([]float64, g.base)
 		}
 	}
+}
+
+// smoothed returns the maps to the quantities' values at a block's instants with every input at rest: the columns are the
+// state, then for each input the sum of its coarse columns and that of its cells.
+func (s *simulator) smoothed() blas64.General {
+	m := s.inspectState
+	out := blas64.General{Rows: m.Rows, Cols: m.Cols + 2*s.inputs, Stride: m.Cols + 2*s.inputs, Data: make([]float64, m.Rows*(m.Cols+2*s.inputs))}
+	for r := range m.Rows {
+		row := out.Data[r*out.Stride : (r+1)*out.Stride]
+		copy(row, m.Data[r*m.Stride:r*m.Stride+m.Cols])
+		for u := range s.inputs {
+			for k, in := range [...]blas64.General{s.coarse[u].inspect, s.cells[u]} {
+				if in.Rows > 0 {
+					row[m.Cols+2*u+k] = floats.Sum(in.Data[r*in.Stride : r*in.Stride+in.Cols])
+				}
+			}
+		}
+	}
+	return out
 }
 
 // rises returns, for a matrix whose columns are a block's steps, a matrix with a row for each: what the columns from that
@@ -407,11 +440,14 @@ func (s *simulator) size() {
 		}
 		s.most[q] = sum
 	}
+	copy(s.middles, s.linear)
 	for u := range s.inputs {
 		s.inputMost[u] = 0
 		if s.coarse[u].present {
-			m := largest(s.sums[u])
+			low, high := ends(s.sums[u])
+			m := math.Max(high, -low)
 			s.inputMost[u] += m
+			s.middles[states+2*u], s.deviation.coarse[u] = (low+high)/2, (high-low)/2
 			for q := range s.most {
 				s.most[q] += s.reach.coarse[u*s.quantities+q] * m
 			}
@@ -420,7 +456,8 @@ func (s *simulator) size() {
 			m := 0.
 			clear(s.cellMeans[u])
 			if s.fine[u].present {
-				m = largest(s.fineSums[u])
+				low, high := ends(s.fineSums[u])
+				m = math.Max(high, -low)
 				s.grid.means(s.cellMeans[u], s.fineSums[u])
 			}
 			for _, l := range s.lanes {
@@ -430,11 +467,33 @@ func (s *simulator) size() {
 				}
 			}
 			s.inputMost[u] += m
+			low, high := ends(s.cellMeans[u])
+			s.middles[states+2*u+1], s.deviation.fine[u] = (low+high)/2, (high-low)/2
 			for q := range s.most {
 				s.most[q] += s.reach.fine[u*s.quantities+q] * m
 			}
 		}
 	}
+}
+
+// between bounds where a quantity goes at the block's instants more closely than most: it follows the state, and the middles
+// of what the inputs are given; only their deviations from there are bounded by their sizes. Both the linear and the
+// limited run lie between low and high.
+func (s *simulator) between(q int) (low, high float64) {
+	clear(s.level)
+	bilinear.Apply(s.level, rows(s.smooth, q*s.grid.base, (q+1)*s.grid.base), s.middles)
+	low, high = ends(s.level)
+	more := 0.
+	for u := range s.inputs {
+		more += s.reach.coarse[u*s.quantities+q]*s.deviation.coarse[u] + s.reach.fine[u*s.quantities+q]*s.deviation.fine[u]
+	}
+	if s.parted {
+		states := len(s.linear)
+		for k, a := range s.reach.state[q*states : (q+1)*states] {
+			more += a * math.Abs(s.difference[k])
+		}
+	}
+	return low - more, high + more
 }
 
 // read puts a quantity's values at the block's instants into looked, those of the linear run, and into moved, by how
@@ -536,6 +595,9 @@ func (s *simulator) passes(q int, low, high float64) bool {
 	if q < 0 || s.most[q]*margin < math.Min(high, -low) {
 		return false
 	}
+	if l, h := s.between(q); l*margin > low && h*margin < high {
+		return false
+	}
 	linear, moved := s.read(q)
 	for i, v := range linear {
 		if v = (v + moved[i]) * margin; v >= high || v <= low {
@@ -545,29 +607,30 @@ func (s *simulator) passes(q int, low, high float64) bool {
 	return false
 }
 
-// largest returns the largest magnitude.
-func largest(x []float64) float64 {
-	high, low := 0., 0.
+// ends returns the least and the largest value.
+func ends(x []float64) (low, high float64) {
+	low, high = x[0], x[0]
 	for _, v := range x {
 		if v > high {
 			high = v
-		} else if v < low {
+		}
+		if v < low {
 			low = v
 		}
 	}
-	return math.Max(high, -low)
+	return low, high
 }
 
 // passBlock takes the limited run through a block in which no limit is near: it differs from the linear run by what
 // is left of the difference.
 func (s *simulator) passBlock(o *conversions, first int, step int64) {
 	for k := range s.asked {
-		if q := s.elements[k].source; s.asked[k].within(s.most[q]) {
+		if s.widens(&s.asked[k], s.elements[k].source) {
 			s.peaks(k)
 		}
 	}
 	for k, q := range s.stageIndex {
-		if s.stages[k].within(s.most[q]) {
+		if s.widens(&s.stages[k], q) {
 			linear, moved := s.read(q)
 			for i, v := range linear {
 				s.stages[k].see(v + moved[i])
