@@ -64,19 +64,6 @@ func (g grid) fold(m blas64.General) blas64.General {
 	return out
 }
 
-// cells returns m, whose columns are a block's internal steps, for the means of the steps of each base sample: close
-// enough to look for limits.
-func (g grid) cells(m blas64.General) blas64.General {
-	out := blas64.General{Rows: m.Rows, Cols: g.base, Stride: g.base, Data: make([]float64, m.Rows*g.base)}
-	scale := 1 << g.plan.Doublings
-	for r := range m.Rows {
-		for j, v := range m.Data[r*m.Stride : r*m.Stride+g.steps] {
-			out.Data[r*out.Stride+j/scale] += v
-		}
-	}
-	return out
-}
-
 // means puts the means of the steps of each base sample into dst.
 func (g grid) means(dst, steps []float64) {
 	scale := 1 << g.plan.Doublings

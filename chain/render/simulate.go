@@ -3,6 +3,7 @@ package render
 import (
 	"math"
 
+	"gonum.org/v1/gonum/blas"
 	"gonum.org/v1/gonum/blas/blas64"
 	"gonum.org/v1/gonum/floats"
 
@@ -18,7 +19,7 @@ const (
 	// least four to a period of the tracks' highest frequency: 1/cos(π/4) is what may lie between them.
 	margin = 1.42
 	// blockBase is about how many base samples a block has.
-	blockBase = 12
+	blockBase = 24
 )
 
 // simulator takes the circuit through chunks, block by block. Each lane has the linear circuit to itself, as a map from
@@ -238,26 +239,16 @@ func (s *simulator) layReadings(top float64) {
 	s.quantities = at
 }
 
-// lift makes the maps.
+// lift makes the maps: those of a cell, the steps of one base sample, by lifting the circuit, and those of a block, which
+// is some cells, from them.
 func (s *simulator) lift(lanes []*lane) {
 	g := s.grid
 	scale := 1 << g.plan.Doublings
-	var advance []bilinear.Reading
-	for k := range g.conversions {
-		last := (k+1)*g.plan.Steps() - 1
-		for _, p := range s.ports {
-			advance = append(advance, bilinear.Reading{Step: last, Of: bilinear.Node, Item: p})
-		}
-		advance = append(advance, bilinear.Reading{Step: last - 1, Of: bilinear.Node, Item: s.ports[0]})
-	}
-	// A row of readings for each quantity: its values at the block's instants.
-	inspect := make([]bilinear.Reading, s.quantities*g.base)
+	// The quantities at a cell's last step, then the first port at the one before.
+	readings := make([]bilinear.Reading, s.quantities+1)
 	put := func(at int, of bilinear.Quantity, item int) {
-		if at < 0 {
-			return
-		}
-		for i := range g.base {
-			inspect[at*g.base+i] = bilinear.Reading{Step: (i+1)*scale - 1, Of: of, Item: item}
+		if at >= 0 {
+			readings[at] = bilinear.Reading{Step: scale - 1, Of: of, Item: item}
 		}
 	}
 	for w := range s.watch {
@@ -268,9 +259,12 @@ func (s *simulator) lift(lanes []*lane) {
 		put(e.slope, bilinear.Slope, k)
 		put(e.sense, bilinear.Sense, k)
 	}
+	readings[s.quantities] = bilinear.Reading{Step: scale - 2, Of: bilinear.Node, Item: s.ports[0]}
 	s.coarse, s.fine, s.stairs = make([]inputMaps, s.inputs), make([]inputMaps, s.inputs), make([]stairMaps, s.inputs)
 	s.cells = make([]blas64.General, s.inputs)
 	states := s.circuit.States()
+	cell := g
+	cell.base, cell.steps = 1, scale
 	for u := range s.inputs {
 		var coarse, fine, stairs bool
 		for _, l := range lanes {
@@ -283,20 +277,23 @@ func (s *simulator) lift(lanes []*lane) {
 		if !coarse && !fine && !stairs && u != circuit.SupplyInput {
 			continue
 		}
-		a, i := s.circuit.Lift(g.steps, u, advance), s.circuit.Lift(g.steps, u, inspect)
-		s.advanceState, s.inspectState = a.FromState, below(i.FromState, states)
-		ai, ii := a.FromInput, below(i.FromInput, states)
+		l := s.circuit.Lift(scale, u, readings)
+		if s.advanceState.Rows == 0 {
+			s.advanceState, s.inspectState = s.overBlockFromState(l.FromState)
+		}
 		if coarse {
-			s.coarse[u] = inputMaps{true, g.fold(ai), g.fold(ii)}
+			advance, inspect := s.overBlock(l.FromState, cell.fold(l.FromInput), 1)
+			s.coarse[u] = inputMaps{true, advance, inspect}
 		}
 		if fine || stairs {
-			s.cells[u] = g.cells(ii)
-		}
-		if fine {
-			s.fine[u] = inputMaps{present: true, advance: ai}
-		}
-		if stairs {
-			s.stairs[u] = stairMaps{true, rises(ai)}
+			_, s.cells[u] = s.overBlock(l.FromState, constant(l.FromInput), 1)
+			advance, _ := s.overBlock(l.FromState, l.FromInput, scale)
+			if fine {
+				s.fine[u] = inputMaps{present: true, advance: advance}
+			}
+			if stairs {
+				s.stairs[u] = stairMaps{true, rises(advance)}
+			}
 		}
 	}
 	for _, l := range lanes {
@@ -353,6 +350,80 @@ func (s *simulator) smoothed() blas64.General {
 	return out
 }
 
+// overBlockFromState returns the maps of a block from the state before it, by those of a cell: to the state after it and
+// the conversions, and to the quantities at each base sample.
+func (s *simulator) overBlockFromState(cell blas64.General) (advance, inspect blas64.General) {
+	states := s.circuit.States()
+	unit := blas64.General{Rows: cell.Rows, Cols: states, Stride: max(states, 1), Data: make([]float64, cell.Rows*max(states, 1))}
+	for i := range states {
+		unit.Data[i*unit.Stride+i] = 1
+	}
+	after := s.later(cell, unit, s.grid.base+1) // a cell later than the unit stands for the state before the first
+	return s.gatherRows(states, func(row, at int, add func(m blas64.General, row, column int)) {
+		add(after[at+1], row, 0)
+	})
+}
+
+// overBlock returns the maps of a block from what an input is given, by that of a cell from its state and that from some
+// columns; those of the next cell lie shift further.
+func (s *simulator) overBlock(cell, in blas64.General, shift int) (advance, inspect blas64.General) {
+	after := s.later(cell, in, s.grid.base)
+	return s.gatherRows(shift*(s.grid.base-1)+in.Cols, func(row, at int, add func(m blas64.General, row, column int)) {
+		for c := range at + 1 {
+			add(after[at-c], row, c*shift)
+		}
+	})
+}
+
+// later returns what the rows of a map of a cell are so many cells later, nothing more being added: the k-th of the list
+// after k cells.
+func (s *simulator) later(cell, m blas64.General, cells int) []blas64.General {
+	states := s.circuit.States()
+	list := []blas64.General{m}
+	for len(list) < cells {
+		next := blas64.General{Rows: m.Rows, Cols: m.Cols, Stride: m.Stride, Data: make([]float64, len(m.Data))}
+		if states > 0 && m.Cols > 0 {
+			blas64.Gemm(blas.NoTrans, blas.NoTrans, 1, cell, rows(list[len(list)-1], 0, states), 0, next)
+		}
+		list = append(list, next)
+	}
+	return list
+}
+
+// gatherRows makes the two maps of a block, of so many columns: put adds to a row what the given row of a cell's map is at
+// the end of the block's given cell.
+func (s *simulator) gatherRows(columns int, put func(row, cell int, add func(m blas64.General, row, column int))) (advance, inspect blas64.General) {
+	g := s.grid
+	states := s.circuit.States()
+	build := func(rows int, of func(r int) (row, cell int)) blas64.General {
+		out := blas64.General{Rows: rows, Cols: columns, Stride: max(columns, 1), Data: make([]float64, rows*max(columns, 1))}
+		for r := range rows {
+			row, cell := of(r)
+			dst := out.Data[r*out.Stride : (r+1)*out.Stride]
+			put(row, cell, func(m blas64.General, row, column int) {
+				for i, v := range m.Data[row*m.Stride : row*m.Stride+m.Cols] {
+					dst[column+i] += v
+				}
+			})
+		}
+		return out
+	}
+	each := len(s.ports) + 1
+	advance = build(states+g.conversions*each, func(r int) (row, cell int) {
+		if r < states {
+			return r, g.base - 1
+		}
+		k, p := (r-states)/each, (r-states)%each
+		row = states + s.quantities // the step before
+		if p < len(s.ports) {
+			row = states + s.ports[p]
+		}
+		return row, (k+1)*g.plan.Base - 1
+	})
+	inspect = build(s.quantities*g.base, func(r int) (row, cell int) { return states + r/g.base, r % g.base })
+	return advance, inspect
+}
+
 // rises returns, for a matrix whose columns are a block's steps, a matrix with a row for each: what the columns from that
 // step on add up to.
 func rises(m blas64.General) blas64.General {
@@ -365,12 +436,6 @@ func rises(m blas64.General) blas64.General {
 		}
 	}
 	return out
-}
-
-// below returns a matrix without its first rows.
-func below(m blas64.General, rows int) blas64.General {
-	m.Data, m.Rows = m.Data[rows*m.Stride:], m.Rows-rows
-	return m
 }
 
 // run takes the circuit through a chunk.
