@@ -6,6 +6,7 @@ import (
 	"errors"
 	"io"
 	"math"
+	"slices"
 	"strings"
 	"testing"
 	"time"
@@ -26,6 +27,7 @@ type flavour struct {
 	size       int64       // of the data as the header says; -1: as it is
 	cut        int         // bytes cut off the end
 	rf64       bool
+	long       uint64 // with rf64: what its ds64 chunk says; 0: the data's size
 }
 
 func (f flavour) file(rate, channels int, samples []float64) []byte {
@@ -73,7 +75,11 @@ func (f flavour) file(rate, channels int, samples []float64) []byte {
 		out = append(out, "ds64"...)
 		out = le.AppendUint32(out, 28)
 		out = le.AppendUint64(out, 0)
-		out = le.AppendUint64(out, uint64(len(data)))
+		long := f.long
+		if long == 0 {
+			long = uint64(len(data))
+		}
+		out = le.AppendUint64(out, long)
 		out = le.AppendUint64(out, uint64(len(data)/align))
 		out = le.AppendUint32(out, 0)
 		size = math.MaxUint32
@@ -134,6 +140,7 @@ func TestEveryFlavourReadsTheSame(t *testing.T) {
 		"odd chunk without pad": {tag: tagPCM, bits: 16, before: [][2]string{{"note", "abc"}}, noPad: true, size: -1},
 		"from a pipe":           {tag: tagPCM, bits: 16, size: math.MaxUint32},
 		"from a pipe, 0":        {tag: tagPCM, bits: 16, size: 0},
+		"from a pipe, 2 GiB":    {tag: tagPCM, bits: 16, size: 0x7ffff000},
 		"RF64":                  {tag: tagPCM, bits: 16, rf64: true},
 	} {
 		for _, channels := range []int{1, 2, 3, 12} {
@@ -159,10 +166,153 @@ func TestEveryFlavourReadsTheSame(t *testing.T) {
 }
 
 func TestCutFileIsUsedToItsEnd(t *testing.T) {
-	f, x, err := decode(t, flavour{tag: tagPCM, bits: 16, size: -1, cut: 5}.file(48000, 2, eighths))
-	if err != nil || len(x) != 8 || !strings.Contains(f.Note(), "4 of 6 frames") {
-		t.Errorf("%d samples, %v, note %q", len(x), err, f.Note())
+	for note, c := range map[string]flavour{
+		"4 of 6 frames":         {tag: tagPCM, bits: 16, size: -1, cut: 5},
+		"4 of 268435456 frames": {tag: tagPCM, bits: 16, rf64: true, long: 1 << 30, cut: 5},
+		"last frame":            {tag: tagPCM, bits: 16, size: math.MaxUint32, cut: 5},
+	} {
+		f, x, err := decode(t, c.file(48000, 2, eighths))
+		if err != nil || len(x) != 8 || !strings.Contains(f.Note(), note) {
+			t.Errorf("%d samples, %v, note %q, want %q", len(x), err, f.Note(), note)
+		}
 	}
+}
+
+// Every number of channels and every rate between the limits is read, and of one frame, too.
+func TestLimits(t *testing.T) {
+	for channels := 1; channels <= signals.MostChannels; channels++ {
+		for _, rate := range []int{4000, 9615, 44100, 768000} {
+			x := make([]float64, channels)
+			x[channels-1] = 0.5
+			for _, f := range []flavour{{tag: tagPCM, bits: 24, size: -1}, {tag: tagFloat, bits: 64, size: -1}} {
+				got, read, err := decode(t, f.file(rate, channels, x))
+				if err != nil || got.Rate() != float64(rate) || got.Channels() != channels || got.Frames() != 1 || !slices.Equal(read, x) {
+					t.Errorf("%d channels at %d Hz: %v, %v", channels, rate, read, err)
+				}
+			}
+		}
+	}
+	for _, c := range []struct{ rate, channels int }{{3999, 1}, {768001, 1}, {48000, 0}, {48000, 65}} {
+		_, _, err := decode(t, flavour{tag: tagPCM, bits: 16, size: -1}.file(c.rate, c.channels, make([]float64, c.channels)))
+		if fault, ok := errors.AsType[*signals.FormatError](err); !ok || !fault.Unsupported {
+			t.Errorf("%d channels at %d Hz: %v", c.channels, c.rate, err)
+		}
+	}
+}
+
+// A data chunk of 0 bytes in a file whose header was written at the end holds nothing, whatever follows it.
+func TestNothingIsNoPipe(t *testing.T) {
+	file := flavour{tag: tagPCM, bits: 16, size: -1}.file(48000, 1, nil)
+	file = append(file, "LIST\x04\x00\x00\x00INFO"...)
+	binary.LittleEndian.PutUint32(file[4:], uint32(len(file)-8))
+	if _, _, err := decode(t, file); err == nil || !strings.Contains(err.Error(), "not one frame") {
+		t.Errorf("%v", err)
+	}
+}
+
+// behind is a file of a beginning, zeros, and an end.
+type behind struct {
+	start, end []byte
+	size, at   int64
+}
+
+func (b *behind) Seek(offset int64, whence int) (int64, error) {
+	switch whence {
+	case io.SeekCurrent:
+		offset += b.at
+	case io.SeekEnd:
+		offset += b.size
+	}
+	b.at = offset
+	return offset, nil
+}
+
+func (b *behind) Read(p []byte) (int, error) {
+	if b.at >= b.size {
+		return 0, io.EOF
+	}
+	n := int(min(int64(len(p)), b.size-b.at))
+	clear(p[:n])
+	if b.at < int64(len(b.start)) {
+		copy(p[:n], b.start[b.at:])
+	}
+	if from := b.size - int64(len(b.end)); b.at+int64(n) > from {
+		for i := range p[:n] {
+			if k := b.at + int64(i) - from; k >= 0 {
+				p[i] = b.end[k]
+			}
+		}
+	}
+	b.at += int64(n)
+	return n, nil
+}
+
+// Files over 4 GiB are read to their last sample: RF64, and those that were written into a pipe.
+func TestOver4GiB(t *testing.T) {
+	const frames = 10 << 20 // of 512 bytes: 5 GiB
+	zeros := make([]float64, 64)
+	for name, f := range map[string]flavour{
+		"RF64":      {tag: tagFloat, bits: 64, rf64: true, long: frames * 512},
+		"pipe":      {tag: tagFloat, bits: 64, size: math.MaxUint32},
+		"RF64 pipe": {tag: tagFloat, bits: 64, rf64: true, long: math.MaxUint64},
+	} {
+		head := f.file(48000, 64, zeros)
+		head = head[:len(head)-512]
+		file := &behind{start: head, end: binary.LittleEndian.AppendUint64(nil, math.Float64bits(0.375)), size: int64(len(head)) + frames*512}
+		w, err := New("x.wav", file)
+		if err != nil || w.Frames() != frames || w.Channels() != 64 || (w.Note() == "") != (name == "RF64") {
+			t.Errorf("%s: %v, %v", name, w, err)
+			continue
+		}
+		// The frames in between are left out.
+		const last = 5
+		w.read = frames - last
+		if _, err := file.Seek(int64(len(head))+(frames-last)*512, io.SeekStart); err != nil {
+			t.Fatal(err)
+		}
+		x := make([]float64, 8*64)
+		n, err := w.ReadFrames(x)
+		if n != last || err != io.EOF || x[last*64-1] != 0.375 {
+			t.Errorf("%s: %d frames, %v, the last sample is %g", name, n, err, x[last*64-1])
+		}
+	}
+}
+
+// An error of reading is no fault of the file's.
+func TestErrorsPass(t *testing.T) {
+	good := flavour{tag: tagPCM, bits: 16, size: -1, before: [][2]string{{"JUNK", "12345"}}}.file(48000, 1, eighths)
+	broken := errors.New("broken")
+	junk := bytes.Index(good, []byte("12345"))
+	for at := range good {
+		if at >= junk && at <= junk+len("12345") {
+			continue // what is skipped, and its pad byte
+		}
+		w, err := New("x.wav", &breaking{bytes.NewReader(good), at, broken})
+		if err == nil {
+			_, err = w.ReadFrames(make([]float64, len(eighths)))
+		}
+		if !errors.Is(err, broken) {
+			t.Fatalf("broken at byte %d: %v", at, err)
+		}
+	}
+}
+
+// breaking fails to read a byte.
+type breaking struct {
+	*bytes.Reader
+	at  int
+	err error
+}
+
+func (b *breaking) Read(p []byte) (int, error) {
+	from := int(b.Size()) - b.Len()
+	if from > b.at {
+		return b.Reader.Read(p)
+	}
+	if from == b.at {
+		return 0, b.err
+	}
+	return b.Reader.Read(p[:min(len(p), b.at-from)])
 }
 
 func TestFaultsHaveTheirPlace(t *testing.T) {

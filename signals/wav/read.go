@@ -3,6 +3,7 @@ package wav
 import (
 	"bytes"
 	"encoding/binary"
+	"errors"
 	"fmt"
 	"io"
 	"math"
@@ -38,7 +39,7 @@ type File struct {
 	src    io.Reader // positioned in the data
 	format format
 	data   int64 // byte at which the data begins
-	frames int64 // in the file; −1: up to its end
+	frames int64 // in the file
 	read   int64 // frames
 	note   string
 
@@ -79,17 +80,10 @@ func open(name string, src io.ReadSeeker) (*File, error) {
 	if _, err := src.Seek(f.data, io.SeekStart); err != nil {
 		return nil, err
 	}
-	length := size - f.data
-	if f.frames >= 0 {
-		length = f.frames * int64(f.format.align)
-	} else {
-		f.frames = length / int64(f.format.align)
-		length = f.frames * int64(f.format.align)
-	}
 	if f.frames == 0 {
 		return nil, f.fault("data", f.data, "there is not one frame of sound in it", "record again")
 	}
-	f.src = io.LimitReader(src, length)
+	f.src = io.LimitReader(src, f.frames*int64(f.format.align))
 	return f, nil
 }
 
@@ -115,10 +109,10 @@ func (f *File) walk(src io.ReadSeeker, size int64) error {
 		return f.fault("", 0, "the file is empty", "record again")
 	}
 	if _, err := io.ReadFull(src, head[:]); err != nil {
-		return f.fault("", 0, "the file ends before its header does", "record again, or copy it again")
+		return short(err, f.fault("", 0, "the file ends before its header does", "record again, or copy it again"))
 	}
 	switch string(head[:4]) {
-	case "RIFF", "RF64":
+	case "RIFF", "RF64", "BW64":
 	case "RIFX":
 		return f.unsupported("", 0, "its bytes are in the other order (RIFX)", "convert it to RIFF")
 	default:
@@ -127,17 +121,19 @@ func (f *File) walk(src io.ReadSeeker, size int64) error {
 	if string(head[8:]) != "WAVE" {
 		return f.fault("", 8, fmt.Sprintf("it holds %q, not WAVE", printable(head[8:])), "is this a WAV file?")
 	}
-	long := int64(-1) // the data's size by a ds64 chunk
+	ended := int64(binary.LittleEndian.Uint32(head[4:]))+8 == size // the header was written when the sound had been
+	long := int64(0)                                               // the data's size by a ds64 chunk
 	for at := int64(12); ; {
 		var h [8]byte
 		if _, err := src.Seek(at, io.SeekStart); err != nil {
 			return err
 		}
 		if _, err := io.ReadFull(src, h[:]); err != nil {
+			missing := "data"
 			if f.format.align == 0 {
-				return f.fault("", at, "there is no fmt chunk", "record again, or copy it again")
+				missing = "fmt"
 			}
-			return f.fault("", at, "there is no data chunk", "record again, or copy it again")
+			return short(err, f.fault("", at, "there is no "+missing+" chunk", "record again, or copy it again"))
 		}
 		id, length := string(h[:4]), int64(binary.LittleEndian.Uint32(h[4:]))
 		body := at + 8
@@ -157,7 +153,11 @@ func (f *File) walk(src io.ReadSeeker, size int64) error {
 			if f.format.align == 0 {
 				return f.fault("data", at, "the sound comes before the fmt chunk", "convert the file")
 			}
-			return f.findData(at, body, length, size, long)
+			if length == math.MaxUint32 && long > 0 {
+				length, ended = long, true
+			}
+			f.findData(body, length, size, ended)
+			return nil
 		}
 		next := body + length
 		if length%2 != 0 && f.padded(src, next) {
@@ -167,18 +167,22 @@ func (f *File) walk(src io.ReadSeeker, size int64) error {
 	}
 }
 
-// padded tells whether a chunk of odd length is followed by its pad byte, as it should be: whether what lies behind
-// the pad byte looks more like a chunk than what lies before it.
+// short returns the fault where a file has ended, and otherwise the error of reading it.
+func short(err error, fault error) error {
+	if errors.Is(err, io.EOF) || errors.Is(err, io.ErrUnexpectedEOF) {
+		return fault
+	}
+	return err
+}
+
+// padded tells whether a chunk of odd length is followed by its pad byte, as it should be, or by the next chunk's name.
 func (f *File) padded(src io.ReadSeeker, at int64) bool {
-	var b [5]byte
+	var b [4]byte
 	if _, err := src.Seek(at, io.SeekStart); err != nil {
 		return true
 	}
 	n, _ := io.ReadFull(src, b[:])
-	if n < 4 {
-		return true
-	}
-	return b[0] == 0 || !isID(b[:4]) || n == 5 && isID(b[1:5]) && !isID(b[:4])
+	return n < len(b) || !isID(b[:])
 }
 
 // isID tells whether four bytes could be a chunk's name.
@@ -191,29 +195,29 @@ func isID(b []byte) bool {
 	return true
 }
 
-func (f *File) findData(at, body, length, size, long int64) error {
+// neverWritten is the least length that is taken for one written before the sound was, where the file does not hold as
+// much: programs that write into a pipe put 2³¹ less a block, or 2³² − 1.
+const neverWritten = 0x7ffff000
+
+// findData finds how much sound there is. The header says length bytes, ended that it was written after them.
+func (f *File) findData(body, length, size int64, ended bool) {
 	f.data = body
 	align := int64(f.format.align)
 	left := max(size-body, 0)
 	switch {
-	case length == math.MaxUint32 && long >= 0:
-		length = long
-	case length == math.MaxUint32, length == 0 && left > 0:
-		f.frames = -1
-		f.note = "the length of the sound was never written, as from a pipe; used to the end of the file"
+	case !ended && (length == 0 && left > 0 || length >= neverWritten && length > left || length == math.MaxUint32):
+		f.note = "the length of the sound was never written, as from a pipe, or the file is cut short; used to its end"
 		if left%align != 0 {
 			f.note += fmt.Sprintf(", but for %d bytes of a last frame", left%align)
 		}
-		return nil
-	}
-	if length > left {
+		length = left
+	case length > left:
 		f.note = fmt.Sprintf("the file is cut short: %d of %d frames are there, and used", left/align, length/align)
 		length = left
-	} else if length%align != 0 {
+	case length%align != 0:
 		f.note = fmt.Sprintf("the sound ends within a frame; its last %d bytes are left out", length%align)
 	}
 	f.frames = length / align
-	return nil
 }
 
 func printable(b []byte) string {
@@ -234,7 +238,7 @@ func (f *File) readFormat(src io.Reader, at, length int64) error {
 	}
 	b := make([]byte, min(length, 40))
 	if _, err := io.ReadFull(src, b); err != nil {
-		return f.fault("fmt ", at, "the file ends within it", "copy the file again")
+		return short(err, f.fault("fmt ", at, "the file ends within it", "copy the file again"))
 	}
 	le := binary.LittleEndian
 	x := format{tag: le.Uint16(b), channels: int(le.Uint16(b[2:])), rate: le.Uint32(b[4:]), align: int(le.Uint16(b[12:])), bits: int(le.Uint16(b[14:]))}
