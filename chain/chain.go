@@ -99,10 +99,11 @@ type Input struct {
 	Kind    InputKind
 	Channel int // 1 to 64; 0 is the mean of all channels ("mix"), also where not given
 	// FullScale is the RMS value that a full-scale sine (peaks at ±1.0) has at the input:
-	// volts, 1e-6 to 100, for a line, pascals, 0 to 174 dB SPL, for a microphone.
+	// volts, 1e-6 to 100, for a line, pascals, 0 to 174 dB SPL, for a microphone. 0: it is to be calibrated.
 	FullScale float64
 	// FullScaleUnit is the unit that the owner wrote it in: "Vrms", "dBu", "dBV", "dBSPL", …
 	FullScaleUnit string
+	Calibrate     *Calibrate // what FullScale is found from; nil: it is given
 
 	// line
 	SourceResistance float64 // Ω, 0 to 1e9; 0 where not given

@@ -17,7 +17,8 @@
 //
 // Values are in SI units: V, A, Ω, F, Hz, s, K, Pa. Levels are RMS values of a sine, whose peak is √2 times that; levels
 // in dBFS and limits in dB stay so. Voltages are against ground. Full scale of a recording is a sine with peaks at
-// ±1.0 (AES17), which the input's full_scale puts in volts or pascals; 0 dB SPL is 20 µPa (ISO 1683).
+// ±1.0 (AES17), which the input's full_scale puts in volts or pascals; 0 dB SPL is 20 µPa (ISO 1683). Calibrate finds it
+// in a recording of a tone of which a meter was read.
 // "Below the supply" and "above ground" are positive towards the middle.
 //
 // # The chain file
@@ -33,7 +34,8 @@
 //	[conditions]           temperature, noise_from; the table and both may be left out
 //	[bias.NAME]            top, bottom; may have bypass, buffer (an amplifier)
 //	[amplifier.NAME]       class; may have any figure of amplifier.Model
-//	[input.NAME]           kind, full_scale; may have channel; then
+//	[input.NAME]           kind, full_scale or calibrate = { reading, track, from, to }, of which from and to may be
+//	                       left out; may have channel; then
 //	    line               may have source_resistance
 //	    electret           sensitivity, rated_load, load, current; may have output_resistance, minimum_voltage,
 //	                       supply_filter = { r, c }, self_noise or snr

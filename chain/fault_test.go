@@ -158,13 +158,13 @@ func TestFaults(t *testing.T) {
 		// Keys.
 		{"a misspelled key", []string{`r_1 = "10k"`, "r_1 = \"10k\"\n§r1 = \"10k\""}, []string{`stage "filter" takes no "r1"; did you mean "r_1"?`}},
 		{"a misspelled table", []string{end, end + "\n[§limit]"}, []string{`the chain file takes no "limit"; did you mean "limits"?`}},
-		{"a key of another kind of input", []string{line, line + "\n§sensitivity = \"-42dBV/Pa\""}, []string{`input "aux" takes no "sensitivity"; the keys are kind, channel, full_scale, source_resistance`}},
-		{"keys that are not there yet", []string{
+		{"a key of another kind of input", []string{line, line + "\n§sensitivity = \"-42dBV/Pa\""}, []string{`input "aux" takes no "sensitivity"; the keys are kind, channel, full_scale, calibrate, source_resistance`}},
+		{"keys that there are none of", []string{
 			`title = "Test"`, "§clamp = 1",
-			line, line + "\n§calibrate = 1",
+			line, line + "\n§gain = 1",
 		}, []string{
 			`the chain file takes no "clamp"; the keys are title, notes, supply, conditions, tolerance, bias, amplifier, input, stage, converter, interferer, limits`,
-			`input "aux" takes no "calibrate"; the keys are kind, channel, full_scale, source_resistance`,
+			`input "aux" takes no "gain"; the keys are kind, channel, full_scale, calibrate, source_resistance`,
 		}},
 		{"a part that is a table without value", []string{`r_1 = "10k"`, `r_1 = §{ ref = "R1" }`}, []string{`r_1 has no value; add it`}},
 		{"a series that is none", []string{`r_1 = "10k"`, `r_1 = { value = "10k", series = §"E25" }`}, []string{`series: "E25" is no series of preferred values; choose E3, E6, E12, E24, E48, E96 or E192`}},
@@ -181,6 +181,18 @@ func TestFaults(t *testing.T) {
 		{"a channel that is none", []string{line, line + "\nchannel = §\"left\""}, []string{`channel: "left" is no channel; write 1, 2, … without quotes, or "mix"`}},
 		{"channel 0", []string{line, line + "\nchannel = §0"}, []string{`channel must be a number from 1 to 64; write it without quotes and unit`}},
 		{"a leg that is none", []string{`c_g = "10u"`, "c_g = \"10u\"\nleg = §\"earth\""}, []string{`leg must be one of "ground", "bias"; choose one`}},
+
+		// Calibration.
+		{"full_scale and calibrate", []string{line, "§" + line + "\ncalibrate = { reading = \"1Vrms\", track = \"cal.wav\" }"}, []string{`input "aux" has both full_scale and calibrate; keep one`}},
+		{"calibrate without its keys", []string{line, "calibrate = §§{ }"}, []string{`input "aux", calibrate has no track; add it`, `input "aux", calibrate has no reading; add it`}},
+		{"calibrate that is no table", []string{line, `calibrate = §"cal.wav"`}, []string{`calibrate must be a table, not a text; write it as [calibrate]`}},
+		{"calibrate with no recording", []string{line, `calibrate = { reading = "1Vrms", track = §"" }`}, []string{`track is "", no file; name the calibration recording, from the chain file's folder`}},
+		{"a reading in plain volts", []string{line, `calibrate = { reading = §"1V", track = "cal.wav" }`}, []string{`reading: "1V" is not a signal level: "V" is no unit of it; write it as "2Vrms"`}},
+		{"a reading of sound at a line", []string{line, `calibrate = { reading = §"94dBSPL", track = "cal.wav" }`}, []string{`reading: "94dBSPL" is not a signal level`}},
+		{"a reading of volts at a capsule", []string{capsule, `calibrate = { reading = §"20mVpp", track = "cal.wav" }`}, []string{`reading: "20mVpp" is not a sound level: "mVpp" is no unit of it; write it as "104dBSPL"`}},
+		{"a reading out of range", []string{line, `calibrate = { reading = §"1000Vpp", track = "cal.wav" }`}, []string{`reading = "1000Vpp" is out of range, 1 µV RMS to 100 V RMS; check the unit`}},
+		{"a stretch that ends before it begins", []string{line, `calibrate = { reading = "1Vrms", track = "cal.wav", from = "2s", to = §"2s" }`}, []string{`to is not after from; give a later one`}},
+		{"a stretch before the recording", []string{line, `calibrate = { reading = "1Vrms", track = "cal.wav", from = §"-1s", §till = 2 }`}, []string{`from = "-1s" is out of range, 0 s to`, `input "aux", calibrate takes no "till"; the keys are track, reading, from, to`}},
 		{"noise and snr", []string{capsule, capsule + "\nself_noise = \"30dBSPL\"\n§snr = \"60dB\""}, []string{`input "capsule" has both self_noise and snr; keep one`}},
 
 		// Parts that go together.
@@ -459,7 +471,7 @@ func sound(t interface {
 		}
 	}
 	for _, in := range c.Inputs {
-		if !(in.FullScale > 0) || in.Kind != chain.Line && !(in.Sensitivity > 0) || in.Kind == chain.Electret && !(in.RatedLoad > 0 && in.Current > 0) {
+		if !(in.FullScale > 0) != (in.Calibrate != nil) || in.Kind != chain.Line && !(in.Sensitivity > 0) || in.Kind == chain.Electret && !(in.RatedLoad > 0 && in.Current > 0) {
 			t.Errorf("input is %+v", in)
 		}
 	}

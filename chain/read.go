@@ -255,13 +255,7 @@ func (t *table) input(name string) Input {
 	in.Kind = InputKind(kind)
 	in.Channel = t.channel()
 	in.OutputResistance, in.MaximumLevel = math.Inf(1), math.Inf(1)
-	level, low, high := quantity.SoundLevel, pascals(0), pascals(174)
-	if in.Kind == Line {
-		level, low, high = quantity.Level, 1e-6, 100
-	}
-	if v, ok := t.quantity("full_scale", Must, level, low, high); ok {
-		in.FullScale, in.FullScaleUnit = v.SI, v.Unit
-	}
+	t.fullScale(&in)
 	if in.Kind != Line {
 		in.Sensitivity = t.si("sensitivity", Must, quantity.Sensitivity, 1e-6, 10, 0)
 		in.SelfNoise = t.selfNoise()
@@ -288,6 +282,43 @@ func (t *table) input(name string) Input {
 	t.done()
 	return in
 }
+
+// fullScale reads full_scale, or calibrate in its place.
+func (t *table) fullScale(in *Input) {
+	level, low, high := in.fullScaleRange()
+	need := Must
+	if t.has("calibrate") {
+		need = May
+	}
+	if v, ok := t.quantity("full_scale", need, level, low, high); ok {
+		in.FullScale, in.FullScaleUnit = v.SI, v.Unit
+	}
+	s := t.sub("calibrate", May)
+	if s == nil {
+		return
+	}
+	if e := t.get("full_scale"); e != nil {
+		t.fault(e.keyAt, t.name+" has both full_scale and calibrate", "keep one")
+	}
+	s.name = t.name + ", calibrate"
+	c := &Calibrate{Track: s.text("track", Must), To: math.Inf(1), Pos: s.node.at.pos}
+	if e := s.get("track"); e != nil && e.shape == textShape && (e.text == "" || e.text == "-") {
+		s.wrong(e, fmt.Sprintf("track is %q, no file", e.text), "name the calibration recording, from the chain file's folder")
+	}
+	if v, ok := s.quantity("reading", Must, level, low, high); ok {
+		c.Reading, in.FullScaleUnit = v.SI, v.Unit
+	}
+	c.From = s.si("from", May, quantity.Time, 0, mostTrackSeconds, 0)
+	c.To = s.si("to", May, quantity.Time, 0, mostTrackSeconds, c.To)
+	if c.To <= c.From {
+		s.wrong(s.get("to"), "to is not after from", "give a later one")
+	}
+	s.done()
+	in.Calibrate = c
+}
+
+// mostTrackSeconds is the latest time in a recording that can be named: that of a day.
+const mostTrackSeconds = 86400
 
 // channel reads "mix", which is 0 and what an absent one stands for, or a number from 1.
 func (t *table) channel() int {

@@ -10,6 +10,7 @@ import (
 	"testing"
 
 	"midrail/chain"
+	"midrail/signals/calibration"
 )
 
 // exact is how near a value read from decimal figures and a unit must lie to the one expected: some roundings of a
@@ -217,6 +218,36 @@ func TestEveryKeyIsRead(t *testing.T) {
 		"interference": {*l.Interference, -70}, "noise": {*l.Noise, -65}, "room": {*l.Room, 3}, "settling": {*l.Settling, 5}, "droop.at": {l.Droop.At, 3e3}, "droop.max": {l.Droop.Max, 1},
 	} {
 		near(t, name, pair[0], pair[1])
+	}
+}
+
+// A calibrated input has its full scale when the amplitude of its tone is known: the reading over it.
+func TestCalibrate(t *testing.T) {
+	text := readFile(t, "every-key.toml")
+	for _, one := range []struct{ given, calibrate string }{
+		{`full_scale = "+4dBu"`, `calibrate = { reading = "400mVpp", track = "cal.wav", from = "1s", to = 3 }`},
+		{`full_scale = "110dBSPL"`, `calibrate = { reading = "94dBSPL", track = "cal.wav" }`},
+	} {
+		if !strings.Contains(text, one.given) {
+			t.Fatalf("every-key.toml has no %s", one.given)
+		}
+		text = strings.Replace(text, one.given, one.calibrate, 1)
+	}
+	c := mustRead(t, text)
+	aux, module := c.InputNamed("aux"), c.InputNamed("module")
+	near(t, "aux reading", aux.Calibrate.Reading, 0.2/math.Sqrt2)
+	near(t, "module reading", module.Calibrate.Reading, 20e-6*math.Pow(10, 94./20))
+	if aux.Calibrate.Track != "cal.wav" || aux.Calibrate.From != 1 || aux.Calibrate.To != 3 || module.Calibrate.From != 0 || !math.IsInf(module.Calibrate.To, 1) || aux.FullScale != 0 || c.InputNamed("capsule").Calibrate != nil {
+		t.Errorf("%+v, %+v", aux.Calibrate, module.Calibrate)
+	}
+	if err := errors.Join(c.SetFullScale(aux, calibration.Tone{Amplitude: 0.25}), c.SetFullScale(module, calibration.Tone{Amplitude: 0.1})); err != nil {
+		t.Fatal(err)
+	}
+	near(t, "aux full_scale", aux.FullScale, 0.8/math.Sqrt2)
+	near(t, "module full_scale", module.FullScale, 20e-6*math.Pow(10, 114./20))
+	faults, ok := errors.AsType[chain.Faults](c.SetFullScale(aux, calibration.Tone{Amplitude: 1e6}))
+	if !ok || len(faults) != 1 || faults[0].Pos != aux.Calibrate.Pos || !strings.Contains(faults[0].Error(), `input "aux", calibrate: the full scale is out of range, 1 µV RMS to 100 V RMS: the tone is at 120.00 dBFS; check the reading`) {
+		t.Errorf("%v", faults)
 	}
 }
 

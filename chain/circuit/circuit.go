@@ -75,7 +75,8 @@ const SupplyInput = 0
 // SoundInput returns the index in u of the chain's i-th input.
 func SoundInput(i int) int { return 1 + i }
 
-// New builds the network of a chain, which is one that [chain.Read] returned.
+// New builds the network of a chain, which is one that [chain.Read] returned. It panics where an input has yet to be
+// calibrated.
 func New(c *chain.Chain) *Network {
 	w := &wiring{
 		Network: &Network{Chain: c, Nodes: []string{"ground"}},

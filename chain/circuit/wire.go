@@ -79,6 +79,9 @@ func (w *wiring) wireBiases() {
 func (w *wiring) wireInputs() {
 	for i := range w.Chain.Inputs {
 		in := &w.Chain.Inputs[i]
+		if in.FullScale == 0 {
+			panic("circuit: an input is not calibrated")
+		}
 		peak := in.FullScale * math.Sqrt2 // V or Pa of a sample of 1.0
 		var one Input
 		switch in.Kind {

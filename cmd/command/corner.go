@@ -174,6 +174,9 @@ func cornerOf(ctx context.Context, n *circuit.Network, text string, r recording,
 	if err != nil {
 		return nil, err
 	}
+	for i := range c.Inputs { // which the filter leaves alone
+		c.Inputs[i].FullScale = n.Chain.Inputs[i].FullScale
+	}
 	out.FullRun, err = fullRun(ctx, circuit.New(c), r)
 	return out, err
 }

@@ -405,7 +405,8 @@ func describe(n *circuit.Network, tracks *openedTracks, r *render.Result, res *r
 			Samples: r.Conversions, Saturated: r.Saturated, Rest: of(r.Rest),
 			PeakDBFS: of(res.Heard.Peak), RMSDBFS: of(res.Heard.RMS),
 		},
-		Assumptions: assumptions(c, budget),
+		Calibrations: calibrationsOf(c),
+		Assumptions:  assumptions(c, budget),
 	}
 	run.Overload.Events = int(r.EventCount)
 	for i := range c.Stages {
@@ -519,6 +520,11 @@ func assumptions(c *chain.Chain, budget *noise.Budget) []string {
 		if class := a.Model.Class; class != "ideal" && !seen[class] {
 			seen[class] = true
 			list = append(list, fmt.Sprintf("amplifier class %q: typical figures from memory where the chain file gives none; check the datasheet's worst case", class))
+		}
+	}
+	for i := range c.Inputs {
+		if in := &c.Inputs[i]; in.Calibrate != nil {
+			list = append(list, "calibrated: "+calibrationWords(in))
 		}
 	}
 	for i := range c.Inputs {

@@ -14,8 +14,8 @@ import (
 // mostChain is the largest chain file that is read.
 const mostChain = 1 << 20
 
-// open reads a chain file, or the demo's for an empty path, with the values of set changed, prints its warnings and
-// builds its network. A network that has no rest point, or runs away from it, is a fault.
+// open reads a chain file, or the demo's for an empty path, with the values of set changed, prints its warnings,
+// calibrates its inputs and builds its network. A network that has no rest point, or runs away from it, is a fault.
 func (s streams) open(path string, set []string) (*circuit.Network, error) {
 	name, data := demoName, demoChain
 	if path != "" {
@@ -35,6 +35,9 @@ func (s streams) open(path string, set []string) (*circuit.Network, error) {
 	}
 	for _, w := range c.Warnings {
 		fmt.Fprintln(s.err, "warning:", w)
+	}
+	if err := s.calibrate(c); err != nil {
+		return nil, err
 	}
 	n := circuit.New(c)
 	if err := stable(n); err != nil {

@@ -36,7 +36,7 @@ has peaks far above its RMS: keep it at -15 or below. It does not overwrite a fi
 			if !(rate >= 4000 && rate <= 768000) || !(seconds > 0 && seconds <= 86400) || !(level <= 0 && level >= -200) {
 				return usageError{errors.New("want a rate of 4000 to 768000 Hz, up to 86400 seconds, a level of 0 to -200 dBFS")}
 			}
-			if !(from > 0 && from < rate/2) || !(to > 0 && to < rate/2) || !(on > 0) {
+			if !(from > 0 && from < rate/2) || args[0] == "sweep" && !(to > 0 && to < rate/2) || !(on > 0) {
 				return usageError{fmt.Errorf("frequencies must lie between 0 and half the rate, %g Hz, and --on above 0", rate/2)}
 			}
 			var t signals.Track

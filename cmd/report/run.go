@@ -17,18 +17,19 @@ type Run struct {
 	Layers    []Layer   `json:"layers"` // in the order they are to be shown; rest aside
 	// Events are the overloads in order of time: all, or the largest where there are too many to
 	// keep (Overload.Events counts them all).
-	Events      []Event     `json:"events"`
-	Waveforms   []Waveform  `json:"waveforms"` // the overloads whose waveforms the page shows, the largest first
-	Noise       Budget      `json:"noise"`     // at the converter's input, folding included
-	Rest        Rest        `json:"rest"`
-	Margins     []Margin    `json:"margins"` // of every amplifier's loop
-	SupplyPaths SupplyPaths `json:"supply_paths"`
-	Parts       []Part      `json:"parts"` // in the order of the chain file
-	Listen      *Listen     `json:"listen,omitempty"`
-	Limits      []Limit     `json:"limits"`
-	Findings    []Finding   `json:"findings"` // the weightiest first
-	Assumptions []string    `json:"assumptions"`
-	Answers     []Answer    `json:"answers"`
+	Events       []Event       `json:"events"`
+	Waveforms    []Waveform    `json:"waveforms"` // the overloads whose waveforms the page shows, the largest first
+	Noise        Budget        `json:"noise"`     // at the converter's input, folding included
+	Rest         Rest          `json:"rest"`
+	Margins      []Margin      `json:"margins"` // of every amplifier's loop
+	SupplyPaths  SupplyPaths   `json:"supply_paths"`
+	Parts        []Part        `json:"parts"` // in the order of the chain file
+	Listen       *Listen       `json:"listen,omitempty"`
+	Limits       []Limit       `json:"limits"`
+	Findings     []Finding     `json:"findings"`               // the weightiest first
+	Calibrations []Calibration `json:"calibrations,omitempty"` // of the inputs whose full scale was found in a recording
+	Assumptions  []string      `json:"assumptions"`
+	Answers      []Answer      `json:"answers"`
 }
 
 // Answer is what a command that needs no recording prints of the chain; its figures in full precision are that command's
@@ -36,6 +37,20 @@ type Run struct {
 type Answer struct {
 	Title string   `json:"title"`
 	Lines []string `json:"lines"`
+}
+
+// Calibration is how the full scale of an input was found: the reading of a meter is the tone's.
+type Calibration struct {
+	Input       string `json:"input"`
+	Track       string `json:"track"` // the calibration recording, as the chain file names it
+	FromS       Number `json:"from_s"`
+	ToS         Number `json:"to_s"`
+	FrequencyHz Number `json:"frequency_hz"`
+	LevelDBFS   Number `json:"level_dbfs"`
+	Residual    Number `json:"residual"`   // RMS of all but the tone and DC against the tone's, 0 to 1
+	Reading     Number `json:"reading"`    // RMS, in Unit
+	FullScale   Number `json:"full_scale"` // RMS of a full-scale sine, in Unit
+	Unit        string `json:"unit"`       // "V" or "Pa"
 }
 
 // Tool names the program that made the result.
