@@ -5,6 +5,8 @@ import (
 	"io"
 	"math"
 
+	"gonum.org/v1/gonum/floats"
+
 	"midrail/chain/circuit"
 	"midrail/signals"
 	"midrail/signals/resample"
@@ -29,12 +31,15 @@ const (
 	inBandPart    // interference below half the converter's rate
 	outOfBandPart // and above
 	parts
+	none // of them
 )
 
 // lane is one way of sound into the network: the part of a track or of an interferer that goes into one input, at the
-// base rate or, where that is too coarse for it, at the internal rate.
+// base rate or, where that is too coarse for it, at the internal rate. What a lane holds below half the converter's rate
+// is a lane again, which adds to one part what it takes from another, and nothing to the sum.
 type lane struct {
 	part   part
+	from   part // that the same is taken from, or none
 	input  int     // of the network's u
 	fine   bool    // at the internal rate
 	scale  float64 // V or A of u for 1 of the lane's values
@@ -100,29 +105,30 @@ func newFeeder(n *circuit.Network, feeds []Feed, g grid, first int64, seed uint6
 		}
 		c := &counter{Stream: one.Sound, rate: one.Rate}
 		f.tracks = append(f.tracks, c)
-		add := func(p part, s signals.Stream, from int64) {
-			in := resample.New(s, one.Rate, base, from, start, preRing)
+		add := func(p, from part, s signals.Stream, top float64, first int64) {
+			in := resample.New(s, one.Rate, base, top, first, start, preRing)
 			f.lanes = append(f.lanes, &lane{
-				part: p, input: circuit.SoundInput(i), scale: n.Inputs[i].Scale, next: start,
+				part: p, from: from, input: circuit.SoundInput(i), scale: n.Inputs[i].Scale, next: start,
 				fill: func(dst []float64, _ int64) error { return readAll(in, dst) },
 			})
 		}
-		half := resample.NewSplit(nil, one.Rate, n.Chain.Converter.Rate/2, 0).HalfLength()
+		edge := n.Chain.Converter.Rate / 2
+		half := resample.NewSplit(nil, one.Rate, edge, 0).HalfLength()
 		if half == 0 {
-			add(wantedPart, c, 0)
+			add(wantedPart, none, c, resample.PassBand, 0)
 			continue
 		}
-		both := &tee{split: resample.NewSplit(c, one.Rate, n.Chain.Converter.Rate/2, half)}
-		add(wantedPart, both.side(0), -int64(half))
-		add(foldBackPart, both.side(1), -int64(half))
+		both := &tee{split: resample.NewSplit(c, one.Rate, edge, half)}
+		add(foldBackPart, none, both.side(0), resample.PassBand, -int64(half))
+		add(wantedPart, foldBackPart, both.side(1), resample.SplitTop(one.Rate, edge), -int64(half))
 	}
 	fineStart := first*int64(g.plan.Steps()) + 1
 	for _, x := range newInterferers(n, g.plan, seed) {
 		if x.stairs != nil {
-			f.lanes = append(f.lanes, &lane{part: x.part, input: x.input, scale: x.scale, stairs: x.stairs})
+			f.lanes = append(f.lanes, &lane{part: x.part, from: none, input: x.input, scale: x.scale, stairs: x.stairs})
 			continue
 		}
-		l := &lane{part: x.part, input: x.input, fine: x.fine, scale: x.scale, next: start, fill: func(dst []float64, first int64) error {
+		l := &lane{part: x.part, from: x.from, input: x.input, fine: x.fine, scale: x.scale, next: start, fill: func(dst []float64, first int64) error {
 			clear(dst)
 			x.signal.add(dst, first)
 			return nil
@@ -217,7 +223,7 @@ func readAll(s signals.Stream, dst []float64) error {
 	return nil
 }
 
-// tee gives the two sides of a split as two streams that are read in turns.
+// tee gives all of a split's stream, and what lies below, as two streams that are read in turns.
 type tee struct {
 	split   *resample.Split
 	pending [2][]float64
@@ -255,8 +261,9 @@ func (t *tee) more(values int) {
 		}
 		t.pending[i], room[i] = p, p[len(p):len(p)+values]
 	}
-	n, err := t.split.Read(room[0], room[1])
+	n, err := t.split.Read(room[1], room[0])
 	t.err = err
+	floats.Add(room[0][:n], room[1][:n])
 	for i, p := range t.pending {
 		t.pending[i] = p[:len(p)+n]
 	}

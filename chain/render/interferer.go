@@ -13,6 +13,7 @@ import (
 // interferer is one part of the interferers on its way into one input of the network.
 type interferer struct {
 	part   part
+	from   part    // as of a lane
 	input  int     // of the network's u
 	scale  float64 // volts or amperes of u for one unit of the interferer
 	fine   bool    // made at the internal rate
@@ -54,17 +55,17 @@ func newInterferers(n *circuit.Network, plan Plan, seed uint64) []*interferer {
 				one.scale = n.Inputs[k].Scale / (in.FullScale * math.Sqrt2)
 			}
 		}
-		add := func(p part, fine bool, g generator) {
+		add := func(p, from part, fine bool, g generator) {
 			if g == nil {
 				return
 			}
 			for _, other := range all { // that go the same way
-				if other.stairs == nil && other.part == p && other.input == one.input && other.fine == fine {
+				if other.stairs == nil && other.part == p && other.from == from && other.input == one.input && other.fine == fine {
 					other.signal = append(other.signal.(generators), g)
 					return
 				}
 			}
-			all = append(all, &interferer{part: p, input: one.input, scale: one.scale, fine: fine, signal: generators{g}})
+			all = append(all, &interferer{part: p, from: from, input: one.input, scale: one.scale, fine: fine, signal: generators{g}})
 		}
 		tone := func(f, level float64) (g generator, fine bool) {
 			if f <= baseTone*plan.To {
@@ -78,32 +79,30 @@ func newInterferers(n *circuit.Network, plan Plan, seed uint64) []*interferer {
 			all = append(all, &interferer{part: outOfBandPart, input: one.input, scale: one.scale, stairs: square{level: x.Level, cycles: x.Frequency / plan.Rate}})
 			for k := 1; float64(k)*x.Frequency < half; k += 2 {
 				g, fine := tone(float64(k)*x.Frequency, 4/math.Pi/float64(k)*x.Level)
-				add(inBandPart, fine, g)
-				add(outOfBandPart, fine, negative{g})
+				add(inBandPart, outOfBandPart, fine, g)
 			}
 		case "saw":
 			// Rising, from −1 at half a period; its harmonics alternate: 2/π·Σ (−1)^(k+1)/k·sin.
-			add(outOfBandPart, true, saw{level: x.Level, cycles: x.Frequency / plan.Rate})
+			add(outOfBandPart, none, true, saw{level: x.Level, cycles: x.Frequency / plan.Rate})
 			for k := 1; float64(k)*x.Frequency < half; k++ {
 				level := 2 / math.Pi / float64(k) * x.Level
 				if k%2 == 0 {
 					level = -level
 				}
 				g, fine := tone(float64(k)*x.Frequency, level)
-				add(inBandPart, fine, g)
-				add(outOfBandPart, fine, negative{g})
+				add(inBandPart, outOfBandPart, fine, g)
 			}
 		case "noise":
 			inBand, folded := splitNoise(x, plan.Rate, half, seed, uint64(i))
-			add(inBandPart, true, inBand)
-			add(outOfBandPart, true, folded)
+			add(inBandPart, none, true, inBand)
+			add(outOfBandPart, none, true, folded)
 		default:
 			g, fine := tone(x.Frequency, x.Level)
 			p := inBandPart
 			if x.Frequency >= half {
 				p = outOfBandPart
 			}
-			add(p, fine, g)
+			add(p, none, fine, g)
 		}
 	}
 	return all
@@ -133,19 +132,6 @@ func (s sine) add(dst []float64, first int64) {
 			dst[at-first] += imag(now)
 		}
 		now *= turn
-	}
-}
-
-// negative takes a generator away.
-type negative struct{ generator }
-
-func (n negative) add(dst []float64, first int64) {
-	for i := range dst {
-		dst[i] = -dst[i]
-	}
-	n.generator.add(dst, first)
-	for i := range dst {
-		dst[i] = -dst[i]
 	}
 }
 

@@ -67,10 +67,10 @@ func newHolder(s *simulator, steps int, windows bool) *holder {
 			}
 			continue
 		}
-		if s.coarse[u].present {
+		if s.sums[u] != nil {
 			h.columns += 1 + 2*s.grid.reach
 		}
-		if s.fine[u].present {
+		if s.fineSums[u] != nil {
 			h.columns += steps
 		}
 		if s.stairs[u].present {
@@ -82,7 +82,7 @@ func newHolder(s *simulator, steps int, windows bool) *holder {
 
 // driven tells whether anything goes into an input.
 func (s *simulator) driven(u int) bool {
-	return s.coarse[u].present || s.fine[u].present || s.stairs[u].present
+	return s.sums[u] != nil || s.fineSums[u] != nil || s.stairs[u].present
 }
 
 // of returns the stretch with the elements on the pieces that the last step ended on.
@@ -105,8 +105,8 @@ func (h *holder) of(s *simulator) *heldRun {
 // is as fast as its steps allow, of each two.
 func (h *holder) looks(s *simulator) []int {
 	parts := 4
-	for _, in := range s.fine {
-		if in.present {
+	for _, in := range s.fineSums {
+		if in != nil {
 			parts = max(parts, h.steps/2)
 		}
 	}
@@ -159,10 +159,10 @@ func (h *holder) build(s *simulator) *heldRun {
 			}
 			continue
 		}
-		if s.coarse[u].present {
+		if s.sums[u] != nil {
 			put(s.limited.cell.fold(held.FromInput[u]))
 		}
-		if s.fine[u].present {
+		if s.fineSums[u] != nil {
 			put(held.FromInput[u])
 		}
 		if s.stairs[u].present {
@@ -263,10 +263,10 @@ func (b *limitedBlock) take(h *holder, from int) bool {
 			}
 			continue
 		}
-		if s.coarse[u].present {
+		if s.sums[u] != nil {
 			at += copy(x[at:], s.sums[u][cell:cell+l.cell.window()])
 		}
-		if s.fine[u].present {
+		if s.fineSums[u] != nil {
 			at += copy(x[at:], s.fineSums[u][from:from+h.steps])
 		}
 		if s.stairs[u].present {
@@ -316,10 +316,10 @@ func (b *limitedBlock) prepare(from int) {
 	cell := from / l.cell.steps
 	for u, dst := range s.steps {
 		clear(dst)
-		if s.coarse[u].present {
+		if s.sums[u] != nil {
 			l.cell.refine(dst, s.sums[u][cell:cell+l.cell.window()])
 		}
-		if s.fine[u].present {
+		if s.fineSums[u] != nil {
 			for j, v := range s.fineSums[u][from : from+l.cell.steps] {
 				dst[j] += v
 			}
@@ -409,8 +409,8 @@ func (s *simulator) compare(o *conversions, first int) {
 	}
 	s.circuit.Pack(s.difference, s.limited.state)
 	for _, l := range s.lanes {
-		for i := range s.difference {
-			s.difference[i] -= l.state[i]
+		if l.from == none {
+			floats.Sub(s.difference, l.state[:len(s.difference)])
 		}
 	}
 	s.settleDifference()

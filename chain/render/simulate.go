@@ -262,16 +262,24 @@ func (s *simulator) lift(lanes []*lane) {
 	readings[s.quantities] = bilinear.Reading{Step: scale - 2, Of: bilinear.Node, Item: s.ports[0]}
 	s.coarse, s.fine, s.stairs = make([]inputMaps, s.inputs), make([]inputMaps, s.inputs), make([]stairMaps, s.inputs)
 	s.cells = make([]blas64.General, s.inputs)
+	s.sums, s.fineSums = make([][]float64, s.inputs), make([][]float64, s.inputs)
 	states := s.circuit.States()
 	cell := g
 	cell.base, cell.steps = 1, scale
 	for u := range s.inputs {
 		var coarse, fine, stairs bool
 		for _, l := range lanes {
-			if l.input == u {
-				stairs = stairs || l.stairs != nil
-				fine = fine || l.fine
-				coarse = coarse || l.stairs == nil && !l.fine
+			if l.input != u {
+				continue
+			}
+			stairs = stairs || l.stairs != nil
+			fine = fine || l.fine
+			coarse = coarse || l.stairs == nil && !l.fine
+			if l.from == none && l.stairs == nil && !l.fine {
+				s.sums[u] = make([]float64, g.window())
+			}
+			if l.from == none && l.fine {
+				s.fineSums[u] = make([]float64, g.steps)
 			}
 		}
 		if !coarse && !fine && !stairs && u != circuit.SupplyInput {
@@ -286,7 +294,9 @@ func (s *simulator) lift(lanes []*lane) {
 			s.coarse[u] = inputMaps{true, advance, inspect}
 		}
 		if fine || stairs {
-			_, s.cells[u] = s.overBlock(l.FromState, constant(l.FromInput), 1)
+			if stairs || s.fineSums[u] != nil {
+				_, s.cells[u] = s.overBlock(l.FromState, constant(l.FromInput), 1)
+			}
 			advance, _ := s.overBlock(l.FromState, l.FromInput, scale)
 			if fine {
 				s.fine[u] = inputMaps{present: true, advance: advance}
@@ -303,15 +313,9 @@ func (s *simulator) lift(lanes []*lane) {
 	s.linear, s.difference = make([]float64, states), make([]float64, states)
 	s.change = make([]float64, s.advanceState.Rows)
 	s.looked, s.moved = make([]float64, s.inspectState.Rows), make([]float64, s.inspectState.Rows)
-	s.sums, s.fineSums, s.steps = make([][]float64, s.inputs), make([][]float64, s.inputs), make([][]float64, s.inputs)
+	s.steps = make([][]float64, s.inputs)
 	for u := range s.inputs {
 		s.steps[u] = make([]float64, scale)
-		if s.coarse[u].present {
-			s.sums[u] = make([]float64, g.window())
-		}
-		if s.fine[u].present {
-			s.fineSums[u] = make([]float64, g.steps)
-		}
 	}
 	s.cellMeans, s.inputMost = make([][]float64, s.inputs), make([]float64, s.inputs)
 	s.isRead, s.most = make([]bool, s.quantities), make([]float64, s.quantities)
@@ -508,7 +512,7 @@ func (s *simulator) size() {
 	copy(s.middles, s.linear)
 	for u := range s.inputs {
 		s.inputMost[u] = 0
-		if s.coarse[u].present {
+		if s.sums[u] != nil {
 			low, high := ends(s.sums[u])
 			m := math.Max(high, -low)
 			s.inputMost[u] += m
@@ -520,7 +524,7 @@ func (s *simulator) size() {
 		if s.cells[u].Rows > 0 {
 			m := 0.
 			clear(s.cellMeans[u])
-			if s.fine[u].present {
+			if s.fineSums[u] != nil {
 				low, high := ends(s.fineSums[u])
 				m = math.Max(high, -low)
 				s.grid.means(s.cellMeans[u], s.fineSums[u])
@@ -585,7 +589,7 @@ func (s *simulator) readFrom(dst []float64, q int, state []float64, sums, means 
 	from, to := q*s.grid.base, (q+1)*s.grid.base
 	bilinear.Apply(dst, rows(s.inspectState, from, to), state)
 	for u := range s.inputs {
-		if s.coarse[u].present {
+		if len(sums[u]) > 0 {
 			bilinear.Apply(dst, rows(s.coarse[u].inspect, from, to), sums[u])
 		}
 		if s.cells[u].Rows > 0 {
@@ -600,7 +604,7 @@ func rows(m blas64.General, from, to int) blas64.General {
 	return m
 }
 
-// gather sums the lanes' values over a block, whose first step is given, by input, and their states.
+// gather sums what the lanes add: their values over a block, whose first step is given, by input, and their states.
 func (s *simulator) gather(c *chunk, b int, step int64) {
 	clear(s.linear)
 	for u := range s.inputs {
@@ -608,6 +612,9 @@ func (s *simulator) gather(c *chunk, b int, step int64) {
 		clear(s.fineSums[u])
 	}
 	for i, l := range s.lanes {
+		if l.from != none {
+			continue
+		}
 		for k := range s.linear {
 			s.linear[k] += l.state[k]
 		}
@@ -791,13 +798,19 @@ func (s *simulator) advanceLanes(c *chunk, o *conversions, b int, stepped bool) 
 		default:
 			bilinear.Apply(l.next, s.coarse[l.input].advance, s.valuesOf(c, i, b))
 		}
-		rows := o.parts[l.part]
+		rows, from := o.parts[l.part], [][]float64(nil)
+		if l.from != none {
+			from = o.parts[l.from]
+		}
 		for k := range s.grid.conversions {
 			r := l.next[states+k*(len(s.ports)+1):]
 			for p := range s.ports {
 				rows[p][first+k] += r[p]
+				if from != nil {
+					from[p][first+k] -= r[p]
+				}
 			}
-			if !stepped {
+			if !stepped && from == nil {
 				o.slope[first+k] += (r[0] - r[len(s.ports)]) * s.grid.plan.Rate
 			}
 		}

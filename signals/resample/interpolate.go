@@ -39,11 +39,12 @@ type Interpolator struct {
 // stage is one step of the interpolation: fill puts the next values into dst, zeros without end after the source's.
 type stage interface{ fill(dst []float64) error }
 
-// New interpolates src: its sample j is at time (srcFirst+j)/from; value k read is the sound at time (first+k)/to.
+// New interpolates src: its sample j is at time (srcFirst+j)/from; value k read is the sound at time (first+k)/to. The
+// source holds nothing above top of its rate; from [PassBand] on it may hold anything.
 // Around the source's samples are zeros. Values come up to, but not at, the time (srcFirst+N+tail)/from, N being the
 // source's length. Rates are in Hz, to at least 2·from; first must not lie behind the source's first sample. It panics
 // where they are otherwise.
-func New(src signals.Stream, from, to float64, srcFirst, first, tail int64) *Interpolator {
+func New(src signals.Stream, from, to, top float64, srcFirst, first, tail int64) *Interpolator {
 	if !(to >= 2*from) {
 		panic("resample: an interpolator must at least double the rate")
 	}
@@ -61,10 +62,14 @@ func New(src signals.Stream, from, to float64, srcFirst, first, tail int64) *Int
 	}
 	var shift *sincStage
 	if base != 2*from {
-		shift = newSincStage(2*from, base, (1-PassBand)/2, start)
+		images := (1 - PassBand) / 2
+		if top < PassBand {
+			images = top / 2
+		}
+		shift = newSincStage(2*from, base, images, start)
 		start = shift.origin
 	}
-	double := newSincStage(from, 2*from, PassBand, start)
+	double := newSincStage(from, 2*from, math.Min(top, PassBand), start)
 	if double.origin > srcFirst {
 		panic("resample: interpolation begins behind the source's first sample")
 	}
@@ -148,6 +153,9 @@ type sincStage struct {
 func newSincStage(from, to, top float64, first int64) *sincStage {
 	s := &sincStage{ratio: from / to, next: first}
 	s.reach = (taps(interpolatorStop, 2*math.Pi*(1-2*top)) + 1) / 2
+	if top < 0.25 { // for so wide a transition Kaiser's formula is short
+		s.reach++
+	}
 	s.num, s.den = fraction(s.ratio)
 	phases := tablePhases
 	if s.den > 0 {

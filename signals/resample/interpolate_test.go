@@ -58,10 +58,26 @@ func TestTones(t *testing.T) {
 		for _, fraction := range fractions {
 			f := fraction*from/2 + 0.37
 			tone := func(time float64) float64 { return math.Sin(2*math.Pi*f*time + 1) }
-			y := all(t, New(samples(n, func(j int) float64 { return tone(float64(j) / from) }), from, to, 0, 0, 0))
+			y := all(t, New(samples(n, func(j int) float64 { return tone(float64(j) / from) }), from, to, PassBand, 0, 0, 0))
 			for k := int(150 * to / from); k < int(250*to/from); k++ {
 				if d := math.Abs(y[k] - tone(float64(k)/to)); !(d <= inaudible) {
 					t.Fatalf("%g of half the rate: value %d is off by %g", fraction, k, d)
+				}
+			}
+		}
+	})
+}
+
+// A source that ends far below half its rate needs less of a filter for the same.
+func TestTonesOfANarrowSource(t *testing.T) {
+	forRatios(t, func(t *testing.T, from, to float64) {
+		const n, top = 400, 0.1
+		for _, share := range []float64{0.01, 0.05, 0.099} {
+			tone := func(time float64) float64 { return math.Sin(2*math.Pi*share*from*time + 1) }
+			y := all(t, New(samples(n, func(j int) float64 { return tone(float64(j) / from) }), from, to, top, 0, 0, 0))
+			for k := int(150 * to / from); k < int(250*to/from); k++ {
+				if d := math.Abs(y[k] - tone(float64(k)/to)); !(d <= inaudible) {
+					t.Fatalf("%g of the rate: value %d is off by %g", share, k, d)
 				}
 			}
 		}
@@ -73,8 +89,8 @@ func TestTones(t *testing.T) {
 func TestEnds(t *testing.T) {
 	forRatios(t, func(t *testing.T, from, to float64) {
 		const n = 400
-		constant := all(t, New(samples(n, func(int) float64 { return 1 }), from, to, 0, 0, 0))
-		alternating := all(t, New(samples(n, func(j int) float64 { return float64(1 - 2*(j%2)) }), from, to, 0, 0, 0))
+		constant := all(t, New(samples(n, func(int) float64 { return 1 }), from, to, PassBand, 0, 0, 0))
+		alternating := all(t, New(samples(n, func(j int) float64 { return float64(1 - 2*(j%2)) }), from, to, PassBand, 0, 0, 0))
 		const rounding = 1e-14
 		for k := int(150 * to / from); k < int(250*to/from); k++ {
 			if d := math.Abs(constant[k] - 1); !(d <= rounding) {
@@ -93,7 +109,7 @@ func TestImpulse(t *testing.T) {
 	forRatios(t, func(t *testing.T, from, to float64) {
 		const middle = 100
 		ratio := to / from
-		p := New(samples(middle+1, func(j int) float64 { return float64(j / middle) }), from, to, 0, 0, middle-1)
+		p := New(samples(middle+1, func(j int) float64 { return float64(j / middle) }), from, to, PassBand, 0, 0, middle-1)
 		h := all(t, p)
 		whole := ratio == math.Round(ratio)
 		if whole {
@@ -137,7 +153,7 @@ func TestTimeGrid(t *testing.T) {
 		f := PassBand * from * rapid.Float64Range(0, 1).Draw(t, "f")
 		tone := func(time float64) float64 { return math.Cos(2 * math.Pi * f * time) }
 		y := make([]float64, int64(250*to/from)+300)
-		p := New(samples(400, func(j int) float64 { return tone(float64(srcFirst+int64(j)) / from) }), from, to, srcFirst, first, 0)
+		p := New(samples(400, func(j int) float64 { return tone(float64(srcFirst+int64(j)) / from) }), from, to, PassBand, srcFirst, first, 0)
 		if n, err := p.Read(y); n != len(y) || err != nil {
 			t.Fatal(n, err)
 		}
@@ -166,7 +182,7 @@ func TestLength(t *testing.T) {
 		tail := rapid.Int64Range(0, 300).Draw(t, "tail")
 		srcFirst := rapid.Int64Range(-500, 500).Draw(t, "srcFirst")
 		first := srcFirst*to/from - 1100
-		y, err := signals.ReadAll(New(samples(int(n), func(int) float64 { return 1 }), float64(from), float64(to), srcFirst, first, tail))
+		y, err := signals.ReadAll(New(samples(int(n), func(int) float64 { return 1 }), float64(from), float64(to), PassBand, srcFirst, first, tail))
 		if err != nil {
 			t.Fatal(err)
 		}
@@ -206,7 +222,7 @@ func TestBlocks(t *testing.T) {
 	rapid.Check(t, func(t *rapid.T) {
 		r := rapid.SampledFrom(ratios[:8]).Draw(t, "ratio")
 		n := rapid.IntRange(0, 600).Draw(t, "n")
-		make := func() *Interpolator { return New(noise(n), r[0], r[1], 0, -50, 10) }
+		make := func() *Interpolator { return New(noise(n), r[0], r[1], PassBand, 0, -50, 10) }
 		want, err := signals.ReadAll(make())
 		if err != nil {
 			t.Fatal(err)
@@ -231,11 +247,11 @@ func TestRefinement(t *testing.T) {
 	const from, base, doublings, n = 48000., 110000., 3, 300
 	kernel, reach := Refinement(from/base, doublings)
 	scale := 1 << doublings
-	want := all(t, New(noise(n), from, base*float64(scale), 0, 0, 0))
+	want := all(t, New(noise(n), from, base*float64(scale), PassBand, 0, 0, 0))
 	if len(kernel) != 2*reach*scale+1 {
 		t.Fatalf("%d weights for a reach of %d", len(kernel), reach)
 	}
-	coarse := all(t, New(noise(n), from, base, 0, int64(-reach), 2*preRing))
+	coarse := all(t, New(noise(n), from, base, PassBand, 0, int64(-reach), 2*preRing))
 	for k := range want {
 		sum := 0.
 		for i, x := range coarse {
@@ -259,15 +275,15 @@ func (f failing) Read(dst []float64) (int, error) { return len(dst) / 2, f.err }
 
 func TestFailures(t *testing.T) {
 	broken := errors.New("broken")
-	if _, err := New(failing{broken}, 1, 2, 0, 0, 0).Read(make([]float64, 10)); !errors.Is(err, broken) {
+	if _, err := New(failing{broken}, 1, 2, PassBand, 0, 0, 0).Read(make([]float64, 10)); !errors.Is(err, broken) {
 		t.Errorf("an interpolator's error is %v", err)
 	}
 	if _, err := NewSplit(failing{broken}, 8, 1, 0).Read(make([]float64, 10), make([]float64, 10)); !errors.Is(err, broken) {
 		t.Errorf("a split's error is %v", err)
 	}
 	for name, f := range map[string]func(){
-		"below twice the rate": func() { New(noise(1), 2, 3.9, 0, 0, 0) },
-		"behind the first":     func() { New(noise(1), 1, 2, 0, 1000, 0) },
+		"below twice the rate": func() { New(noise(1), 2, 3.9, PassBand, 0, 0, 0) },
+		"behind the first":     func() { New(noise(1), 1, 2, PassBand, 0, 1000, 0) },
 		"lengths":              func() { NewSplit(noise(1), 8, 1, 0).Read(make([]float64, 1), nil) },
 	} {
 		t.Run(name, func(t *testing.T) {
@@ -304,7 +320,7 @@ func perSecond(b *testing.B, values, rate float64) {
 func BenchmarkInterpolator(b *testing.B) {
 	for _, r := range ratios {
 		b.Run(fmt.Sprintf("%g-%g", r[0], r[1]), func(b *testing.B) {
-			p := New(&endless{values: *noise(4096)}, r[0], r[1], 0, 0, 0)
+			p := New(&endless{values: *noise(4096)}, r[0], r[1], PassBand, 0, 0, 0)
 			dst := make([]float64, 8192)
 			for b.Loop() {
 				if _, err := p.Read(dst); err != nil {

@@ -33,7 +33,7 @@ func TestAgainstSoX(t *testing.T) {
 		}
 		want := make([]float64, out.Len()/8)
 		binary.Read(&out, binary.LittleEndian, want)
-		got := all(t, New(&x, r[0], r[1], 0, 0, 0))
+		got := all(t, New(&x, r[0], r[1], PassBand, 0, 0, 0))
 		difference, power := 0., 0.
 		for k := len(want) / 3; k < 2*len(want)/3; k++ {
 			difference += (got[k] - want[k]) * (got[k] - want[k])

@@ -29,6 +29,16 @@ type Split struct {
 	err       error
 }
 
+// SplitTop returns the share of a stream's rate above which a split leaves nothing in its lower side, but for −120 dB.
+func SplitTop(rate, edge float64) float64 {
+	half := NewSplit(nil, rate, edge, 0).half
+	if half == 0 {
+		return 0.5
+	}
+	width := (splitStop - 8) / (2.285 * float64(2*half)) // rad a sample, by Kaiser's formula; the edge is in its middle
+	return edge/rate + width/(4*math.Pi)
+}
+
 // longestHalf bounds the filter, and with it what is held in memory: for an edge below about a 1300th of the rate the
 // transition is wider than 1 %.
 const longestHalf = 1 << 18
