@@ -81,12 +81,13 @@ func execute(ctx context.Context, s streams, f *runFlags, n *circuit.Network, j 
 	clock := stopwatch{on: f.times, last: time.Now()}
 	budget := noise.At(n)
 	clock.lap("adding up the noise")
+	known := later(func() (*known, error) { return knownOf(n, budget) })
 	result, res, err := renderInto(ctx, s, f, n, j, tracks, budget, out)
 	if err != nil {
 		return nil, errors.Join(err, out.discard())
 	}
 	clock.laps(result.Times)
-	run, err := describe(n, tracks, result, res, budget)
+	run, err := describe(n, tracks, result, res, budget, known)
 	if err == nil && !f.noPage {
 		err = writePage(n, j, out, run, result, res, budget)
 	}
@@ -382,8 +383,44 @@ func (b *bar) end(complete bool) {
 	b.progress.Wait()
 }
 
+// later does work beside what follows; the function that it returns waits for what came of it.
+func later[T any](work func() (T, error)) func() (T, error) {
+	type outcome struct {
+		value T
+		err   error
+	}
+	done := make(chan outcome, 1)
+	go func() {
+		value, err := work()
+		done <- outcome{value, err}
+	}()
+	return func() (T, error) {
+		o := <-done
+		return o.value, o.err
+	}
+}
+
+// known is what a report tells of a chain whatever its track.
+type known struct {
+	rest    *rest.Rest
+	margins []response.Margin
+	answers []report.Answer
+}
+
+func knownOf(n *circuit.Network, budget *noise.Budget) (*known, error) {
+	atRest, err := rest.Find(n)
+	if err != nil {
+		return nil, err
+	}
+	answers, err := answersOf(n, atRest, budget)
+	if err != nil {
+		return nil, err
+	}
+	return &known{atRest, response.Margins(n), answers}, nil
+}
+
 // describe puts a run's results into the form of reports.
-func describe(n *circuit.Network, tracks *openedTracks, r *render.Result, res *residue.Residue, budget *noise.Budget) (*report.Run, error) {
+func describe(n *circuit.Network, tracks *openedTracks, r *render.Result, res *residue.Residue, budget *noise.Budget, wait func() (*known, error)) (*report.Run, error) {
 	c := n.Chain
 	of := report.Of
 	first := tracks.list[0]
@@ -421,15 +458,12 @@ func describe(n *circuit.Network, tracks *openedTracks, r *render.Result, res *r
 	for _, w := range r.Waveforms {
 		run.Waveforms = append(run.Waveforms, report.Waveform{Stage: w.Owner, Kind: string(w.Kind), AtS: of(w.At), OverDB: of(w.Over)})
 	}
-	atRest, err := rest.Find(n)
+	known, err := wait()
 	if err != nil {
 		return nil, err
 	}
-	run.Rest, run.Noise, run.Parts = restOf(c, atRest), noiseOf(n, budget), partsOf(c)
-	if run.Answers, err = answersOf(n, atRest, budget); err != nil {
-		return nil, err
-	}
-	margins := response.Margins(n)
+	atRest, margins := known.rest, known.margins
+	run.Rest, run.Noise, run.Parts, run.Answers = restOf(c, atRest), noiseOf(n, budget), partsOf(c), known.answers
 	run.Margins, run.SupplyPaths = marginsOf(margins), supplyOf(n, r.At)
 	for _, l := range residue.Limits(n, r, res, atRest.Settling.OnePercent) {
 		run.Limits = append(run.Limits, report.Limit{Name: l.Name, Limit: of(l.Limit), Value: of(l.Value), Holds: l.Holds})

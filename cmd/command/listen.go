@@ -59,21 +59,33 @@ func listen(out *folder, j job, r *render.Result, res *residue.Residue, run *rep
 	for _, p := range passages {
 		l.Passages = append(l.Passages, report.Passage{FromS: report.Of(p[0]), ToS: report.Of(p[1])})
 	}
-	var sounds []report.PlayerSound
-	var samples [][]float64
-	for i := range players {
-		p := &players[i]
+	type excerpt struct {
+		samples []float64
+		rate    float64
+	}
+	var excerpts []func() (excerpt, error)
+	for _, p := range players {
 		open := func() (signals.Track, error) { return wav.Open(out.file(p.File)) }
 		if p.File == "" {
 			open = j.first().open
 		}
-		x, at, err := cutTrack(open, passages)
-		if err != nil {
-			return nil, nil, err
-		}
-		p.RateHz = report.Of(at)
-		sounds = append(sounds, report.PlayerSound{Rate: at})
-		samples = append(samples, x)
+		excerpts = append(excerpts, later(func() (excerpt, error) {
+			x, at, err := cutTrack(open, passages)
+			return excerpt{x, at}, err
+		}))
+	}
+	var sounds []report.PlayerSound
+	var samples [][]float64
+	var failed error
+	for i, wait := range excerpts {
+		x, err := wait()
+		failed = errors.Join(failed, err)
+		players[i].RateHz = report.Of(x.rate)
+		sounds = append(sounds, report.PlayerSound{Rate: x.rate})
+		samples = append(samples, x.samples)
+	}
+	if failed != nil {
+		return nil, nil, failed
 	}
 	gains := loudness(samples, sounds)
 	for i, x := range samples {
@@ -210,12 +222,18 @@ func soften(x []float64, in bool, rate float64) {
 // two, to the same; no peak goes beyond listenPeak.
 func loudness(samples [][]float64, sounds []report.PlayerSound) []float64 {
 	type measured struct{ level, most float64 }
+	var readings []func() (level.Reading, error)
+	for i, x := range samples {
+		readings = append(readings, later(func() (level.Reading, error) {
+			m := level.NewMeter(sounds[i].Rate)
+			m.Write(x)
+			return m.Result(), nil
+		}))
+	}
 	var all []measured
 	target := float64(listenLevel)
-	for i, x := range samples {
-		m := level.NewMeter(sounds[i].Rate)
-		m.Write(x)
-		r := m.Result()
+	for i, wait := range readings {
+		r, _ := wait()
 		one := measured{r.A, math.Min(listenPeak-r.Peak, mostGain)}
 		if math.IsInf(r.A, -1) {
 			one = measured{listenLevel, 0} // silence stays as it is

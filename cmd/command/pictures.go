@@ -25,13 +25,19 @@ const (
 
 // writePage writes the report that people open into the folder, and notes in run what it has to listen to.
 func writePage(n *circuit.Network, j job, out *folder, run *report.Run, r *render.Result, res *residue.Residue, budget *noise.Budget) error {
-	p := picturesOf(n, r, res, budget)
-	var err error
-	if run.Listen, p.Sounds, err = listen(out, j, r, res, run); err != nil {
+	var grams []func() (report.Gram, error)
+	for _, name := range []string{report.Heard, report.FoldBack} {
+		grams = append(grams, later(func() (report.Gram, error) { return gramOf(out.file(name+".wav"), name) }))
+	}
+	pictures := later(func() (*report.Pictures, error) { return picturesOf(n, r, res, budget), nil })
+	sound, sounds, err := listen(out, j, r, res, run)
+	if err != nil {
 		return err
 	}
-	for _, name := range []string{report.Heard, report.FoldBack} {
-		g, err := gramOf(out.file(name+".wav"), name)
+	p, _ := pictures()
+	run.Listen, p.Sounds = sound, sounds
+	for _, wait := range grams {
+		g, err := wait()
 		if err != nil {
 			return err
 		}
