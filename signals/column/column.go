@@ -1,6 +1,7 @@
 // Package column reads sound from one column of a text file, as loggers and oscilloscopes write it: comma-separated
 // values (RFC 4180), or separated by semicolons, where numbers may have a decimal comma, or by tabs. Lines that begin
-// with # are left out, and so are lines before the first number in the column: a heading.
+// with # are left out, and so are lines before the first number in the column: a heading. A row, and remarks in front of
+// it, have 64 KiB at most, so that no more memory is used than one takes, whatever the file.
 package column
 
 import (
@@ -10,6 +11,7 @@ import (
 	"errors"
 	"fmt"
 	"io"
+	"slices"
 	"strconv"
 	"strings"
 
@@ -18,6 +20,9 @@ import (
 
 // mostHeading is how many lines a heading has at the most.
 const mostHeading = 100
+
+// longest is how many bytes a row has at the most, remarks in front of it included.
+const longest = 1 << 16
 
 // Form tells what the column's numbers are: a sample is (number − Zero)·Scale.
 type Form struct {
@@ -36,6 +41,7 @@ func Counts(bits int) (zero, scale float64) {
 type File struct {
 	name   string
 	form   Form
+	src    *bounded
 	rows   *csv.Reader
 	commas bool // numbers may have a decimal comma
 	first  float64
@@ -48,9 +54,14 @@ func New(name string, src io.Reader, form Form) (*File, error) {
 	if form.Column < 1 {
 		panic("column: columns are counted from 1")
 	}
-	buffered := bufio.NewReaderSize(src, 1<<16)
+	// The library, given a buffered reader, puts no buffer of its own in front, so that what it takes is a row's.
+	f := &File{name: name, form: form, src: &bounded{src: src}}
+	buffered := bufio.NewReaderSize(f.src, 1<<16)
+	if start, _ := buffered.Peek(len(byteOrderMark)); string(start) == byteOrderMark {
+		buffered.Discard(len(byteOrderMark))
+	}
 	separator := separatorOf(buffered)
-	f := &File{name: name, form: form, commas: separator == ';', rows: csv.NewReader(buffered)}
+	f.commas, f.rows = separator == ';', csv.NewReader(buffered)
 	f.rows.Comma, f.rows.Comment = separator, '#'
 	f.rows.FieldsPerRecord, f.rows.ReuseRecord, f.rows.TrimLeadingSpace, f.rows.LazyQuotes = -1, true, true, true
 	var heading error
@@ -66,7 +77,7 @@ func New(name string, src io.Reader, form Form) (*File, error) {
 			}
 			return nil, heading
 		}
-		if format, ok := errors.AsType[*signals.FormatError](err); !ok {
+		if format, ok := errors.AsType[*signals.FormatError](err); !ok || f.src.taken > longest {
 			return nil, err
 		} else if heading == nil {
 			heading = format
@@ -75,11 +86,36 @@ func New(name string, src io.Reader, form Form) (*File, error) {
 	return nil, heading
 }
 
-// separatorOf looks for the separator in the file's first lines.
+// byteOrderMark begins the text files of some programs (UTF-8's, Unicode 23.8).
+const byteOrderMark = "\ufeff"
+
+// bounded is a reader that gives up where more than a row's bytes are taken from it without a row.
+type bounded struct {
+	src   io.Reader
+	taken int // since the last row
+}
+
+var errLong = fmt.Errorf("a row has more than %d bytes", longest)
+
+func (b *bounded) Read(p []byte) (int, error) {
+	if b.taken > longest {
+		return 0, errLong
+	}
+	n, err := b.src.Read(p)
+	b.taken += n
+	return n, err
+}
+
+// separatorOf looks for the separator in the last whole line of the file's beginning: the first may be a heading.
 func separatorOf(r *bufio.Reader) rune {
-	start, _ := r.Peek(4096)
-	for _, line := range bytes.Split(start, []byte("\n")) {
-		if bytes.HasPrefix(line, []byte("#")) {
+	const beginning = 4096
+	start, err := r.Peek(beginning)
+	lines := bytes.Split(start, []byte("\n"))
+	if err == nil && len(lines) > 1 { // there is more of the last
+		lines = lines[:len(lines)-1]
+	}
+	for _, line := range slices.Backward(lines) {
+		if len(bytes.TrimSpace(line)) == 0 || line[0] == '#' {
 			continue
 		}
 		for _, c := range ";\t" {
@@ -87,6 +123,7 @@ func separatorOf(r *bufio.Reader) rune {
 				return c
 			}
 		}
+		break
 	}
 	return ','
 }
@@ -97,9 +134,14 @@ func (f *File) fault(at, text, remedy string) error {
 
 // next returns the column's next sample.
 func (f *File) next() (float64, error) {
+	f.src.taken = 0
+	from := f.rows.InputOffset()
 	row, err := f.rows.Read()
 	if errors.Is(err, io.EOF) {
 		return 0, io.EOF
+	}
+	if errors.Is(err, errLong) {
+		return 0, f.fault(fmt.Sprintf("behind byte %d", from), errLong.Error(), "is this the right file? does a quotation mark end?")
 	}
 	if parse, ok := errors.AsType[*csv.ParseError](err); ok {
 		return 0, f.fault(fmt.Sprintf("line %d", parse.Line), parse.Err.Error(), "mend the line")
@@ -120,7 +162,7 @@ func (f *File) next() (float64, error) {
 	if err != nil && !errors.Is(err, strconv.ErrRange) { // what is out of range is infinite, and told as such
 		line, _ := f.rows.FieldPos(f.form.Column - 1)
 		if len(text) > 40 {
-			text = text[:40] + "…"
+			text = strings.ToValidUTF8(text[:40], "") + "…"
 		}
 		return 0, f.fault(fmt.Sprintf("line %d", line), fmt.Sprintf("%q is no number", text), "name another column with --column, or mend the line")
 	}

@@ -4,6 +4,7 @@ import (
 	"errors"
 	"io"
 	"math"
+	"runtime"
 	"slices"
 	"strings"
 	"testing"
@@ -44,6 +45,9 @@ func TestFiles(t *testing.T) {
 		"CRLF, spaces":  {" 1, 2\r\n 3, 4\r\n", 2, []float64{2, 4}},
 		"semicolons":    {"t;v\n0,1;1,5\n0,2;2.5\n", 2, []float64{1.5, 2.5}},
 		"tabs":          {"0\t7\n1\t8\n", 2, []float64{7, 8}},
+		"marked":        {"\ufeff1\n2\n", 1, []float64{1, 2}},
+		"; in heading":  {"a; b\nt,v\n1,2\n3,4\n", 2, []float64{2, 4}},
+		"empty lines":   {"1;2,5\n\n3;4\n\n\n", 2, []float64{2.5, 4}},
 		"quoted":        {"\"1\",\"2\"\n\"3\",\"4\"\n", 2, []float64{2, 4}},
 		"other columns": {"x,1,y\nx,2\n", 2, []float64{1, 2}},
 	} {
@@ -78,6 +82,58 @@ func TestFaultsHaveTheirPlace(t *testing.T) {
 	}
 	if _, err := read("a\nb\n", Form{Column: 1, Rate: 8000, Scale: 1}); err == nil || !strings.Contains(err.Error(), `line 1: "a" is no number`) {
 		t.Errorf("a heading alone: %v", err)
+	}
+}
+
+// endless is a file of one text over and over, of a given size. It notes how much memory is in use.
+type endless struct {
+	text     string
+	at, left int
+	most     uint64 // bytes
+}
+
+func (e *endless) Read(p []byte) (int, error) {
+	var m runtime.MemStats
+	runtime.ReadMemStats(&m)
+	e.most = max(e.most, m.HeapAlloc)
+	n := 0
+	for n < len(p) && e.left > 0 {
+		k := copy(p[n:min(len(p), n+e.left)], e.text[e.at:])
+		n, e.left, e.at = n+k, e.left-k, (e.at+k)%len(e.text)
+	}
+	if n == 0 {
+		return 0, io.EOF
+	}
+	return n, nil
+}
+
+// However large the file, and whatever it holds, a row is all that is in memory.
+func TestMemory(t *testing.T) {
+	const size, most = 64 << 20, 16 << 20 // bytes: of the file; in use, garbage included
+	for name, c := range map[string]struct{ start, text, want string }{
+		"a line":              {"", "1", "a row has more than"},
+		"commas":              {"", ",", "a row has more than"},
+		"quotations":          {"", "\"1\n" + strings.Repeat("\n", 1020) + "\"\n", ""},
+		"a quote left open":   {"1\n\"", "a\n1\n", "behind byte 2: a row has more than"},
+		"a heading for ever":  {"", "x\n", `line 1: "x" is no number`},
+		"numbers":             {"", strings.Repeat("0", 127) + "\n", ""},
+		"remarks without end": {"", "#\n", "a row has more than"},
+	} {
+		var before runtime.MemStats
+		runtime.GC()
+		runtime.ReadMemStats(&before)
+		file := &endless{text: c.text, left: size}
+		f, err := New("x.csv", io.MultiReader(strings.NewReader(c.start), file), Form{Column: 1, Rate: 8000, Scale: 1})
+		block := make([]float64, 4096)
+		for err == nil {
+			_, err = f.ReadFrames(block)
+		}
+		if got := file.most - before.HeapAlloc; got > most {
+			t.Errorf("%s: %d bytes in use", name, got)
+		}
+		if c.want == "" && err != io.EOF || !strings.Contains(err.Error(), c.want) {
+			t.Errorf("%s: %v", name, err)
+		}
 	}
 }
 

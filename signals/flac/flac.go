@@ -26,6 +26,7 @@ const mostBits = 24
 // File is a FLAC stream being read. It is a [signals.Track].
 type File struct {
 	name   string
+	src    *source
 	stream *flac.Stream
 	rate   uint32
 	width  int
@@ -41,12 +42,15 @@ type File struct {
 // New reads a stream from src; name is what faults call it. The error is a *[signals.FormatError] where the stream is
 // not one that is read.
 func New(name string, src io.Reader) (*File, error) {
-	f := &File{name: name}
-	buffered := bufio.NewReader(src)
+	f := &File{name: name, src: &source{Reader: src}}
+	buffered := bufio.NewReader(f.src)
 	// The decoder takes whatever block comes first, at its word; so the first is looked at before.
 	head, err := buffered.Peek(8)
-	if err != nil {
+	if err != nil && f.src.err == nil {
 		return nil, f.fault("byte 0", "the file ends before its header does", "record again, or copy it again")
+	}
+	if err != nil {
+		return nil, f.src.err
 	}
 	if string(head[:4]) != Signature {
 		return nil, f.fault("byte 0", "it does not begin with "+Signature, "is this a FLAC file?")
@@ -89,16 +93,27 @@ func (f *File) unsupported(text, remedy string) error {
 
 // failed is the fault of an error of the decoder's; one of reading passes as it is.
 func (f *File) failed(at string, err error) error {
-	if errors.Is(err, io.ErrUnexpectedEOF) || errors.Is(err, io.EOF) {
+	switch {
+	case f.src.err != nil:
+		return f.src.err
+	case errors.Is(err, io.ErrUnexpectedEOF), errors.Is(err, io.EOF):
 		return f.fault(at, "the file ends within it", "copy the file again")
 	}
-	if _, ok := errors.AsType[interface {
-		error
-		Timeout() bool
-	}](err); ok { // an error of the operating system
-		return fmt.Errorf("%s: %w", f.name, err)
-	}
 	return f.fault(at, "it is damaged ("+err.Error()+")", "copy the file again")
+}
+
+// source remembers the error of reading that ended it, which the decoder may tell otherwise.
+type source struct {
+	io.Reader
+	err error
+}
+
+func (s *source) Read(p []byte) (int, error) {
+	n, err := s.Reader.Read(p)
+	if err != nil && !errors.Is(err, io.EOF) {
+		s.err = err
+	}
+	return n, err
 }
 
 // Rate returns the rate in Hz.
@@ -125,17 +140,18 @@ func (f *File) next() {
 	}
 	f.block, f.err = f.stream.ParseNext()
 	at := fmt.Sprintf("the block at frame %d", f.read)
-	if f.err == nil {
+	cut := errors.Is(f.err, io.ErrUnexpectedEOF) && f.read > 0
+	switch {
+	case f.err == nil:
 		f.err = f.check(at)
-	} else if cut := errors.Is(f.err, io.ErrUnexpectedEOF) && f.read > 0; cut || errors.Is(f.err, io.EOF) {
+	case f.src.err == nil && (cut || errors.Is(f.err, io.EOF)):
 		f.err = io.EOF
-		switch {
-		case f.read < f.frames:
+		if f.read < f.frames {
 			f.note = fmt.Sprintf("the file is cut short: %d of %d frames are there, and used", f.read, f.frames)
-		case cut:
+		} else if cut {
 			f.note = fmt.Sprintf("the file ends within a block; the %d frames before it are used", f.read)
 		}
-	} else {
+	default:
 		f.err = f.failed(at, f.err)
 	}
 	if f.err != nil {

@@ -5,9 +5,15 @@ import (
 	"errors"
 	"io"
 	"os"
+	"runtime"
 	"slices"
 	"strings"
 	"testing"
+	"testing/iotest"
+
+	"github.com/mewkiz/flac"
+	"github.com/mewkiz/flac/frame"
+	"github.com/mewkiz/flac/meta"
 
 	"midrail/signals"
 	"midrail/signals/wav"
@@ -125,6 +131,73 @@ func TestFaultsHaveTheirPlace(t *testing.T) {
 		if !strings.Contains(err.Error(), c.want) || fault.Unsupported != c.unsupported || fault.Remedy == "" || !strings.HasPrefix(err.Error(), "x.flac: ") {
 			t.Errorf("%s: %v (unsupported: %v)", name, err, fault.Unsupported)
 		}
+	}
+}
+
+// An error of reading is no fault of the file's.
+func TestErrorsPass(t *testing.T) {
+	good := load(t, "tiny.flac")
+	broken := errors.New("broken")
+	for at := range good {
+		f, err := New("x", io.MultiReader(bytes.NewReader(good[:at]), iotest.ErrReader(broken)))
+		if err == nil {
+			_, err = whole(f)
+		}
+		if !errors.Is(err, broken) {
+			t.Fatalf("broken at byte %d: %v", at, err)
+		}
+	}
+}
+
+// A small file that unpacks to hours takes the room of a block; one that claims more than it holds, too.
+func TestMemory(t *testing.T) {
+	const blocks, size, channels = 100, 65535, 8
+	var file bytes.Buffer
+	encoder, err := flac.NewEncoder(&file, &meta.StreamInfo{BlockSizeMin: size, BlockSizeMax: size, SampleRate: 8000, NChannels: channels, BitsPerSample: 16})
+	if err != nil {
+		t.Fatal(err)
+	}
+	for range blocks {
+		block := &frame.Frame{Header: frame.Header{BlockSize: size, SampleRate: 8000, Channels: frame.ChannelsLRCLfeLsRsSlSr, BitsPerSample: 16, HasFixedBlockSize: true}}
+		for range channels {
+			block.Subframes = append(block.Subframes, &frame.Subframe{SubHeader: frame.SubHeader{Pred: frame.PredConstant}, Samples: slices.Repeat([]int32{1 << 14}, size), NSamples: size})
+		}
+		if err := encoder.WriteFrame(block); err != nil {
+			t.Fatal(err)
+		}
+	}
+	if err := encoder.Close(); err != nil {
+		t.Fatal(err)
+	}
+	packed := file.Bytes()
+	copy(packed[21:], []byte{packed[21] | 0x0f, 0xff, 0xff, 0xff, 0xff}) // 2³⁶ − 1 frames, it says
+	if len(packed) > 4096 {
+		t.Fatalf("the file has %d bytes", len(packed))
+	}
+	var before runtime.MemStats
+	runtime.GC()
+	runtime.ReadMemStats(&before)
+	f, err := New("x", bytes.NewReader(packed))
+	if err != nil {
+		t.Fatal(err)
+	}
+	x := make([]float64, 4096*channels)
+	frames := 0
+	const most = 32 << 20 // bytes in use, garbage included, of which a block has 2; all have 210
+	for err == nil {
+		var n int
+		n, err = f.ReadFrames(x)
+		frames += n
+		var now runtime.MemStats
+		if frames%(16*4096) == 0 {
+			runtime.ReadMemStats(&now)
+		}
+		if got := int64(now.HeapAlloc) - int64(before.HeapAlloc); got > most {
+			t.Fatalf("%d bytes in use after %d frames", got, frames)
+		}
+	}
+	if err != io.EOF || frames != blocks*size || x[0] != 0.5 || !strings.Contains(f.Note(), "6553500 of 68719476735 frames") {
+		t.Errorf("%d frames, %v, note %q", frames, err, f.Note())
 	}
 }
 
