@@ -1,6 +1,7 @@
 package chain
 
 import (
+	"errors"
 	"fmt"
 	"math"
 	"slices"
@@ -133,8 +134,8 @@ func (t *table) value(key string, e *entry, kind quantity.Kind, low, high float6
 	case textShape:
 		var err error
 		if v, err = quantity.Parse(kind, e.text); err != nil {
-			what, remedy, _ := strings.Cut(err.Error(), "; ")
-			t.wrong(e, key+": "+what, remedy)
+			fault, _ := errors.AsType[*quantity.Error](err)
+			t.wrong(e, key+": "+fault.Text, fault.Remedy)
 			return v, false
 		}
 		if v.Note != "" {
@@ -150,8 +151,8 @@ func (t *table) value(key string, e *entry, kind quantity.Kind, low, high float6
 		}
 		// With an exponent it is no code: 104 is not the capacitor "104".
 		if v, err = quantity.Parse(kind, strconv.FormatFloat(x, 'e', -1, 64)); err != nil {
-			_, remedy, _ := strings.Cut(err.Error(), "; ")
-			t.wrong(e, fmt.Sprintf("%s = %s has no unit", key, written), remedy)
+			fault, _ := errors.AsType[*quantity.Error](err)
+			t.wrong(e, fmt.Sprintf("%s = %s has no unit", key, written), fault.Remedy)
 			return v, false
 		}
 	default:

@@ -127,16 +127,25 @@ func kindTable(k Kind) kindOf {
 // longest is the length in bytes of the longest text that is read.
 const longest = 64
 
+// Error says what is wrong with a text that is no value of its kind. Both are of one line without a position.
+type Error struct {
+	Text   string // what is wrong
+	Remedy string // how to write it
+}
+
+// Error returns what is wrong, "; ", how to write it.
+func (e *Error) Error() string { return e.Text + "; " + e.Remedy }
+
 // Parse reads a value of the kind as people write it; blanks around it and before the unit do not matter. The value is
-// finite; whether it is in range is the caller's to tell. The error is one line without a position: what is wrong, "; ",
-// how to write it. Parse panics for a kind that there is not.
+// finite; whether it is in range is the caller's to tell. The error is an *[Error]. Parse panics for a kind that there
+// is not.
 func Parse(k Kind, text string) (Value, error) {
 	kind := kindTable(k)
 	wrong := func(why string) (Value, error) {
 		if len(text) > longest {
 			text = text[:longest] + "…"
 		}
-		return Value{}, fmt.Errorf("%q is not %s: %s; write it as %s", text, kind.name, why, kind.like)
+		return Value{}, &Error{fmt.Sprintf("%q is not %s: %s", text, kind.name, why), "write it as " + kind.like}
 	}
 	t := strings.TrimSpace(text)
 	switch {
@@ -192,6 +201,12 @@ func Parse(k Kind, text string) (Value, error) {
 		}
 		return v, nil
 	}
+	if plain, ok := strings.CutSuffix(rest, "V"); ok && k == Level {
+		if _, ok := prefixOf(strings.TrimSpace(plain)); ok {
+			kind.like = fmt.Sprintf("%q, %q or %q", t+"rms", t+"p", t+"pp")
+			return wrong("plain volts may be RMS, peak or peak to peak")
+		}
+	}
 	return wrong(fmt.Sprintf("%q is no unit of it", rest))
 }
 
@@ -207,7 +222,7 @@ func (u unit) value(k Kind, number string, x float64, exponent int) (Value, erro
 		v.SI = scaled(number, exponent) * u.factor
 	}
 	if math.IsInf(v.SI, 0) {
-		return Value{}, fmt.Errorf("%s%s is out of range; check the number", number, u.name)
+		return Value{}, &Error{fmt.Sprintf("%s%s is out of range", number, u.name), "check the number"}
 	}
 	return v, nil
 }

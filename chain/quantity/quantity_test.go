@@ -1,6 +1,7 @@
 package quantity
 
 import (
+	"errors"
 	"fmt"
 	"math"
 	"strconv"
@@ -224,4 +225,18 @@ func FuzzParse(f *testing.F) {
 			t.Errorf("%q: %v", text, err)
 		}
 	})
+}
+
+// A semicolon in what was written stays with what is wrong.
+func TestErrorsPartTheRemedy(t *testing.T) {
+	_, err := Parse(Resistance, "100; k")
+	fault, ok := errors.AsType[*Error](err)
+	if !ok || fault.Text != `"100; k" is not a resistance: "; k" is no unit of it` || fault.Remedy != `write it as "4k7", "100R" or 4700` {
+		t.Errorf("%#v", err)
+	}
+	for _, text := range []string{"1V", "20 mV"} {
+		if _, err = Parse(Level, text); err == nil || !strings.HasSuffix(err.Error(), "; write it as \""+text+"rms\", \""+text+"p\" or \""+text+"pp\"") {
+			t.Errorf("%q: %v", text, err)
+		}
+	}
 }
