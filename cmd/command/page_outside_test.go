@@ -285,7 +285,7 @@ func TestPagesInABrowser(t *testing.T) {
 		t.Run(name+" to listen to", func(t *testing.T) { players(t, b, filepath.Join(dir, name)) })
 	}
 	t.Run("sorting", func(t *testing.T) { sorting(t, b, filepath.Join(dir, "demo")) })
-	t.Run("reading", func(t *testing.T) { reading(t, b, filepath.Join(dir, "demo")) })
+	t.Run("reading", func(t *testing.T) { readingOff(t, b, filepath.Join(dir, "demo")) })
 	t.Run("printed", func(t *testing.T) { printed(t, b, filepath.Join(dir, "six")) })
 	t.Run("without script", func(t *testing.T) { withoutScript(t, b, filepath.Join(dir, "demo")) })
 }
@@ -475,8 +475,8 @@ func sorting(t *testing.T, b *browser, folder string) {
 	}
 }
 
-// reading reads a value off the response by the keyboard and by the pointer, and finds it in what the figure tells.
-func reading(t *testing.T, b *browser, folder string) {
+// readingOff reads a value off the response by the keyboard and by the pointer, and finds it in what the figure tells.
+func readingOff(t *testing.T, b *browser, folder string) {
 	b.open(t, filepath.Join(folder, "report.html"))
 	told := func() string { return evaluate[string](t, b, `document.querySelector("#response output").textContent`) }
 	if err := chromedp.Do(b.ctx, chromedp.Focus(chromedp.CSS("#response svg.wide")), chromedp.KeyEvent(kb.ArrowRight)); err != nil {
