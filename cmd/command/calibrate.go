@@ -24,7 +24,7 @@ func (s streams) calibrate(c *chain.Chain) error {
 		if in.Calibrate == nil {
 			continue
 		}
-		tone, err := toneOf(c, in)
+		tone, err := s.toneOf(c, in)
 		if err == nil {
 			err = c.SetFullScale(in, tone)
 		}
@@ -44,7 +44,7 @@ func (s streams) calibrate(c *chain.Chain) error {
 }
 
 // toneOf finds the tone in an input's calibration recording.
-func toneOf(c *chain.Chain, in *chain.Input) (calibration.Tone, error) {
+func (s streams) toneOf(c *chain.Chain, in *chain.Input) (calibration.Tone, error) {
 	k := in.Calibrate
 	fault := func(text, remedy string) error {
 		return chain.Faults{{File: c.File, Pos: k.Pos, Text: fmt.Sprintf("input %q, calibrate: %s", in.Name, text), Remedy: remedy}}
@@ -62,7 +62,7 @@ func toneOf(c *chain.Chain, in *chain.Input) (calibration.Tone, error) {
 	if !filepath.IsAbs(path) {
 		path = filepath.Join(filepath.Dir(c.File), path)
 	}
-	t, err := (&reading{}).file(path).open()
+	t, err := (&reading{notes: notes{out: s.err}}).file(path).open()
 	if err != nil {
 		return calibration.Tone{}, told(err)
 	}

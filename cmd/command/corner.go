@@ -84,7 +84,7 @@ full run. Several recordings are taken as one, the second following the first. -
 		},
 	}
 	f.add(cmd)
-	read.add(cmd)
+	read.add(cmd, s)
 	cmd.Flags().StringVar(&keep, "keep", "3kHz", "edge of the band that is kept")
 	cmd.Flags().StringVar(&rates, "rates", "", "converter rates to try (default: common ones)")
 	cmd.Flags().StringVar(&droop, "droop", "1dB", "loss at the band's edge that is allowed")

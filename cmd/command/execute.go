@@ -73,7 +73,6 @@ func execute(ctx context.Context, s streams, f *runFlags, n *circuit.Network, j 
 		return nil, err
 	}
 	defer tracks.close()
-	defer tracks.tell(s.err)
 	out, err := newFolder(j.folder)
 	if err != nil {
 		return nil, err
@@ -200,16 +199,18 @@ func (o *openedTracks) close() {
 	}
 }
 
-// tell says what there is to be said of the tracks' files, which is known when they have been read.
-func (o *openedTracks) tell(out io.Writer) {
+// notes are what there is to be said of the tracks' files, which is known when they have been read.
+func (o *openedTracks) notes() []string {
+	var list []string
 	for _, t := range o.list {
-		if f, ok := t.Track.(interface{ Note() string }); ok && f.Note() != "" {
-			fmt.Fprintf(out, "warning: %s: %s\n", t.name, f.Note())
+		if f, ok := t.Track.(*openFile); ok && f.Note() != "" {
+			list = append(list, f.Note())
 		}
 	}
+	return list
 }
 
-// frames returns the length of the longest track in s, 0 where it is not known.
+// seconds returns the length of the longest track, 0 where it is not known.
 func (o *openedTracks) seconds() float64 {
 	longest := 0.
 	for _, t := range o.list {
@@ -443,7 +444,7 @@ func describe(n *circuit.Network, tracks *openedTracks, r *render.Result, res *r
 			PeakDBFS: of(res.Heard.Peak), RMSDBFS: of(res.Heard.RMS),
 		},
 		Calibrations: calibrationsOf(c),
-		Assumptions:  assumptions(c, budget),
+		Assumptions:  append(tracks.notes(), assumptions(c, budget)...),
 	}
 	run.Overload.Events = int(r.EventCount)
 	for i := range c.Stages {

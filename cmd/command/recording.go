@@ -11,6 +11,7 @@ import (
 	"path/filepath"
 	"slices"
 	"strings"
+	"sync"
 
 	"github.com/spf13/cobra"
 
@@ -51,10 +52,31 @@ type reading struct {
 
 	format *raw.Format // nil: files say themselves what they are
 	spool  *os.File    // what came from standard input; nil: nothing
+	notes  notes
 }
 
-// add adds the flags.
-func (r *reading) add(cmd *cobra.Command) {
+// notes tells what there is to be said of recordings, once each however often they are read.
+type notes struct {
+	out  io.Writer
+	lock sync.Mutex
+	told map[string]bool
+}
+
+func (n *notes) tell(note string) {
+	n.lock.Lock()
+	defer n.lock.Unlock()
+	if !n.told[note] {
+		if n.told == nil {
+			n.told = map[string]bool{}
+		}
+		n.told[note] = true
+		fmt.Fprintln(n.out, "warning:", note)
+	}
+}
+
+// add adds the flags; what there is to be said of recordings goes to standard error.
+func (r *reading) add(cmd *cobra.Command, s streams) {
+	r.notes.out = s.err
 	f := cmd.Flags()
 	f.StringVar(&r.raw, "raw", "", "recordings are samples without a header: `SAMPLES,RATE,CHANNELS`, as s16le,16000,1")
 	f.StringVar(&r.counts, "counts", "", "a `file` with a column of a converter's counts is a recording; needs --rate and --bits")
@@ -122,8 +144,8 @@ func (r *reading) check(c *chain.Chain) (column.Form, error) {
 		r.format = &f
 	}
 	if r.counts == "" && r.volts == "" {
-		if r.rate != 0 || r.bits != 0 {
-			return form, usageError{errors.New("--rate and --bits are those of --counts or --volts; --raw has its own")}
+		if r.rate != 0 || r.bits != 0 || r.column != 1 {
+			return form, usageError{errors.New("--rate, --bits and --column are those of --counts or --volts; --raw has its own")}
 		}
 		return form, nil
 	}
@@ -139,6 +161,8 @@ func (r *reading) check(c *chain.Chain) (column.Form, error) {
 			return form, usageError{errors.New("counts need their bits: --bits N, 1 to 32")}
 		}
 		form.Zero, form.Scale = column.Counts(r.bits)
+	case r.bits != 0:
+		return form, usageError{errors.New("volts have no bits: leave --bits out")}
 	default:
 		full := c.Inputs[0].FullScale
 		for i := range c.Inputs {
@@ -274,7 +298,7 @@ func (r *reading) recording(path string, read func(name string, src io.ReadSeeke
 			}
 			src = io.NewSectionReader(r.spool, 0, info.Size())
 		} else {
-			file, err := os.Open(path)
+			file, err := openRegular(path)
 			if err != nil {
 				return nil, err
 			}
@@ -284,15 +308,41 @@ func (r *reading) recording(path string, read func(name string, src io.ReadSeeke
 		if err != nil {
 			return nil, errors.Join(err, closer.Close())
 		}
-		return &openFile{signals.NewFinite(t, one.name, r.repair), closer}, nil
+		return &openFile{signals.NewFinite(t, one.name, r.repair), one.name, closer, &r.notes}, nil
 	}
 	return one
+}
+
+// openRegular opens a file that can be read more than once. Of another, such as a named pipe, it does not wait for what
+// may never come.
+func openRegular(path string) (*os.File, error) {
+	info, err := os.Stat(path)
+	if err == nil && !info.Mode().IsRegular() && !info.IsDir() {
+		return nil, refusal{fmt.Errorf("%s: a recording is read more than once, and this is no file that can be; give it as standard input, -", path)}
+	}
+	return os.Open(path)
 }
 
 // openFile is the track in an open file.
 type openFile struct {
 	*signals.Finite
-	file io.Closer
+	name  string
+	file  io.Closer
+	notes *notes
 }
 
-func (f *openFile) Close() error { return errors.Join(f.Finite.Close(), f.file.Close()) }
+// Note returns what there is to be said of the file, which is known when it has been read, or "".
+func (f *openFile) Note() string {
+	if note := f.Finite.Note(); note != "" {
+		return f.name + ": " + note
+	}
+	return ""
+}
+
+// Close tells it.
+func (f *openFile) Close() error {
+	if note := f.Note(); note != "" {
+		f.notes.tell(note)
+	}
+	return errors.Join(f.Finite.Close(), f.file.Close())
+}

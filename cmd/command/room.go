@@ -59,7 +59,7 @@ a margin. The gain is verified by a full run. Several recordings are taken as on
 		},
 	}
 	f.add(cmd)
-	read.add(cmd)
+	read.add(cmd, s)
 	cmd.Flags().StringVar(&margin, "margin", "3dB", "room that the suggested gain is to leave")
 	cmd.Flags().StringVar(&svg, "svg", "", "draw THD+N against the input's level into a `file`")
 	return cmd

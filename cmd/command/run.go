@@ -62,7 +62,7 @@ Caution: the layers can be loud; start with the volume low.`,
 	cmd.Flags().BoolVar(&f.noPage, "no-html", false, "write no report.html")
 	cmd.Flags().BoolVar(&f.open, "open", false, "open the report in the browser")
 	cmd.Flags().BoolVar(&f.times, "times", false, "tell on standard error where the time went")
-	f.reading.add(cmd)
+	f.reading.add(cmd, s)
 	return cmd
 }
 

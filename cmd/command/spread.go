@@ -79,7 +79,7 @@ how many boards hold the chain's limits; which part governs; and each figure wit
 		},
 	}
 	f.add(cmd)
-	read.add(cmd)
+	read.add(cmd, s)
 	cmd.Flags().IntVar(&boards, "boards", 1000, "boards to draw")
 	cmd.Flags().Uint64Var(&seed, "seed", 1, "seed of the draw")
 	cmd.Flags().StringVar(&keep, "keep", "", "frequency at which droop is told (default: the chain's limit)")

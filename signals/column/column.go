@@ -1,5 +1,5 @@
 // Package column reads sound from one column of a text file, as loggers and oscilloscopes write it: comma-separated
-// values (RFC 4180), or separated by semicolons, where numbers may have a decimal comma, or by tabs. Lines that begin
+// values (RFC 4180), or separated by semicolons or tabs, where numbers may have a decimal comma. Lines that begin
 // with # are left out, and so are lines before the first number in the column: a heading. A row, and remarks in front of
 // it, have 64 KiB at most, so that no more memory is used than one takes, whatever the file.
 package column
@@ -61,7 +61,7 @@ func New(name string, src io.Reader, form Form) (*File, error) {
 		buffered.Discard(len(byteOrderMark))
 	}
 	separator := separatorOf(buffered)
-	f.commas, f.rows = separator == ';', csv.NewReader(buffered)
+	f.commas, f.rows = separator != ',', csv.NewReader(buffered)
 	f.rows.Comma, f.rows.Comment = separator, '#'
 	f.rows.FieldsPerRecord, f.rows.ReuseRecord, f.rows.TrimLeadingSpace, f.rows.LazyQuotes = -1, true, true, true
 	var heading error

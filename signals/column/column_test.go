@@ -44,7 +44,7 @@ func TestFiles(t *testing.T) {
 		"remarks":       {"# 1;2\n5\n# more\n6\n", 1, []float64{5, 6}},
 		"CRLF, spaces":  {" 1, 2\r\n 3, 4\r\n", 2, []float64{2, 4}},
 		"semicolons":    {"t;v\n0,1;1,5\n0,2;2.5\n", 2, []float64{1.5, 2.5}},
-		"tabs":          {"0\t7\n1\t8\n", 2, []float64{7, 8}},
+		"tabs":          {"0\t7\n1\t8,5\n", 2, []float64{7, 8.5}},
 		"marked":        {"\ufeff1\n2\n", 1, []float64{1, 2}},
 		"; in heading":  {"a; b\nt,v\n1,2\n3,4\n", 2, []float64{2, 4}},
 		"empty lines":   {"1;2,5\n\n3;4\n\n\n", 2, []float64{2.5, 4}},
