@@ -5,6 +5,7 @@ import (
 	"errors"
 	"io"
 	"math"
+	"runtime"
 	"slices"
 	"strings"
 	"testing"
@@ -72,6 +73,45 @@ func TestEnds(t *testing.T) {
 	_, err = New("x", bytes.NewReader(make([]byte, 3)), f)
 	if fault, ok := errors.AsType[*signals.FormatError](err); !ok || fault.Remedy == "" {
 		t.Errorf("%v", err)
+	}
+}
+
+// zeros is a file of a size that no disk has.
+type zeros struct{ at int64 }
+
+const zerosSize = 1 << 50
+
+func (z *zeros) Seek(offset int64, whence int) (int64, error) {
+	if z.at = offset; whence == io.SeekEnd {
+		z.at += zerosSize
+	}
+	return z.at, nil
+}
+
+func (z *zeros) Read(p []byte) (int, error) {
+	clear(p)
+	z.at += int64(len(p))
+	return len(p), nil
+}
+
+// However large the file, a block is all that is in memory.
+func TestMemory(t *testing.T) {
+	var before, after runtime.MemStats
+	runtime.ReadMemStats(&before)
+	r, err := New("x", &zeros{}, Format{Kind: 'f', Bits: 64, Rate: 8000, Channels: 64})
+	if err != nil || r.Frames() != zerosSize/512 {
+		t.Fatalf("%v, %v", r, err)
+	}
+	x := make([]float64, 4096*64)
+	for range 10 {
+		if n, err := r.ReadFrames(x); n != 4096 || err != nil {
+			t.Fatalf("%d frames, %v", n, err)
+		}
+	}
+	runtime.ReadMemStats(&after)
+	const most = 8 << 20 // bytes; a block has 2 Mi as bytes and as many as numbers, and ten have 40 Mi
+	if got := after.TotalAlloc - before.TotalAlloc; got > most {
+		t.Errorf("%d bytes allocated", got)
 	}
 }
 
