@@ -32,13 +32,13 @@ func (s Span) step() float64 { return 2 / float64(int64(1)<<s.Bits) }
 // Clamp returns x held to what the codes reach: from half a step below the lowest to half a step above the highest.
 func (s Span) Clamp(x float64) float64 {
 	half := s.step() / 2
-	return math.Min(math.Max(x, -1-half), 1-half)
+	return min(max(x, -1-half), 1-half)
 }
 
 // Code returns the code of x in full scale, clamp(floor((v − low)/q + ½), 0, 2^N − 1).
 func (s Span) Code(x float64) int32 {
 	top := float64(int64(1)<<s.Bits) - 1
-	return int32(math.Min(math.Max(math.Floor((x+1)/s.step()+0.5), 0), top))
+	return int32(min(max(math.Floor((x+1)/s.step()+0.5), 0), top))
 }
 
 // Value returns what a code stands for in full scale.

@@ -34,11 +34,14 @@ type simulator struct {
 	always  bool      // step every block
 
 	elements   []element
-	quantities int            // that are read at each instant: first the watched nodes
-	reach      quantityReach  // how far a state and an input can take each
-	most       []float64      // how far each quantity can go in this block
-	smooth     blas64.General // to the quantities' values, from the state and the middles of what the inputs are given
-	middles    []float64
+	quantities int // that are read at each instant: first the watched nodes
+	// reach bounds how far each can go over a block by the sizes of what makes it, the state and, of each input, what it is
+	// given at the base rate and what in cells.
+	reach   blas64.General
+	sizes   []float64
+	most    []float64      // how far each quantity can go in this block
+	smooth  blas64.General // to the quantities' values, from the state and the middles of what the inputs are given
+	middles []float64
 
 	watch      []int // watched nodes
 	indexOf    map[int]int
@@ -58,12 +61,11 @@ type simulator struct {
 	sums, fineSums     [][]float64
 	cellMeans          [][]float64 // of each input with fine lanes or stairs
 	inputMost          []float64   // V or A, how large each input of u gets in the block
-	// By how much what an input is given deviates in the block from its middle.
-	deviation     struct{ coarse, fine []float64 }
-	level         []float64
-	isRead        []bool    // of each quantity, in this block
-	looked, moved []float64 // readings of a block: of the linear run, and by how much the limited one differs
-	change        []float64
+	deviations         []float64   // as sizes: of the difference, and of what the inputs are given from its middle
+	level              []float64
+	isRead             []bool    // of each quantity, in this block
+	looked, moved      []float64 // readings of a block: of the linear run, and by how much the limited one differs
+	change             []float64
 
 	limited   *limiter // the limited run, in a block that is stepped
 	touched   bool     // whether it touched a limit there
@@ -91,33 +93,22 @@ type stairMaps struct {
 	advance blas64.General
 }
 
-// quantityReach bounds the quantities over a block by the sizes of what makes them: |q| ≤ Σ state·|x| + Σ input·max|u|.
-type quantityReach struct {
-	state        []float64 // quantities × states
-	coarse, fine []float64 // quantities × inputs
-}
-
-// reachOf returns, for each quantity, the largest row sum of magnitudes of m over the block's instants, or, by
-// column, the largest magnitudes.
-func (s *simulator) reachOf(m blas64.General, byColumn bool) []float64 {
-	width := 1
-	if byColumn {
-		width = m.Cols
-	}
-	out := make([]float64, s.quantities*width)
+// addReach adds, for each quantity, the largest row sum of magnitudes of m over the block's instants to a column of reach
+// or, by column, the largest magnitudes to as many columns.
+func (s *simulator) addReach(column int, m blas64.General, byColumn bool) {
 	for r := range m.Rows {
-		q, sum := r/s.grid.base, 0.
+		out := s.reach.Data[r/s.grid.base*s.reach.Stride+column:]
+		sum := 0.
 		for c, v := range m.Data[r*m.Stride : r*m.Stride+m.Cols] {
 			if byColumn {
-				out[q*width+c] = math.Max(out[q*width+c], math.Abs(v))
+				out[c] = max(out[c], math.Abs(v))
 			}
 			sum += math.Abs(v)
 		}
 		if !byColumn {
-			out[q] = math.Max(out[q], sum)
+			out[0] = max(out[0], sum)
 		}
 	}
-	return out
 }
 
 // laneRun is a lane's linear circuit.
@@ -319,17 +310,17 @@ func (s *simulator) lift(lanes []*lane) {
 	}
 	s.cellMeans, s.inputMost = make([][]float64, s.inputs), make([]float64, s.inputs)
 	s.isRead, s.most = make([]bool, s.quantities), make([]float64, s.quantities)
-	s.reach.coarse, s.reach.fine = make([]float64, s.inputs*s.quantities), make([]float64, s.inputs*s.quantities)
-	s.reach.state = s.reachOf(s.inspectState, true)
+	s.reach = blas64.General{Rows: s.quantities, Cols: states + 2*s.inputs, Stride: states + 2*s.inputs, Data: make([]float64, s.quantities*(states+2*s.inputs))}
+	s.sizes, s.deviations = make([]float64, s.reach.Cols), make([]float64, s.reach.Cols)
+	s.addReach(0, s.inspectState, true)
 	s.smooth = s.smoothed()
 	s.middles, s.level = make([]float64, s.smooth.Cols), make([]float64, g.base)
-	s.deviation.coarse, s.deviation.fine = make([]float64, s.inputs), make([]float64, s.inputs)
 	for u := range s.inputs {
 		if s.coarse[u].present {
-			copy(s.reach.coarse[u*s.quantities:], s.reachOf(s.coarse[u].inspect, false))
+			s.addReach(states+2*u, s.coarse[u].inspect, false)
 		}
 		if s.cells[u].Rows > 0 {
-			copy(s.reach.fine[u*s.quantities:], s.reachOf(s.cells[u], false))
+			s.addReach(states+2*u+1, s.cells[u], false)
 			s.cellMeans[u] = make([]float64, g.base)
 		}
 	}
@@ -500,49 +491,41 @@ func (s *simulator) range_(o *conversions, first int, step int64) {
 
 // size bounds how far each quantity can go in the block.
 func (s *simulator) size() {
-	clear(s.most)
 	states := len(s.linear)
-	for q := range s.most {
-		sum := 0.
-		for k, a := range s.reach.state[q*states : (q+1)*states] {
-			sum += a * (math.Abs(s.linear[k]) + math.Abs(s.difference[k]))
-		}
-		s.most[q] = sum
+	for k, v := range s.linear {
+		s.middles[k] = v
+		s.deviations[k] = math.Abs(s.difference[k])
+		s.sizes[k] = math.Abs(v) + s.deviations[k]
 	}
-	copy(s.middles, s.linear)
 	for u := range s.inputs {
+		coarse, cells := states+2*u, states+2*u+1
 		s.inputMost[u] = 0
 		if s.sums[u] != nil {
 			low, high := ends(s.sums[u])
-			m := math.Max(high, -low)
-			s.inputMost[u] += m
-			s.middles[states+2*u], s.deviation.coarse[u] = (low+high)/2, (high-low)/2
-			for q := range s.most {
-				s.most[q] += s.reach.coarse[u*s.quantities+q] * m
-			}
+			s.middles[coarse], s.deviations[coarse], s.sizes[coarse] = (low+high)/2, (high-low)/2, max(high, -low)
+			s.inputMost[u] += s.sizes[coarse]
 		}
 		if s.cells[u].Rows > 0 {
-			m := 0.
+			most := 0.
 			clear(s.cellMeans[u])
 			if s.fineSums[u] != nil {
 				low, high := ends(s.fineSums[u])
-				m = math.Max(high, -low)
+				most = max(high, -low)
 				s.grid.means(s.cellMeans[u], s.fineSums[u])
 			}
 			for _, l := range s.lanes {
 				if l.stairs != nil && l.input == u {
-					m += l.stair.most()
+					most += l.stair.most()
 					s.grid.stairMeans(s.cellMeans[u], &l.stair)
 				}
 			}
-			s.inputMost[u] += m
 			low, high := ends(s.cellMeans[u])
-			s.middles[states+2*u+1], s.deviation.fine[u] = (low+high)/2, (high-low)/2
-			for q := range s.most {
-				s.most[q] += s.reach.fine[u*s.quantities+q] * m
-			}
+			s.middles[cells], s.deviations[cells], s.sizes[cells] = (low+high)/2, (high-low)/2, most
+			s.inputMost[u] += most
 		}
 	}
+	clear(s.most)
+	bilinear.Apply(s.most, s.reach, s.sizes)
 }
 
 // between bounds where a quantity goes at the block's instants more closely than most: it follows the state, and the middles
@@ -552,16 +535,7 @@ func (s *simulator) between(q int) (low, high float64) {
 	clear(s.level)
 	bilinear.Apply(s.level, rows(s.smooth, q*s.grid.base, (q+1)*s.grid.base), s.middles)
 	low, high = ends(s.level)
-	more := 0.
-	for u := range s.inputs {
-		more += s.reach.coarse[u*s.quantities+q]*s.deviation.coarse[u] + s.reach.fine[u*s.quantities+q]*s.deviation.fine[u]
-	}
-	if s.parted {
-		states := len(s.linear)
-		for k, a := range s.reach.state[q*states : (q+1)*states] {
-			more += a * math.Abs(s.difference[k])
-		}
-	}
+	more := floats.Dot(s.reach.Data[q*s.reach.Stride:(q+1)*s.reach.Stride], s.deviations)
 	return low - more, high + more
 }
 
