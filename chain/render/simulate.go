@@ -326,19 +326,25 @@ func (s *simulator) lift(lanes []*lane) {
 	}
 }
 
-// smoothed returns the maps to the quantities' values at a block's instants with every input at rest: the columns are the
-// state, then for each input the sum of its coarse columns and that of its cells.
+// smoothed returns the maps to the quantities' values at a block's instants with nothing changing at the base rate: the
+// columns are the state, then for each input the sum of its coarse columns, then its cells.
 func (s *simulator) smoothed() blas64.General {
 	m := s.inspectState
-	out := blas64.General{Rows: m.Rows, Cols: m.Cols + 2*s.inputs, Stride: m.Cols + 2*s.inputs, Data: make([]float64, m.Rows*(m.Cols+2*s.inputs))}
+	width := m.Cols
+	for u := range s.inputs {
+		width += 1 + s.cells[u].Cols
+	}
+	out := blas64.General{Rows: m.Rows, Cols: width, Stride: width, Data: make([]float64, m.Rows*width)}
 	for r := range m.Rows {
-		row := out.Data[r*out.Stride : (r+1)*out.Stride]
-		copy(row, m.Data[r*m.Stride:r*m.Stride+m.Cols])
+		row := out.Data[r*width : (r+1)*width]
+		at := copy(row, m.Data[r*m.Stride:r*m.Stride+m.Cols])
 		for u := range s.inputs {
-			for k, in := range [...]blas64.General{s.coarse[u].inspect, s.cells[u]} {
-				if in.Rows > 0 {
-					row[m.Cols+2*u+k] = floats.Sum(in.Data[r*in.Stride : r*in.Stride+in.Cols])
-				}
+			if in := s.coarse[u].inspect; in.Rows > 0 {
+				row[at] = floats.Sum(in.Data[r*in.Stride : r*in.Stride+in.Cols])
+			}
+			at++
+			if in := s.cells[u]; in.Rows > 0 {
+				at += copy(row[at:], in.Data[r*in.Stride:r*in.Stride+in.Cols])
 			}
 		}
 	}
@@ -497,14 +503,16 @@ func (s *simulator) size() {
 		s.deviations[k] = math.Abs(s.difference[k])
 		s.sizes[k] = math.Abs(v) + s.deviations[k]
 	}
+	middles := states
 	for u := range s.inputs {
 		coarse, cells := states+2*u, states+2*u+1
 		s.inputMost[u] = 0
 		if s.sums[u] != nil {
 			low, high := ends(s.sums[u])
-			s.middles[coarse], s.deviations[coarse], s.sizes[coarse] = (low+high)/2, (high-low)/2, max(high, -low)
+			s.middles[middles], s.deviations[coarse], s.sizes[coarse] = (low+high)/2, (high-low)/2, max(high, -low)
 			s.inputMost[u] += s.sizes[coarse]
 		}
+		middles++
 		if s.cells[u].Rows > 0 {
 			most := 0.
 			clear(s.cellMeans[u])
@@ -519,8 +527,8 @@ func (s *simulator) size() {
 					s.grid.stairMeans(s.cellMeans[u], &l.stair)
 				}
 			}
-			low, high := ends(s.cellMeans[u])
-			s.middles[cells], s.deviations[cells], s.sizes[cells] = (low+high)/2, (high-low)/2, most
+			middles += copy(s.middles[middles:], s.cellMeans[u])
+			s.sizes[cells] = most
 			s.inputMost[u] += most
 		}
 	}
@@ -528,8 +536,8 @@ func (s *simulator) size() {
 	bilinear.Apply(s.most, s.reach, s.sizes)
 }
 
-// between bounds where a quantity goes at the block's instants more closely than most: it follows the state, and the middles
-// of what the inputs are given; only their deviations from there are bounded by their sizes. Both the linear and the
+// between bounds where a quantity goes at the block's instants more closely than most: it follows the state, the cells, and
+// the middles of what the inputs are given at the base rate; only the deviations from there are bounded by their sizes. Both the linear and the
 // limited run lie between low and high.
 func (s *simulator) between(q int) (low, high float64) {
 	clear(s.level)
