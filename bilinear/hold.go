@@ -7,14 +7,14 @@ import (
 )
 
 // Held is the network over a block of steps with every element held on one piece: an affine map from the state before
-// it and the inputs' values over it to the state after it, to conditions that are 0 or more as long as the elements
-// belong on their pieces, and to readings within it. The rows are the states after; the conditions, each at all of the
+// it and the inputs' values over it to the state after it, to conditions that are from 0 to a bound of each as long as the
+// elements belong on their pieces, and to readings within it. The rows are the states after; the conditions, each at all of the
 // steps that it is looked at; then the readings. It may be shared by goroutines.
 type Held struct {
 	FromState  blas64.General   // rows × states
 	FromInput  []blas64.General // of each input, rows × steps
 	Constant   []float64        // what the rows are with nothing in the state and at the inputs
-	Conditions int
+	Most       []float64        // of each condition, the largest that it may be; +Inf: there is none
 }
 
 // Hold builds the map over a number of steps with the elements on the given pieces; the conditions are looked at at the
@@ -28,8 +28,11 @@ func (c *Compiled) Hold(pieces []Piece, steps int, looks []int, readings []Readi
 	if p.state.solve.inverse(p.state.laws, pieces) == nil {
 		return nil
 	}
-	p.values = make([]float64, c.conditions(nil, p.state))
-	h := &Held{Constant: make([]float64, p.rows()), Conditions: len(p.values)}
+	h := &Held{}
+	c.fill(p.state.laws, p.u, p.state.H)
+	c.conditions(p.state, func(_, most float64) { h.Most = append(h.Most, most) })
+	p.values = make([]float64, len(h.Most))
+	h.Constant = make([]float64, p.rows())
 	p.limited = true
 	for j := range steps {
 		p.step()
@@ -126,7 +129,11 @@ func (p *prober) step() {
 		c.fillHomogeneous(s.laws, p.u, s.H)
 	}
 	s.solve.linear(s.laws, s.s0, p.pieces, s.E)
-	c.conditions(p.values, s)
+	i := 0
+	c.conditions(s, func(v, _ float64) {
+		p.values[i] = v
+		i++
+	})
 	c.advance(s, p.u, p.y)
 }
 
@@ -190,65 +197,63 @@ func (c *Compiled) fillHomogeneous(laws []law, u, h []float64) {
 	}
 }
 
-// conditions puts what must be 0 or more for the elements to belong on the state's pieces, after a step's sources are
-// found, into dst, unless it is nil, and returns how many there are. Of a capsule that is cut off they are more than
-// necessary.
-func (c *Compiled) conditions(dst []float64, s *State) int {
-	n := 0
-	put := func(v float64) {
-		if dst != nil {
-			dst[n] = v
-		}
-		n++
-	}
+// conditions tells, after a step's sources are found, of what must be from 0 to a bound for the elements to belong on the
+// state's pieces. Of a capsule that is cut off they are more than necessary.
+func (c *Compiled) conditions(s *State, tell func(v, most float64)) {
+	inf := math.Inf(1)
 	for i := range s.Pieces {
 		l, e, sense := &s.laws[i], s.E[i], s.solve.sense[i]
+		limits := func() {
+			if a := &c.amplifiers[i]; a.lowIn < 0 && a.highIn < 0 {
+				tell(e-l.low, l.high-l.low)
+				return
+			}
+			tell(e-l.low, inf)
+			tell(l.high-e, inf)
+		}
 		switch s.Pieces[i] {
 		case Linear:
 			switch l.kind {
 			case amplifierElement:
-				put(l.high - e)
-				put(e - l.low)
+				limits()
 				if !math.IsInf(c.amplifiers[i].slew, 1) {
-					put(l.up - e)
-					put(e - l.down)
+					tell(e-l.down, l.up-l.down)
 				}
 			case capsuleElement:
-				put(e - l.least)
-				put(sense - l.floor)
+				tell(e-l.least, inf)
+				tell(sense-l.floor, inf)
 			case diodeElement:
 				if l.conducts {
-					put(e - l.off)
+					tell(e-l.off, inf)
 				} else {
-					put(l.forward + l.resist*l.off - sense)
+					tell(l.forward+l.resist*l.off-sense, inf)
 				}
 			}
 		case High: // it asks for more, and can follow its rail
-			put(sense + l.num - l.den*l.high)
+			tell(sense+l.num-l.den*l.high, inf)
 			if a := &c.amplifiers[i]; a.highIn >= 0 && !math.IsInf(a.slew, 1) {
-				put(l.up - l.high)
+				tell(l.up-l.high, inf)
 			}
 		case Low:
-			put(l.den*l.low - sense - l.num)
+			tell(l.den*l.low-sense-l.num, inf)
 			if a := &c.amplifiers[i]; a.lowIn >= 0 && !math.IsInf(a.slew, 1) {
-				put(l.low - l.down)
+				tell(l.low-l.down, inf)
 			}
 		case SlewUp:
-			put(sense + l.num - l.den*l.up)
-			put(l.high - e)
+			tell(sense+l.num-l.den*l.up, inf)
+			limits()
 		case SlewDown:
-			put(l.den*l.down - sense - l.num)
-			put(e - l.low)
+			tell(l.den*l.down-sense-l.num, inf)
+			limits()
 		case CutOff:
-			put(l.least - l.num)
+			tell(l.least-l.num, inf)
 		case Saturated:
-			put(l.num - e)
-			put(e - l.least)
+			tell(l.num-e, inf)
+			tell(e-l.least, inf)
 		case Off:
-			put(l.forward + l.resist*l.off - sense)
+			tell(l.forward+l.resist*l.off-sense, inf)
 		case On:
-			put(e - l.off)
+			tell(e-l.off, inf)
 		}
 	}
-	return n
 }

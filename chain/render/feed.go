@@ -39,7 +39,7 @@ const (
 // is a lane again, which adds to one part what it takes from another, and nothing to the sum.
 type lane struct {
 	part   part
-	from   part // that the same is taken from, or none
+	from   part    // that the same is taken from, or none
 	input  int     // of the network's u
 	fine   bool    // at the internal rate
 	scale  float64 // V or A of u for 1 of the lane's values

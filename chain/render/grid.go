@@ -1,8 +1,7 @@
 package render
 
 import (
-	"math"
-
+	"gonum.org/v1/gonum/blas"
 	"gonum.org/v1/gonum/blas/blas64"
 
 	"midrail/signals/resample"
@@ -29,38 +28,28 @@ func newGrid(p Plan, tracksRate float64) grid {
 // window is how many base samples a block's steps are made from.
 func (g grid) window() int { return g.base + 2*g.reach }
 
-// refine puts the internal steps that a window of base samples makes into dst. The window begins reach−1 samples before
-// the block's first instant at the base rate.
-func (g grid) refine(dst, window []float64) {
+// refined returns the map to a block's internal steps from the window of base samples that they are made from. The window
+// begins reach−1 samples before the block's first instant at the base rate.
+func (g grid) refined() blas64.General {
+	m := blas64.General{Rows: g.steps, Cols: g.window(), Stride: g.window(), Data: make([]float64, g.steps*g.window())}
 	scale := 1 << g.plan.Doublings
 	middle := g.reach * scale
-	for j := range dst {
+	for j := range g.steps {
 		// Step j lies (j+1)/scale base samples behind the block's start, which is the window's sample reach−1.
 		at := (g.reach-1)*scale + j + 1
-		sum := 0.
-		for b := (at - middle + scale - 1) / scale; b*scale <= at+middle && b < len(window); b++ {
-			sum = math.FMA(g.kernel[middle+at-b*scale], window[b], sum)
+		for b := range m.Cols {
+			if k := middle + at - b*scale; k >= 0 && k < len(g.kernel) {
+				m.Data[j*m.Stride+b] = g.kernel[k]
+			}
 		}
-		dst[j] = sum
 	}
+	return m
 }
 
 // fold returns m, whose columns are a block's internal steps, for the base samples that make them.
 func (g grid) fold(m blas64.General) blas64.General {
 	out := blas64.General{Rows: m.Rows, Cols: g.window(), Stride: g.window(), Data: make([]float64, m.Rows*g.window())}
-	unit, steps := make([]float64, g.window()), make([]float64, g.steps)
-	for b := range unit {
-		unit[b] = 1
-		g.refine(steps, unit)
-		unit[b] = 0
-		for r := range m.Rows {
-			sum := 0.
-			for j, v := range steps {
-				sum = math.FMA(m.Data[r*m.Stride+j], v, sum)
-			}
-			out.Data[r*out.Stride+b] = sum
-		}
-	}
+	blas64.Gemm(blas.NoTrans, blas.NoTrans, 1, m, g.refined(), 0, out)
 	return out
 }
 

@@ -17,8 +17,9 @@ type limiter struct {
 	state         *bilinear.State
 	cell          grid // of blocks of one cell
 	cells, eighth *holder
-	x, rows       []float64 // what a map is applied to, and what it gives
-	y             []float64 // watched nodes
+	refined       blas64.General // to a cell's steps, from a window of base samples
+	x, rows       []float64      // what a map is applied to, and what it gives
+	y             []float64      // watched nodes
 }
 
 // holder has the maps over a stretch of steps with the elements on the pieces met so far.
@@ -34,6 +35,7 @@ type holder struct {
 // inputs is given.
 type heldRun struct {
 	looks       int            // at each condition
+	most        []float64      // of each condition
 	maps        blas64.General // to the states after, the conditions, the watched nodes and the sources at the end
 	constant    []float64
 	convert     blas64.General // to the ports at the last step, and to the first of them at the one before
@@ -52,6 +54,7 @@ const (
 func newLimiter(s *simulator, plain bool) *limiter {
 	l := &limiter{plain: plain, state: s.circuit.Start(), cell: s.grid, y: make([]float64, len(s.watch))}
 	l.cell.base, l.cell.steps = 1, 1<<s.grid.plan.Doublings
+	l.refined = l.cell.refined()
 	l.cells = newHolder(s, l.cell.steps, true)
 	l.eighth = newHolder(s, max(1, l.cell.steps/eighths), false)
 	l.x = make([]float64, max(l.cells.columns, l.eighth.columns))
@@ -171,7 +174,7 @@ func (h *holder) build(s *simulator) *heldRun {
 	}
 	main := all.Rows - converted
 	one := &heldRun{
-		looks: len(looks), maps: rows(all, 0, main), constant: held.Constant[:main],
+		looks: len(looks), most: held.Most, maps: rows(all, 0, main), constant: held.Constant[:main],
 		convert: rows(all, main, all.Rows), convertFrom: held.Constant[main:],
 	}
 	for _, p := range pieces {
@@ -189,21 +192,17 @@ func constant(m blas64.General) blas64.General {
 	return out
 }
 
-// stays tells whether a condition, by its values at the looks, is kept throughout: none comes nearer to 0 than the values
-// bend from one look to the next, of which a parabola needs an eighth between two.
-func stays(v []float64) bool {
-	bend := 0.
-	for i := 1; i+1 < len(v); i++ {
-		if b := math.Abs(v[i-1] - 2*v[i] + v[i+1]); b > bend {
-			bend = b
+// stays tells whether a condition, by its values at the looks, is from 0 to most throughout: none comes nearer to the ends
+// than the values bend from one look to the next, of which a parabola needs an eighth between two.
+func stays(v []float64, most float64) bool {
+	bend, low, high := 0., v[0], v[0]
+	for i, x := range v[1:] {
+		low, high = min(low, x), max(high, x)
+		if i+2 < len(v) {
+			bend = max(bend, math.Abs(v[i]-2*x+v[i+2]))
 		}
 	}
-	for _, x := range v {
-		if !(x > bend) {
-			return false
-		}
-	}
-	return true
+	return low > bend && high < most-bend
 }
 
 // stepBlock takes the limited run through a block. What its overload is at the conversions is known once the lanes have
@@ -286,9 +285,9 @@ func (b *limitedBlock) take(h *holder, from int) bool {
 	out := append(l.rows[:0], one.constant...)
 	l.rows = out
 	bilinear.Apply(out, one.maps, x)
-	conditions := len(out) - states - len(s.watch) - len(s.n.Amplifiers)
-	for i := 0; i < conditions; i += one.looks {
-		if !stays(out[states+i : states+i+one.looks]) {
+	conditions := len(one.most) * one.looks
+	for i, most := range one.most {
+		if !stays(out[states+i*one.looks:states+(i+1)*one.looks], most) {
 			return false
 		}
 	}
@@ -317,7 +316,7 @@ func (b *limitedBlock) prepare(from int) {
 	for u, dst := range s.steps {
 		clear(dst)
 		if s.sums[u] != nil {
-			l.cell.refine(dst, s.sums[u][cell:cell+l.cell.window()])
+			bilinear.Apply(dst, l.refined, s.sums[u][cell:cell+l.cell.window()])
 		}
 		if s.fineSums[u] != nil {
 			for j, v := range s.fineSums[u][from : from+l.cell.steps] {
