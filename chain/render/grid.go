@@ -1,6 +1,8 @@
 package render
 
 import (
+	"math"
+
 	"gonum.org/v1/gonum/blas"
 	"gonum.org/v1/gonum/blas/blas64"
 
@@ -63,6 +65,16 @@ func (g grid) means(dst, steps []float64) {
 		}
 		dst[i] = sum / float64(scale)
 	}
+}
+
+// ripple returns by how much steps are off the means of each base sample's at most.
+func (g grid) ripple(steps, means []float64) float64 {
+	scale := 1 << g.plan.Doublings
+	most := 0.
+	for i, v := range steps {
+		most = max(most, math.Abs(v-means[i/scale]))
+	}
+	return most
 }
 
 // stairMeans adds the means of the steps of each base sample to dst.

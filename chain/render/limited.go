@@ -195,13 +195,7 @@ func constant(m blas64.General) blas64.General {
 // stays tells whether a condition, by its values at the looks, is from 0 to most throughout: none comes nearer to the ends
 // than the values bend from one look to the next, of which a parabola needs an eighth between two.
 func stays(v []float64, most float64) bool {
-	bend, low, high := 0., v[0], v[0]
-	for i, x := range v[1:] {
-		low, high = min(low, x), max(high, x)
-		if i+2 < len(v) {
-			bend = max(bend, math.Abs(v[i]-2*x+v[i+2]))
-		}
-	}
+	low, high, bend := spread(v)
 	return low > bend && high < most-bend
 }
 

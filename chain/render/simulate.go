@@ -57,10 +57,11 @@ type simulator struct {
 
 	linear, difference []float64 // states: the sum of the lanes'; limited minus linear
 	parted             bool      // whether difference is not 0
-	held               bool      // whether the last block could touch a limit
+	held               bool      // whether the last block touched a limit
 	sums, fineSums     [][]float64
 	cellMeans          [][]float64 // of each input with fine lanes or stairs
 	inputMost          []float64   // V or A, how large each input of u gets in the block
+	ripple             []float64   // V or A, by how much each is off its cells' means at most
 	deviations         []float64   // as sizes: of the difference, and of what the inputs are given from its middle
 	level              []float64
 	isRead             []bool    // of each quantity, in this block
@@ -308,7 +309,7 @@ func (s *simulator) lift(lanes []*lane) {
 	for u := range s.inputs {
 		s.steps[u] = make([]float64, scale)
 	}
-	s.cellMeans, s.inputMost = make([][]float64, s.inputs), make([]float64, s.inputs)
+	s.cellMeans, s.inputMost, s.ripple = make([][]float64, s.inputs), make([]float64, s.inputs), make([]float64, s.inputs)
 	s.isRead, s.most = make([]bool, s.quantities), make([]float64, s.quantities)
 	s.reach = blas64.General{Rows: s.quantities, Cols: states + 2*s.inputs, Stride: states + 2*s.inputs, Data: make([]float64, s.quantities*(states+2*s.inputs))}
 	s.sizes, s.deviations = make([]float64, s.reach.Cols), make([]float64, s.reach.Cols)
@@ -462,7 +463,7 @@ func (s *simulator) block(c *chunk, o *conversions, b int, step int64) {
 	near := s.look()
 	first := b * s.grid.conversions
 	stepped := near || s.held || s.always
-	s.held = near
+	s.held = false
 	if stepped {
 		s.stepBlock(o, first, step)
 	} else {
@@ -472,6 +473,7 @@ func (s *simulator) block(c *chunk, o *conversions, b int, step int64) {
 	s.advanceLanes(c, o, b, stepped)
 	if stepped {
 		s.compare(o, first)
+		s.held = s.touched
 	}
 	s.range_(o, first, step)
 	s.scope.close(step + int64(s.grid.steps))
@@ -506,7 +508,7 @@ func (s *simulator) size() {
 	middles := states
 	for u := range s.inputs {
 		coarse, cells := states+2*u, states+2*u+1
-		s.inputMost[u] = 0
+		s.inputMost[u], s.ripple[u] = 0, 0
 		if s.sums[u] != nil {
 			low, high := ends(s.sums[u])
 			s.middles[middles], s.deviations[coarse], s.sizes[coarse] = (low+high)/2, (high-low)/2, max(high, -low)
@@ -520,10 +522,14 @@ func (s *simulator) size() {
 				low, high := ends(s.fineSums[u])
 				most = max(high, -low)
 				s.grid.means(s.cellMeans[u], s.fineSums[u])
+				s.ripple[u] += s.grid.ripple(s.fineSums[u], s.cellMeans[u])
 			}
 			for _, l := range s.lanes {
 				if l.stairs != nil && l.input == u {
 					most += l.stair.most()
+					for _, c := range l.stair.changes {
+						s.ripple[u] += math.Abs(c.by)
+					}
 					s.grid.stairMeans(s.cellMeans[u], &l.stair)
 				}
 			}
@@ -653,12 +659,29 @@ func (s *simulator) passes(q int, low, high float64) bool {
 		return false
 	}
 	linear, moved := s.read(q)
+	x := s.level
 	for i, v := range linear {
-		if v = (v + moved[i]) * margin; v >= high || v <= low {
-			return true
+		x[i] = v + moved[i]
+	}
+	// What lies between the instants: the values' bend from one to the next, of which a parabola needs an eighth; and what
+	// inputs do within a cell.
+	least, most, bend := spread(x)
+	for u, r := range s.ripple {
+		bend += s.reach.Data[q*s.reach.Stride+len(s.linear)+2*u+1] * r
+	}
+	return least-bend <= low || most+bend >= high
+}
+
+// spread returns the least and the largest value, and by how much the values bend at most.
+func spread(x []float64) (least, most, bend float64) {
+	least, most = x[0], x[0]
+	for i, v := range x[1:] {
+		least, most = min(least, v), max(most, v)
+		if i+2 < len(x) {
+			bend = max(bend, math.Abs(x[i]-2*v+x[i+2]))
 		}
 	}
-	return false
+	return least, most, bend
 }
 
 // ends returns the least and the largest value.
