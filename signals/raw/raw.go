@@ -3,7 +3,6 @@ package raw
 
 import (
 	"bufio"
-	"encoding/binary"
 	"errors"
 	"fmt"
 	"io"
@@ -67,6 +66,7 @@ type File struct {
 	src    *bufio.Reader
 	format Format
 	frames int64
+	read   int64 // frames
 	block  []byte
 	note   string
 }
@@ -81,15 +81,21 @@ func New(name string, src io.ReadSeeker, f Format) (*File, error) {
 	if _, err := src.Seek(0, io.SeekStart); err != nil {
 		return nil, err
 	}
-	r := &File{name: name, src: bufio.NewReaderSize(src, 1<<16), format: f}
 	width := int64(f.Channels * f.Bits / 8)
-	if r.frames = size / width; r.frames == 0 {
+	r := Part(name, src, f, size/width)
+	if r.frames == 0 {
 		return nil, &signals.FormatError{File: name, At: "byte 0", Text: "there is not one frame of sound in it", Remedy: "record again, or give its format with --raw"}
 	}
 	if left := size % width; left > 0 {
 		r.note = fmt.Sprintf("the file ends within a frame; its last %d bytes are left out: is its format right?", left)
 	}
 	return r, nil
+}
+
+// Part reads a number of frames from src, as they lie within a file of another kind. That they are not all there is an
+// error of reading.
+func Part(name string, src io.Reader, f Format, frames int64) *File {
+	return &File{name: name, src: bufio.NewReaderSize(src, 1<<16), format: f, frames: frames}
 }
 
 // Rate returns the rate in Hz.
@@ -116,44 +122,52 @@ func (r *File) ReadFrames(dst []float64) (int, error) {
 	if len(dst)%width != 0 {
 		panic("raw: not a whole number of frames")
 	}
-	size := r.format.Bits / 8
-	for done := 0; done < len(dst); {
-		n := min(len(dst)-done, blockFrames*width)
-		r.block = append(r.block[:0], make([]byte, n*size)...)
-		got, err := io.ReadFull(r.src, r.block)
-		whole := got / (size * width) * width
-		for i := range whole {
-			dst[done+i] = r.format.value(r.block[i*size : (i+1)*size])
+	done := 0
+	for done < len(dst)/width {
+		frames := int(min(int64(len(dst)/width-done), blockFrames, r.frames-r.read))
+		if frames == 0 {
+			return done, io.EOF
 		}
-		done += whole
-		if errors.Is(err, io.EOF) || errors.Is(err, io.ErrUnexpectedEOF) {
-			return done / width, io.EOF
+		size := frames * width * r.format.Bits / 8
+		if cap(r.block) < size {
+			r.block = make([]byte, size)
 		}
-		if err != nil {
-			return done / width, fmt.Errorf("%s: %w", r.name, err)
+		r.block = r.block[:size]
+		if _, err := io.ReadFull(r.src, r.block); err != nil {
+			if errors.Is(err, io.EOF) {
+				err = io.ErrUnexpectedEOF // it has become shorter
+			}
+			return done, fmt.Errorf("%s: reading frame %d: %w", r.name, r.read, err)
 		}
+		r.format.decode(dst[done*width:(done+frames)*width], r.block)
+		done, r.read = done+frames, r.read+int64(frames)
 	}
-	return len(dst) / width, nil
+	return done, nil
 }
 
-// value returns the sample of some bytes.
-func (f Format) value(b []byte) float64 {
-	var wide [8]byte // the sample at its top, the most significant byte first
-	for i, x := range b {
-		if f.Big {
-			wide[i] = x
-		} else {
-			wide[len(b)-1-i] = x
+// decode fills dst with the samples of b.
+func (f Format) decode(dst []float64, b []byte) {
+	size, scale := f.Bits/8, math.Ldexp(1, 1-f.Bits)
+	step, most := 1, size-1 // towards the most significant byte, which is the last
+	if f.Big {
+		step, most = -1, 0
+	}
+	for i := range dst {
+		sample := b[i*size : (i+1)*size]
+		var code uint64 // the sample at its top
+		for k, at := 0, most-step*(size-1); k < size; k, at = k+1, at+step {
+			code = code>>8 | uint64(sample[at])<<56
 		}
+		switch {
+		case f.Kind == 'f' && f.Bits == 64:
+			dst[i] = math.Float64frombits(code)
+			continue
+		case f.Kind == 'f':
+			dst[i] = float64(math.Float32frombits(uint32(code >> 32)))
+			continue
+		case f.Kind == 'u':
+			code ^= 1 << 63
+		}
+		dst[i] = float64(int64(code)>>(64-f.Bits)) * scale
 	}
-	code := binary.BigEndian.Uint64(wide[:])
-	switch {
-	case f.Kind == 'f' && f.Bits == 64:
-		return math.Float64frombits(code)
-	case f.Kind == 'f':
-		return float64(math.Float32frombits(uint32(code >> 32)))
-	case f.Kind == 'u':
-		code ^= 1 << 63
-	}
-	return float64(int64(code)>>(64-f.Bits)) * math.Ldexp(1, 1-f.Bits)
 }

@@ -9,10 +9,8 @@ import (
 	"math"
 	"os"
 
-	"github.com/go-audio/audio"
-	"github.com/go-audio/wav"
-
 	"midrail/signals"
+	"midrail/signals/raw"
 )
 
 // Format tags of the fmt chunk.
@@ -22,29 +20,11 @@ const (
 	tagExtensible = 0xFFFE
 )
 
-// format is what the fmt chunk says.
-type format struct {
-	tag      uint16 // tagPCM or tagFloat, from the sub-format where extensible
-	channels int
-	rate     uint32
-	align    int // bytes in a frame
-	bits     int // of a sample's container
-	valid    int // of them, those that carry sound
-}
-
-// File is a WAV file opened for reading. It is a [signals.Track].
+// File is a WAV file opened for reading: raw samples behind a header. It is a [signals.Track].
 type File struct {
-	name   string
-	closer io.Closer
-	src    io.Reader // positioned in the data
-	format format
-	data   int64 // byte at which the data begins
-	frames int64 // in the file
-	read   int64 // frames
+	*raw.File
 	note   string
-
-	block  []byte // room for a header, then the samples read
-	buffer audio.IntBuffer
+	closer io.Closer // nil: what New was given stays its caller's
 }
 
 // Open opens a WAV file. The error is a *[signals.FormatError] where the file is not one that is read.
@@ -53,7 +33,7 @@ func Open(path string) (*File, error) {
 	if err != nil {
 		return nil, err
 	}
-	w, err := open(path, f)
+	w, err := New(path, f)
 	if err != nil {
 		f.Close()
 		return nil, err
@@ -62,11 +42,9 @@ func Open(path string) (*File, error) {
 	return w, nil
 }
 
-// New reads a WAV file from src; name is what faults call it.
-func New(name string, src io.ReadSeeker) (*File, error) { return open(name, src) }
-
-func open(name string, src io.ReadSeeker) (*File, error) {
-	f := &File{name: name}
+// New reads a WAV file from src; name is what faults call it. The error is a *[signals.FormatError] where the file is not
+// one that is read.
+func New(name string, src io.ReadSeeker) (*File, error) {
 	size, err := src.Seek(0, io.SeekEnd)
 	if err != nil {
 		return nil, err
@@ -74,68 +52,88 @@ func open(name string, src io.ReadSeeker) (*File, error) {
 	if _, err := src.Seek(0, io.SeekStart); err != nil {
 		return nil, err
 	}
-	if err := f.walk(src, size); err != nil {
+	h := &header{name: name}
+	if err := h.walk(src, size); err != nil {
 		return nil, err
 	}
-	if _, err := src.Seek(f.data, io.SeekStart); err != nil {
+	if h.frames == 0 {
+		return nil, h.fault("data", h.data, "there is not one frame of sound in it", "record again")
+	}
+	if _, err := src.Seek(h.data, io.SeekStart); err != nil {
 		return nil, err
 	}
-	if f.frames == 0 {
-		return nil, f.fault("data", f.data, "there is not one frame of sound in it", "record again")
+	return &File{File: raw.Part(name, src, h.format, h.frames), note: h.note}, nil
+}
+
+// Note returns a word about what is missing from the file, or "".
+func (f *File) Note() string { return f.note }
+
+// Close closes the file that [Open] opened.
+func (f *File) Close() error {
+	if f.closer == nil {
+		return nil
 	}
-	f.src = io.LimitReader(src, f.frames*int64(f.format.align))
-	return f, nil
+	return f.closer.Close()
+}
+
+// header is what a file says before its sound.
+type header struct {
+	name   string
+	format raw.Format // of no channels before a fmt chunk was read
+	data   int64      // byte at which the sound begins
+	frames int64
+	note   string
 }
 
 // fault is one in a chunk, or, without its name, in the file as a whole.
-func (f *File) fault(chunk string, at int64, text, remedy string) *signals.FormatError {
+func (h *header) fault(chunk string, at int64, text, remedy string) *signals.FormatError {
 	where := fmt.Sprintf("at byte %d", at)
 	if chunk != "" {
 		where = fmt.Sprintf("chunk %q %s", chunk, where)
 	}
-	return &signals.FormatError{File: f.name, At: where, Text: text, Remedy: remedy}
+	return &signals.FormatError{File: h.name, At: where, Text: text, Remedy: remedy}
 }
 
-func (f *File) unsupported(chunk string, at int64, text, remedy string) *signals.FormatError {
-	e := f.fault(chunk, at, text, remedy)
+func (h *header) unsupported(chunk string, at int64, text, remedy string) *signals.FormatError {
+	e := h.fault(chunk, at, text, remedy)
 	e.Unsupported = true
 	return e
 }
 
 // walk finds the format and the data. Chunks that are not needed are skipped unread.
-func (f *File) walk(src io.ReadSeeker, size int64) error {
+func (h *header) walk(src io.ReadSeeker, size int64) error {
 	var head [12]byte
 	if size == 0 {
-		return f.fault("", 0, "the file is empty", "record again")
+		return h.fault("", 0, "the file is empty", "record again")
 	}
 	if _, err := io.ReadFull(src, head[:]); err != nil {
-		return short(err, f.fault("", 0, "the file ends before its header does", "record again, or copy it again"))
+		return short(err, h.fault("", 0, "the file ends before its header does", "record again, or copy it again"))
 	}
 	switch string(head[:4]) {
 	case "RIFF", "RF64", "BW64":
 	case "RIFX":
-		return f.unsupported("", 0, "its bytes are in the other order (RIFX)", "convert it to RIFF")
+		return h.unsupported("", 0, "its bytes are in the other order (RIFX)", "convert it to RIFF")
 	default:
-		return f.fault("", 0, fmt.Sprintf("it begins with %q, not RIFF", printable(head[:4])), "is this a recording? samples without a header are read with --raw")
+		return h.fault("", 0, fmt.Sprintf("it begins with %q, not RIFF", printable(head[:4])), "is this a recording? samples without a header are read with --raw")
 	}
 	if string(head[8:]) != "WAVE" {
-		return f.fault("", 8, fmt.Sprintf("it holds %q, not WAVE", printable(head[8:])), "is this a WAV file?")
+		return h.fault("", 8, fmt.Sprintf("it holds %q, not WAVE", printable(head[8:])), "is this a WAV file?")
 	}
 	ended := int64(binary.LittleEndian.Uint32(head[4:]))+8 == size // the header was written when the sound had been
 	long := int64(0)                                               // the data's size by a ds64 chunk
 	for at := int64(12); ; {
-		var h [8]byte
+		var b [8]byte
 		if _, err := src.Seek(at, io.SeekStart); err != nil {
 			return err
 		}
-		if _, err := io.ReadFull(src, h[:]); err != nil {
+		if _, err := io.ReadFull(src, b[:]); err != nil {
 			missing := "data"
-			if f.format.align == 0 {
+			if h.format.Channels == 0 {
 				missing = "fmt"
 			}
-			return short(err, f.fault("", at, "there is no "+missing+" chunk", "record again, or copy it again"))
+			return short(err, h.fault("", at, "there is no "+missing+" chunk", "record again, or copy it again"))
 		}
-		id, length := string(h[:4]), int64(binary.LittleEndian.Uint32(h[4:]))
+		id, length := string(b[:4]), int64(binary.LittleEndian.Uint32(b[4:]))
 		body := at + 8
 		switch id {
 		case "ds64":
@@ -146,21 +144,21 @@ func (f *File) walk(src io.ReadSeeker, size int64) error {
 				}
 			}
 		case "fmt ":
-			if err := f.readFormat(src, body, length); err != nil {
+			if err := h.readFormat(src, body, length); err != nil {
 				return err
 			}
 		case "data":
-			if f.format.align == 0 {
-				return f.fault("data", at, "the sound comes before the fmt chunk", "convert the file")
+			if h.format.Channels == 0 {
+				return h.fault("data", at, "the sound comes before the fmt chunk", "convert the file")
 			}
 			if length == math.MaxUint32 && long > 0 {
 				length, ended = long, true
 			}
-			f.findData(body, length, size, ended)
+			h.findData(body, length, size, ended)
 			return nil
 		}
 		next := body + length
-		if length%2 != 0 && f.padded(src, next) {
+		if length%2 != 0 && padded(src, next) {
 			next++
 		}
 		at = next
@@ -176,7 +174,7 @@ func short(err error, fault error) error {
 }
 
 // padded tells whether a chunk of odd length is followed by its pad byte, as it should be, or by the next chunk's name.
-func (f *File) padded(src io.ReadSeeker, at int64) bool {
+func padded(src io.ReadSeeker, at int64) bool {
 	var b [4]byte
 	if _, err := src.Seek(at, io.SeekStart); err != nil {
 		return true
@@ -200,24 +198,24 @@ func isID(b []byte) bool {
 const neverWritten = 0x7ffff000
 
 // findData finds how much sound there is. The header says length bytes, ended that it was written after them.
-func (f *File) findData(body, length, size int64, ended bool) {
-	f.data = body
-	align := int64(f.format.align)
+func (h *header) findData(body, length, size int64, ended bool) {
+	h.data = body
+	align := int64(h.format.Channels * h.format.Bits / 8)
 	left := max(size-body, 0)
 	switch {
 	case !ended && (length == 0 && left > 0 || length >= neverWritten && length > left || length == math.MaxUint32):
-		f.note = "the length of the sound was never written, as from a pipe, or the file is cut short; used to its end"
+		h.note = "the length of the sound was never written, as from a pipe, or the file is cut short; used to its end"
 		if left%align != 0 {
-			f.note += fmt.Sprintf(", but for %d bytes of a last frame", left%align)
+			h.note += fmt.Sprintf(", but for %d bytes of a last frame", left%align)
 		}
 		length = left
 	case length > left:
-		f.note = fmt.Sprintf("the file is cut short: %d of %d frames are there, and used", left/align, length/align)
+		h.note = fmt.Sprintf("the file is cut short: %d of %d frames are there, and used", left/align, length/align)
 		length = left
 	case length%align != 0:
-		f.note = fmt.Sprintf("the sound ends within a frame; its last %d bytes are left out", length%align)
+		h.note = fmt.Sprintf("the sound ends within a frame; its last %d bytes are left out", length%align)
 	}
-	f.frames = length / align
+	h.frames = length / align
 }
 
 func printable(b []byte) string {
@@ -232,166 +230,54 @@ func printable(b []byte) string {
 // subFormatTail is the tail of the identifiers of an extensible format, whose first two bytes are a tag.
 var subFormatTail = []byte{0x00, 0x00, 0x00, 0x00, 0x10, 0x00, 0x80, 0x00, 0x00, 0xAA, 0x00, 0x38, 0x9B, 0x71}
 
-func (f *File) readFormat(src io.Reader, at, length int64) error {
+func (h *header) readFormat(src io.Reader, at, length int64) error {
 	if length < 16 {
-		return f.fault("fmt ", at, fmt.Sprintf("it has %d bytes, at least 16 belong there", length), "convert the file")
+		return h.fault("fmt ", at, fmt.Sprintf("it has %d bytes, at least 16 belong there", length), "convert the file")
 	}
 	b := make([]byte, min(length, 40))
 	if _, err := io.ReadFull(src, b); err != nil {
-		return short(err, f.fault("fmt ", at, "the file ends within it", "copy the file again"))
+		return short(err, h.fault("fmt ", at, "the file ends within it", "copy the file again"))
 	}
 	le := binary.LittleEndian
-	x := format{tag: le.Uint16(b), channels: int(le.Uint16(b[2:])), rate: le.Uint32(b[4:]), align: int(le.Uint16(b[12:])), bits: int(le.Uint16(b[14:]))}
-	x.valid = x.bits
-	if x.tag == tagExtensible {
+	tag, channels, rate, align, bits := le.Uint16(b), int(le.Uint16(b[2:])), float64(le.Uint32(b[4:])), int(le.Uint16(b[12:])), int(le.Uint16(b[14:]))
+	valid := bits // of them, those that carry sound, which are the upper ones
+	if tag == tagExtensible {
 		if len(b) < 40 {
-			return f.fault("fmt ", at, "an extensible format has 40 bytes", "convert the file")
+			return h.fault("fmt ", at, "an extensible format has 40 bytes", "convert the file")
 		}
-		if v := int(le.Uint16(b[18:])); v > 0 {
-			x.valid = v
-		}
-		if x.tag = le.Uint16(b[24:]); !bytes.Equal(b[26:40], subFormatTail) {
-			return f.unsupported("fmt ", at+24, "its sub-format is not one that is known", "convert it to integer or floating-point PCM")
+		valid = int(le.Uint16(b[18:]))
+		if tag = le.Uint16(b[24:]); !bytes.Equal(b[26:40], subFormatTail) {
+			return h.unsupported("fmt ", at+24, "its sub-format is not one that is known", "convert it to integer or floating-point PCM")
 		}
 	}
-	switch x.tag {
+	switch tag {
 	case tagPCM:
-		if x.bits != 8 && x.bits != 16 && x.bits != 24 && x.bits != 32 {
-			return f.unsupported("fmt ", at+14, fmt.Sprintf("samples of %d bits are not read", x.bits), "convert it to 8, 16, 24 or 32 bits")
+		if bits != 8 && bits != 16 && bits != 24 && bits != 32 {
+			return h.unsupported("fmt ", at+14, fmt.Sprintf("samples of %d bits are not read", bits), "convert it to 8, 16, 24 or 32 bits")
 		}
 	case tagFloat:
-		if x.bits != 32 && x.bits != 64 {
-			return f.unsupported("fmt ", at+14, fmt.Sprintf("floating-point samples of %d bits are not read", x.bits), "convert it to 32 or 64 bits")
+		if bits != 32 && bits != 64 {
+			return h.unsupported("fmt ", at+14, fmt.Sprintf("floating-point samples of %d bits are not read", bits), "convert it to 32 or 64 bits")
 		}
 	default:
-		return f.unsupported("fmt ", at, fmt.Sprintf("format %d is not PCM", x.tag), "convert it to integer or floating-point PCM")
+		return h.unsupported("fmt ", at, fmt.Sprintf("format %d is not PCM", tag), "convert it to integer or floating-point PCM")
 	}
 	switch {
-	case x.channels < 1 || x.channels > signals.MostChannels:
-		return f.unsupported("fmt ", at+2, fmt.Sprintf("%d channels", x.channels), fmt.Sprintf("1 to %d are read", signals.MostChannels))
-	case float64(x.rate) < signals.LeastRate || float64(x.rate) > signals.MostRate:
-		return f.unsupported("fmt ", at+4, fmt.Sprintf("a rate of %d Hz", x.rate), fmt.Sprintf("%g to %g Hz are read", signals.LeastRate, signals.MostRate))
-	case x.align != x.channels*x.bits/8:
-		return f.fault("fmt ", at+12, fmt.Sprintf("a frame of %d bytes does not hold %d channels of %d bits", x.align, x.channels, x.bits), "convert the file")
-	case x.valid > x.bits:
-		return f.fault("fmt ", at+18, fmt.Sprintf("%d of %d bits are said to be valid", x.valid, x.bits), "convert the file")
+	case channels < 1 || channels > signals.MostChannels:
+		return h.unsupported("fmt ", at+2, fmt.Sprintf("%d channels", channels), fmt.Sprintf("1 to %d are read", signals.MostChannels))
+	case rate < signals.LeastRate || rate > signals.MostRate:
+		return h.unsupported("fmt ", at+4, fmt.Sprintf("a rate of %.0f Hz", rate), fmt.Sprintf("%g to %g Hz are read", signals.LeastRate, signals.MostRate))
+	case align != channels*bits/8:
+		return h.fault("fmt ", at+12, fmt.Sprintf("a frame of %d bytes does not hold %d channels of %d bits", align, channels, bits), "convert the file")
+	case valid > bits:
+		return h.fault("fmt ", at+18, fmt.Sprintf("%d of %d bits are said to be valid", valid, bits), "convert the file")
 	}
-	f.format = x
-	return nil
-}
-
-// Rate returns the rate in Hz.
-func (f *File) Rate() float64 { return float64(f.format.rate) }
-
-// Channels returns the number of channels.
-func (f *File) Channels() int { return f.format.channels }
-
-// Frames returns the number of frames.
-func (f *File) Frames() int64 { return f.frames }
-
-// Note returns a word about what is missing from the file, or "".
-func (f *File) Note() string { return f.note }
-
-// Close closes the file that [Open] opened.
-func (f *File) Close() error {
-	if f.closer == nil {
-		return nil
-	}
-	return f.closer.Close()
-}
-
-// blockFrames is how many frames are taken from the file at once.
-const blockFrames = 4096
-
-// ReadFrames implements [signals.Track]. Floating-point samples are given as they are, finite or not.
-func (f *File) ReadFrames(dst []float64) (int, error) {
-	width := f.format.channels
-	if len(dst)%width != 0 {
-		panic("wav: not a whole number of frames")
-	}
-	done := 0
-	for done < len(dst)/width {
-		n, err := f.readBlock(dst[done*width:])
-		done += n
-		if err != nil {
-			return done, err
-		}
-	}
-	return done, nil
-}
-
-// readBlock reads up to blockFrames frames.
-func (f *File) readBlock(dst []float64) (int, error) {
-	width := f.format.channels
-	frames := int(min(int64(len(dst)/width), blockFrames, f.frames-f.read))
-	if frames == 0 {
-		return 0, io.EOF
-	}
-	size := frames * f.format.align
-	f.block = append(f.block[:0], make([]byte, headerSize+size)...)
-	if _, err := io.ReadFull(f.src, f.block[headerSize:]); err != nil {
-		return 0, fmt.Errorf("%s: reading frame %d: %w", f.name, f.read, err)
-	}
-	dst = dst[:frames*width]
-	var err error
-	if f.format.tag == tagFloat {
-		f.floats(dst)
-	} else {
-		err = f.codes(dst)
-	}
-	f.read += int64(frames)
-	return frames, err
-}
-
-// headerSize is the length of the header that [File.codes] puts before a block.
-const headerSize = 44
-
-// codes decodes a block of integer samples. The library gets the block alone, behind a header that says what was
-// found: it trusts what a file says of itself.
-func (f *File) codes(dst []float64) error {
-	x := f.format
-	h := f.block[:0]
-	le := binary.LittleEndian
-	size := uint32(len(f.block) - headerSize)
-	h = append(h, "RIFF"...)
-	h = le.AppendUint32(h, size+36)
-	h = append(h, "WAVEfmt "...)
-	h = le.AppendUint32(h, 16)
-	h = le.AppendUint16(h, tagPCM)
-	h = le.AppendUint16(h, uint16(x.channels))
-	h = le.AppendUint32(h, x.rate)
-	h = le.AppendUint32(h, x.rate*uint32(x.align))
-	h = le.AppendUint16(h, uint16(x.align))
-	h = le.AppendUint16(h, uint16(x.bits))
-	h = append(h, "data"...)
-	le.AppendUint32(h, size)
-	if cap(f.buffer.Data) < len(dst) {
-		f.buffer.Data = make([]int, len(dst))
-	}
-	f.buffer.Data = f.buffer.Data[:len(dst)]
-	n, err := wav.NewDecoder(bytes.NewReader(f.block)).PCMBuffer(&f.buffer)
-	if err != nil || n != len(dst) {
-		return fmt.Errorf("%s: decoding at frame %d: %d of %d samples: %w", f.name, f.read, n, len(dst), err)
-	}
-	middle := 0
-	if x.bits == 8 {
-		middle = 128 // 8-bit samples are unsigned
-	}
-	scale := math.Ldexp(1, 1-x.bits)
-	for i, code := range f.buffer.Data {
-		dst[i] = float64(code-middle) * scale
+	h.format = raw.Format{Kind: 's', Bits: bits, Rate: rate, Channels: channels}
+	switch {
+	case tag == tagFloat:
+		h.format.Kind = 'f'
+	case bits == 8:
+		h.format.Kind = 'u'
 	}
 	return nil
-}
-
-// floats decodes a block of floating-point samples, which the library reads as integers.
-func (f *File) floats(dst []float64) {
-	b := f.block[headerSize:]
-	for i := range dst {
-		if f.format.bits == 64 {
-			dst[i] = math.Float64frombits(binary.LittleEndian.Uint64(b[8*i:]))
-		} else {
-			dst[i] = float64(math.Float32frombits(binary.LittleEndian.Uint32(b[4*i:])))
-		}
-	}
 }

@@ -1,6 +1,7 @@
 package wav
 
 import (
+	"bytes"
 	"errors"
 	"io"
 	"math"
@@ -62,4 +63,26 @@ func readAll(t *testing.T, path string, rate float64) []float64 {
 		t.Fatalf("%d frames of %d, %v", n, f.Frames(), err)
 	}
 	return got[:n]
+}
+
+func BenchmarkRead(b *testing.B) {
+	const rate = 48000
+	for name, f := range map[string]flavour{
+		"16 bits": {tag: tagPCM, bits: 16, size: -1}, "24 bits": {tag: tagPCM, bits: 24, size: -1}, "float": {tag: tagFloat, bits: 32, size: -1},
+	} {
+		b.Run(name, func(b *testing.B) {
+			file := f.file(rate, 1, make([]float64, rate))
+			x := make([]float64, rate)
+			for b.Loop() {
+				w, err := New("x.wav", bytes.NewReader(file))
+				if err != nil {
+					b.Fatal(err)
+				}
+				if n, err := w.ReadFrames(x); n != rate || err != nil {
+					b.Fatal(n, err)
+				}
+			}
+			b.ReportMetric(float64(b.N)/b.Elapsed().Seconds(), "xrealtime")
+		})
+	}
 }
