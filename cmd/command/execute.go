@@ -313,12 +313,10 @@ func newSoundFiles(out *folder, rate float64, bits int) (*soundFiles, error) {
 	s.heard = wav.NewIntegerWriter(f, rate, 1, container)
 	for i := range s.layers {
 		f, err := create(render.Layer(i).String())
-		if err == nil {
-			s.layers[i], err = wav.NewFloatWriter(f, rate)
-		}
 		if err != nil {
 			return nil, errors.Join(err, s.closeFiles())
 		}
+		s.layers[i] = wav.NewFloatWriter(f, rate)
 	}
 	return s, nil
 }

@@ -3,157 +3,148 @@ package wav
 import (
 	"bufio"
 	"encoding/binary"
-	"errors"
-	"fmt"
 	"io"
 	"math"
-
-	"github.com/go-audio/audio"
-	"github.com/go-audio/wav"
 )
 
-// ErrTooLong says that a file would pass the 4 GiB that a WAV file can have.
-var ErrTooLong = errors.New("wav: the file would be longer than the 4 GiB that the format allows")
-
-// longest is how many bytes of sound a file can hold, with room for its header.
-const longest = math.MaxUint32 - 256
-
-// IntegerWriter writes integer codes.
-type IntegerWriter struct {
-	encoder *wav.Encoder
-	file    *bufferedFile
-	buffer  audio.IntBuffer
-	bits    int
-	width   int
-	bytes   int64
+// writer writes a file: its header, samples, and at the end the header again with the lengths. A file of 4 GiB or more
+// becomes RF64, for which every header has room (EBU Tech 3306).
+type writer struct {
+	file           io.WriteSeeker
+	buffer         *bufio.Writer
+	tag            uint16
+	rate           uint32
+	channels, bits int
+	frames         int64
+	block          []byte
 }
 
+func (w *writer) start(file io.WriteSeeker, tag uint16, rate float64, channels, bits int) {
+	*w = writer{file: file, buffer: bufio.NewWriterSize(file, 1<<16), tag: tag, rate: uint32(math.Round(rate)), channels: channels, bits: bits}
+	w.buffer.Write(w.header()) // what fails here fails again at the next
+}
+
+// header returns the header of the frames written so far, whose length does not depend on them.
+func (w *writer) header() []byte {
+	const room = 28 // bytes of a ds64 chunk
+	le := binary.LittleEndian
+	align := w.channels * w.bits / 8
+	data := w.frames * int64(align)
+	format := le.AppendUint16(nil, w.tag)
+	format = le.AppendUint16(format, uint16(w.channels))
+	format = le.AppendUint32(format, w.rate)
+	format = le.AppendUint32(format, w.rate*uint32(align))
+	format = le.AppendUint16(format, uint16(align))
+	format = le.AppendUint16(format, uint16(w.bits))
+	behind := 4 + 8 + room + 8 + len(format) + 8 // bytes of the header from WAVE on
+	if w.tag == tagFloat {
+		format = le.AppendUint16(format, 0) // no extension
+		behind += 2 + 12
+	}
+	whole := int64(behind) + data + data%2
+	long := whole > math.MaxUint32
+	size := func(b []byte, n int64) []byte {
+		if long {
+			n = math.MaxUint32
+		}
+		return le.AppendUint32(b, uint32(n))
+	}
+	name := func(short, other string) string {
+		if long {
+			return other
+		}
+		return short
+	}
+	h := size([]byte(name("RIFF", "RF64")), whole)
+	h = append(h, "WAVE"+name("JUNK", "ds64")...)
+	h = le.AppendUint32(h, room)
+	sizes := make([]byte, room)
+	if long {
+		le.PutUint64(sizes, uint64(whole))
+		le.PutUint64(sizes[8:], uint64(data))
+		le.PutUint64(sizes[16:], uint64(w.frames))
+	}
+	h = append(h, sizes...)
+	h = le.AppendUint32(append(h, "fmt "...), uint32(len(format)))
+	h = append(h, format...)
+	if w.tag == tagFloat {
+		h = size(append(h, "fact\x04\x00\x00\x00"...), w.frames)
+	}
+	return size(append(h, "data"...), data)
+}
+
+// put writes the block, of a number of frames.
+func (w *writer) put(frames int) error {
+	w.frames += int64(frames)
+	_, err := w.buffer.Write(w.block)
+	return err
+}
+
+// Close writes the lengths into the header, and leaves the file, which it does not close, at its end.
+func (w *writer) Close() error {
+	if w.frames*int64(w.channels*w.bits/8)%2 != 0 {
+		w.buffer.WriteByte(0)
+	}
+	if err := w.buffer.Flush(); err != nil {
+		return err
+	}
+	if _, err := w.file.Seek(0, io.SeekStart); err != nil {
+		return err
+	}
+	if _, err := w.file.Write(w.header()); err != nil {
+		return err
+	}
+	_, err := w.file.Seek(0, io.SeekEnd)
+	return err
+}
+
+// IntegerWriter writes integer codes.
+type IntegerWriter struct{ writer }
+
 // NewIntegerWriter starts a file of integer codes of 16 or 24 bits at a rate in Hz, which the header holds rounded to
-// whole hertz. [IntegerWriter.Close] ends it; w itself is not closed.
-func NewIntegerWriter(w io.WriteSeeker, rate float64, channels, bits int) *IntegerWriter {
+// whole hertz. Close ends it; file itself is not closed.
+func NewIntegerWriter(file io.WriteSeeker, rate float64, channels, bits int) *IntegerWriter {
 	if bits != 16 && bits != 24 {
 		panic("wav: codes of 16 or 24 bits are written")
 	}
-	file := &bufferedFile{w: w, buffer: bufio.NewWriterSize(w, 1<<16)}
-	// The library makes room for a minute of sound by rate and channels; at 1 Hz and one it does not.
-	e := wav.NewEncoder(file, 1, bits, 1, tagPCM)
-	e.SampleRate, e.NumChans = int(math.Round(rate)), channels
-	return &IntegerWriter{
-		encoder: e, file: file, bits: bits, width: channels,
-		buffer: audio.IntBuffer{Format: &audio.Format{NumChannels: channels, SampleRate: int(math.Round(rate))}, SourceBitDepth: bits},
-	}
+	w := &IntegerWriter{}
+	w.start(file, tagPCM, rate, channels, bits)
+	return w
 }
 
 // Write writes codes, channel beside channel; those beyond the bits are held to their range.
 func (w *IntegerWriter) Write(codes []int32) error {
-	if len(codes)%w.width != 0 {
+	if len(codes)%w.channels != 0 {
 		panic("wav: not a whole number of frames")
 	}
-	if w.bytes += int64(len(codes) * w.bits / 8); w.bytes > longest {
-		return ErrTooLong
-	}
-	top := 1<<(w.bits-1) - 1
-	w.buffer.Data = w.buffer.Data[:0]
+	top := int32(1)<<(w.bits-1) - 1
+	w.block = w.block[:0]
 	for _, c := range codes {
-		w.buffer.Data = append(w.buffer.Data, min(max(int(c), -top-1), top))
-	}
-	return w.encoder.Write(&w.buffer)
-}
-
-// Close writes the lengths into the header.
-func (w *IntegerWriter) Close() error {
-	if w.bytes == 0 { // the header comes with the first samples
-		if err := w.Write(nil); err != nil {
-			return err
+		c = min(max(c, -top-1), top)
+		w.block = append(w.block, byte(c), byte(c>>8))
+		if w.bits == 24 {
+			w.block = append(w.block, byte(c>>16))
 		}
 	}
-	if w.bytes%2 != 0 {
-		if _, err := w.file.Write([]byte{0}); err != nil {
-			return err
-		}
-		w.encoder.WrittenBytes++
-	}
-	if err := w.encoder.Close(); err != nil {
-		return err
-	}
-	return w.file.buffer.Flush()
+	return w.put(len(codes) / w.channels)
 }
 
-// bufferedFile is a buffered writer that can seek. It hides the file from the library, which would sync it.
-type bufferedFile struct {
-	w      io.WriteSeeker
-	buffer *bufio.Writer
-}
+// FloatWriter writes 32-bit floating-point samples of one channel.
+type FloatWriter struct{ writer }
 
-func (f *bufferedFile) Write(p []byte) (int, error) { return f.buffer.Write(p) }
-
-func (f *bufferedFile) Seek(offset int64, whence int) (int64, error) {
-	if err := f.buffer.Flush(); err != nil {
-		return 0, err
-	}
-	return f.w.Seek(offset, whence)
-}
-
-// FloatWriter writes 32-bit floating-point samples of one channel. The library's encoder writes no fact chunk, which
-// the format asks for, and no more than a frame at a time.
-type FloatWriter struct {
-	file   *bufferedFile
-	frames int64
-	block  []byte
-}
-
-// floatHeader is the length of a FloatWriter's header.
-const floatHeader = 58
-
-// NewFloatWriter starts a file at a rate in Hz, which the header holds rounded to whole hertz. [FloatWriter.Close]
-// ends it; w itself is not closed.
-func NewFloatWriter(w io.WriteSeeker, rate float64) (*FloatWriter, error) {
-	f := &FloatWriter{file: &bufferedFile{w: w, buffer: bufio.NewWriterSize(w, 1<<16)}}
-	le := binary.LittleEndian
-	h := append([]byte(nil), "RIFF\x00\x00\x00\x00WAVEfmt "...)
-	h = le.AppendUint32(h, 18)
-	h = le.AppendUint16(h, tagFloat)
-	h = le.AppendUint16(h, 1)
-	hz := uint32(math.Round(rate))
-	h = le.AppendUint32(h, hz)
-	h = le.AppendUint32(h, 4*hz)
-	h = le.AppendUint16(h, 4)
-	h = le.AppendUint16(h, 32)
-	h = le.AppendUint16(h, 0)
-	h = append(h, "fact\x04\x00\x00\x00\x00\x00\x00\x00data\x00\x00\x00\x00"...)
-	_, err := f.file.Write(h)
-	return f, err
+// NewFloatWriter starts a file at a rate in Hz, which the header holds rounded to whole hertz. Close ends it; file itself
+// is not closed.
+func NewFloatWriter(file io.WriteSeeker, rate float64) *FloatWriter {
+	w := &FloatWriter{}
+	w.start(file, tagFloat, rate, 1, 32)
+	return w
 }
 
 // Write writes samples.
-func (f *FloatWriter) Write(samples []float64) error {
-	if f.frames += int64(len(samples)); 4*f.frames > longest {
-		return ErrTooLong
-	}
-	f.block = f.block[:0]
+func (w *FloatWriter) Write(samples []float64) error {
+	w.block = w.block[:0]
 	for _, x := range samples {
-		f.block = binary.LittleEndian.AppendUint32(f.block, math.Float32bits(float32(x)))
+		w.block = binary.LittleEndian.AppendUint32(w.block, math.Float32bits(float32(x)))
 	}
-	_, err := f.file.Write(f.block)
-	return err
-}
-
-// Close writes the lengths into the header.
-func (f *FloatWriter) Close() error {
-	for _, at := range [...]struct {
-		offset int64
-		value  int64
-	}{{4, 4*f.frames + floatHeader - 8}, {46, f.frames}, {54, 4 * f.frames}} {
-		if _, err := f.file.Seek(at.offset, io.SeekStart); err != nil {
-			return err
-		}
-		if _, err := f.file.Write(binary.LittleEndian.AppendUint32(nil, uint32(at.value))); err != nil {
-			return err
-		}
-	}
-	if err := f.file.buffer.Flush(); err != nil {
-		return fmt.Errorf("wav: %w", err)
-	}
-	_, err := f.file.Seek(0, io.SeekEnd)
-	return err
+	return w.put(len(samples))
 }
