@@ -74,8 +74,15 @@ func (n *notes) tell(note string) {
 	}
 }
 
-// add adds the flags; what there is to be said of recordings goes to standard error.
+// recordingsHelp tells what recordings are, in every command that takes them.
+const recordingsHelp = `
+
+A TRACK is a WAV or FLAC file, a folder of such files, or "-", which is standard input. With --raw it holds samples without
+a header. --counts and --volts name a file, or "-", with a column of text that is a recording, beside or in place of a TRACK.`
+
+// add adds the flags and the help; what there is to be said of recordings goes to standard error.
 func (r *reading) add(cmd *cobra.Command, s streams) {
+	cmd.Long += recordingsHelp
 	r.notes.out = s.err
 	f := cmd.Flags()
 	f.StringVar(&r.raw, "raw", "", "recordings are samples without a header: `SAMPLES,RATE,CHANNELS`, as s16le,16000,1")

@@ -5,6 +5,7 @@ package command
 import (
 	"bytes"
 	"context"
+	"encoding/json"
 	"io"
 	"math"
 	"os"
@@ -157,4 +158,51 @@ high = 2
 	none := strings.NewReader("")
 	run("counts", none, "--counts", path("counts.csv"), "--rate", rate, "--bits", "8", "--column", "2")
 	run("volts", none, "--volts", path("volts.csv"), "--rate", rate, "--column", "2")
+}
+
+// The tone that sox writes into one channel of a FLAC file is found at the level and the frequency that it was told.
+func TestSoxToneCalibrates(t *testing.T) {
+	dir := t.TempDir()
+	c := exec.Command("sox", "-R", "-n", "-r", "44100", "-b", "16", "-c", "2", filepath.Join(dir, "tone.flac"), "synth", "3", "sine", "50", "sine", "1234.5", "gain", "-12.3")
+	if text, err := c.CombinedOutput(); err != nil {
+		t.Fatalf("%v: %s", err, text)
+	}
+	chain := filepath.Join(dir, "chain.toml")
+	if err := os.WriteFile(chain, []byte(`[supply]
+voltage = "5V"
+[input.line]
+kind = "line"
+channel = 2
+calibrate = { reading = "200mVrms", track = "tone.flac", from = "500ms" }
+[converter]
+from = "line"
+rate = 16000
+bits = 16
+low = -2
+high = 2
+`), 0o666); err != nil {
+		t.Fatal(err)
+	}
+	var out, failure bytes.Buffer
+	status := Exec(context.Background(), []string{"run", chain, filepath.Join(dir, "tone.flac"), "--json", "--no-html", "--out", filepath.Join(dir, "out")}, strings.NewReader(""), &out, &failure)
+	if status != Done {
+		t.Fatalf("status %d: %s", status, failure.String())
+	}
+	var report struct {
+		Calibrations []struct {
+			From      float64 `json:"from_s"`
+			To        float64 `json:"to_s"`
+			Frequency float64 `json:"frequency_hz"`
+			Level     float64 `json:"level_dbfs"`
+			FullScale float64 `json:"full_scale"`
+		} `json:"calibrations"`
+	}
+	if err := json.Unmarshal(out.Bytes(), &report); err != nil || len(report.Calibrations) != 1 {
+		t.Fatalf("%v: %s", err, out.String())
+	}
+	const hz, dB = 0.01, 0.01 // what a calibration is asked to hold
+	k := report.Calibrations[0]
+	if !(math.Abs(k.Frequency-1234.5) <= hz) || !(math.Abs(k.Level+12.3) <= dB) || !(math.Abs(20*math.Log10(k.FullScale/0.2)-12.3) <= dB) || k.From != 0.5 || k.To != 3 {
+		t.Errorf("%+v", k)
+	}
 }
