@@ -11,10 +11,10 @@ import (
 // elements belong on their pieces, and to readings within it. The rows are the states after; the conditions, each at all of the
 // steps that it is looked at; then the readings. It may be shared by goroutines.
 type Held struct {
-	FromState  blas64.General   // rows × states
-	FromInput  []blas64.General // of each input, rows × steps
-	Constant   []float64        // what the rows are with nothing in the state and at the inputs
-	Most       []float64        // of each condition, the largest that it may be; +Inf: there is none
+	FromState blas64.General   // rows × states
+	FromInput []blas64.General // of each input, rows × steps
+	Constant  []float64        // what the rows are with nothing in the state and at the inputs
+	Most      []float64        // of each condition, the largest that it may be; +Inf: there is none
 }
 
 // Hold builds the map over a number of steps with the elements on the given pieces; the conditions are looked at at the

@@ -26,6 +26,11 @@ func NewFinite(t Track, name string, repair bool) *Finite {
 func (f *Finite) ReadFrames(dst []float64) (int, error) {
 	n, err := f.Track.ReadFrames(dst)
 	width := len(f.last)
+	if n > 0 && allFinite(dst[:n*width]) {
+		copy(f.last, dst[(n-1)*width:n*width])
+		f.read += int64(n)
+		return n, err
+	}
 	for i, x := range dst[:n*width] {
 		channel := i % width
 		if !math.IsNaN(x) && !math.IsInf(x, 0) {
@@ -44,6 +49,15 @@ func (f *Finite) ReadFrames(dst []float64) (int, error) {
 	}
 	f.read += int64(n)
 	return n, err
+}
+
+func allFinite(x []float64) bool {
+	for _, v := range x {
+		if v-v != 0 {
+			return false
+		}
+	}
+	return true
 }
 
 // Note returns what there is to be said of the track: what it says itself, and how many samples were replaced. It is

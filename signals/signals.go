@@ -85,6 +85,10 @@ func (d *deal) more() {
 	d.err = err
 	width := d.track.Channels()
 	for i, c := range d.channels {
+		if width == 1 {
+			d.waiting[i] = append(d.waiting[i], d.frames[:n]...)
+			continue
+		}
 		for f := range n {
 			frame := d.frames[f*width : (f+1)*width]
 			v := 0.

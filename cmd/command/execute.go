@@ -131,10 +131,15 @@ type openTrack struct {
 func (t *openTrack) ReadFrames(dst []float64) (int, error) {
 	n, err := t.Track.ReadFrames(dst)
 	width := t.Channels()
-	for i, x := range dst[:n*width] {
-		t.sum[i%width] += x
-		t.power[i%width] += x * x
-		t.peak = math.Max(t.peak, math.Abs(x))
+	for c := range width {
+		sum, power, peak := t.sum[c], t.power[c], t.peak
+		for i := c; i < n*width; i += width {
+			x := dst[i]
+			sum += x
+			power += float64(x * x)
+			peak = max(peak, x, -x)
+		}
+		t.sum[c], t.power[c], t.peak = sum, power, peak
 	}
 	t.read += int64(n)
 	return n, err

@@ -10,9 +10,8 @@ import (
 	"midrail/signals"
 )
 
-// Split parts a stream at an edge frequency into what lies below and what lies at and above it. The two are
-// complementary: they sum to the stream. The lower one is −6 dB at the edge, flat up to 1 % below it and 120 dB down
-// from 1 % above it.
+// Split parts a stream at an edge frequency: it gives what lies below and, beside it, the stream itself; the rest lies at
+// and above the edge. What lies below is −6 dB at the edge, flat up to 1 % below it and 120 dB down from 1 % above it.
 type Split struct {
 	source source
 	half   int // half the filter's length; 0: everything lies below
@@ -23,10 +22,11 @@ type Split struct {
 	input    []float64 // two blocks that overlap: 2·half values of the last two, then new ones
 	fresh    int       // where the new ones begin
 
-	low, high []float64 // parted, not yet read
-	given     int64     // values parted
-	lead      int
-	err       error
+	low          []float64 // parted; the whole is in input, from half on
+	given, ready int       // values of the block that were read, and that there are
+	parted       int64     // values in all
+	lead         int
+	err          error
 }
 
 // SplitTop returns the share of a stream's rate above which a split leaves nothing in its lower side, but for −120 dB.
@@ -85,47 +85,50 @@ func NewSplit(src signals.Stream, rate, edge float64, lead int) *Split {
 // HalfLength returns half the length of the filter in samples, which is how far it rings before and after.
 func (s *Split) HalfLength() int { return s.half }
 
-// Read fills low and high, which are of the same length, and returns how many values it put into each; fewer than
-// fit come only with an error, io.EOF at the end.
-func (s *Split) Read(low, high []float64) (int, error) {
-	if len(low) != len(high) {
-		panic("resample: low and high of different lengths")
+// Read fills low, what lies below the edge, and whole, the stream itself, which are of the same length, and returns how
+// many values it put into each; fewer than fit come only with an error, io.EOF at the end.
+func (s *Split) Read(low, whole []float64) (int, error) {
+	if len(low) != len(whole) {
+		panic("resample: parts of different lengths")
 	}
-	for len(s.low) < len(low) && s.err == nil {
-		s.more()
-	}
-	n := copy(low, s.low)
-	copy(high, s.high)
-	s.low = s.low[:copy(s.low, s.low[n:])]
-	s.high = s.high[:copy(s.high, s.high[n:])]
-	if n < len(low) {
-		return n, s.err
+	n := 0
+	for n < len(low) {
+		if s.given == s.ready {
+			if s.err != nil {
+				return n, s.err
+			}
+			s.more()
+			continue
+		}
+		from := s.given
+		to := min(from+len(low)-n, s.ready)
+		copy(low[n:], s.low[from:to])
+		n += copy(whole[n:], s.input[s.half+from:s.half+to])
+		s.given = to
 	}
 	return n, nil
 }
 
 // more parts one block. Blocks lie on a grid of their own, so that the values do not depend on how they are read.
 func (s *Split) more() {
+	copy(s.input, s.input[len(s.input)-s.fresh:])
+	s.given, s.ready = 0, 0
 	if err := s.source.fill(s.input[s.fresh:]); err != nil {
 		s.err = err
 		return
 	}
-	low := s.input
+	s.fresh = 2 * s.half
+	s.low = s.input
 	if s.half > 0 {
-		low = s.filter()
+		s.low = s.filter()
 	}
+	s.ready = len(s.low)
 	if s.source.ended {
-		if left := int64(s.lead) + s.source.read + int64(s.half) - s.given; left <= int64(len(low)) {
-			low, s.err = low[:left], io.EOF
+		if left := int64(s.lead) + s.source.read + int64(s.half) - s.parted; left <= int64(s.ready) {
+			s.ready, s.err = int(left), io.EOF
 		}
 	}
-	for i, v := range low {
-		s.low = append(s.low, v)
-		s.high = append(s.high, s.input[s.half+i]-v)
-	}
-	s.given += int64(len(low))
-	s.fresh = 2 * s.half
-	copy(s.input, s.input[len(s.input)-s.fresh:])
+	s.parted += int64(s.ready)
 }
 
 // filter returns what lies below of the input, whose two blocks are the real and the imaginary part of one transform.
