@@ -4,7 +4,6 @@ import (
 	"errors"
 	"io"
 	"math"
-	"slices"
 	"sort"
 
 	"midrail/chain/render"
@@ -170,11 +169,17 @@ func cutTrack(open func() (signals.Track, error), passages [][2]float64) ([]floa
 
 // cut takes the passages out of a stream, one after another. They end softly, and begin so but at the track's beginning.
 func cut(s signals.Stream, rate float64, passages [][2]float64) ([]float64, error) {
-	var all []float64
+	ends := func(p [2]float64) (from, to int) { return int(math.Round(p[0] * rate)), int(math.Round(p[1] * rate)) }
+	total := 0
+	for _, p := range passages {
+		from, to := ends(p)
+		total += to - from
+	}
+	all := make([]float64, 0, total)
 	at := 0 // samples read
 	between := make([]float64, blockSamples)
 	for _, p := range passages {
-		from, to := int(math.Round(p[0]*rate)), int(math.Round(p[1]*rate))
+		from, to := ends(p)
 		for at < from {
 			n, err := s.Read(between[:min(len(between), from-at)])
 			if at += n; err != nil {
@@ -182,7 +187,7 @@ func cut(s signals.Stream, rate float64, passages [][2]float64) ([]float64, erro
 			}
 		}
 		begun := len(all)
-		all = slices.Grow(all, to-from)[:begun+to-from]
+		all = all[:begun+to-from]
 		for k := begun; k < len(all); {
 			n, err := s.Read(all[k:min(len(all), k+blockSamples)])
 			at, k = at+n, k+n

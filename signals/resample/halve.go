@@ -24,11 +24,11 @@ func Halve(x []float64) []float64 {
 		kernel[i] = cut * sinc(cut*at) * kaiser(shape(halveStop), at/float64(half+1))
 	}
 	floats.Scale(1/floats.Sum(kernel), kernel)
-	padded := make([]float64, len(x)+2*half)
-	copy(padded[half:], x)
 	out := make([]float64, (len(x)+1)/2)
 	for i := range out {
-		out[i] = floats.Dot(kernel, padded[2*i:2*i+len(kernel)])
+		from, to := max(0, 2*i-half), min(2*i+half+1, len(x))
+		first := from - (2*i - half)
+		out[i] = floats.Dot(kernel[first:first+to-from], x[from:to])
 	}
 	return out
 }
