@@ -104,13 +104,18 @@ func (h *holder) of(s *simulator) *heldRun {
 	return one
 }
 
-// looks are the steps at which conditions are looked at: the first, and the last of each quarter or, where a fine lane
-// is as fast as its steps allow, of each two.
+// looks are the steps at which conditions are looked at: the first, and the last of each quarter; where a fine lane is as
+// fast as its steps allow, of each two; and all where stairs change.
 func (h *holder) looks(s *simulator) []int {
 	parts := 4
 	for _, in := range s.fineSums {
 		if in != nil {
 			parts = max(parts, h.steps/2)
+		}
+	}
+	for _, in := range s.stairs {
+		if in.present && !h.windows {
+			parts = h.steps
 		}
 	}
 	list := []int{0}

@@ -8,6 +8,7 @@ import (
 	"math/cmplx"
 	"math/rand/v2"
 	"runtime"
+	"strings"
 	"testing"
 
 	"midrail/chain"
@@ -208,7 +209,7 @@ func TestSlowConverter(t *testing.T) {
 func hostile(rate float64) map[string]signals.Track {
 	draw := rand.New(rand.NewPCG(7, 7))
 	make1 := func(f func(i int) float64) signals.Track {
-		x := make([]float64, int(0.1*rate))
+		x := make([]float64, int(0.06*rate))
 		for i := range x {
 			x[i] = f(i)
 		}
@@ -258,25 +259,49 @@ func (s *sliceTrack) ReadFrames(dst []float64) (int, error) {
 const fastTolerance = 1e-12
 
 func TestLiftedPassagesAreTheSteppedOnes(t *testing.T) {
-	for _, c := range []struct {
-		name  string
-		chain string
-		set   []string
-		rate  float64
-	}{
-		{"line, loud", lineChain, []string{"amp.r_f=47k"}, 48000},
-		{"line, on the verge", lineChain, []string{"amp.r_f=18k"}, 48000},
-		{"line, soft", lineChain, []string{"amp.r_f=4k7"}, 48000},
-		{"slow amplifiers", lineChain, []string{"one.slew_rate=0.03V/us", "amp.r_f=22k"}, 48000},
-		{"44.1 kHz into 9615.38 Hz", lineChain, []string{"converter.rate=9615.38", "amp.r_f=33k"}, 44100},
-		{"into 96 kHz", lineChain, []string{"converter.rate=96k", "amp.r_f=33k"}, 48000},
-		{"supply ripple", lineChain + "[[interferer]]\ninto = \"supply\"\nfrequency = 700\nlevel = \"0.4Vpp\"\nshape = \"square\"\n[[interferer]]\ninto = \"line\"\nfrequency = \"300k\"\nlevel = \"0.1Vrms\"\n", []string{"amp.r_f=27k"}, 48000},
+	type fastCase struct {
+		name string
+		n    *circuit.Network
+		rate float64
+	}
+	line := func(name, more string, rate float64, set ...string) fastCase {
+		return fastCase{name, parse(t, lineChain+more, set...), rate}
+	}
+	file := func(path string, rate float64, set ...string) fastCase {
+		return fastCase{path, network(t, path, set...), rate}
+	}
+	const chains = "../../testdata/chains/"
+	for _, c := range []fastCase{
+		line("line, loud", "", 48000, "amp.r_f=47k"),
+		line("line, on the verge", "", 48000, "amp.r_f=18k"),
+		line("line, soft", "", 48000, "amp.r_f=4k7"),
+		line("slow amplifiers", "", 48000, "one.slew_rate=0.03V/us", "amp.r_f=22k"),
+		line("44.1 kHz into 9615.38 Hz", "", 44100, "converter.rate=9615.38", "amp.r_f=33k"),
+		line("into 96 kHz", "", 48000, "converter.rate=96k", "amp.r_f=33k"),
+		line("a tone far above the tracks", "[[interferer]]\ninto = \"line\"\nfrequency = \"300k\"\nlevel = \"0.1Vrms\"\n", 48000, "amp.r_f=27k"),
+		line("supply ripple", "[[interferer]]\ninto = \"supply\"\nfrequency = 700\nlevel = \"0.4Vpp\"\nshape = \"square\"\n[[interferer]]\ninto = \"line\"\nfrequency = \"300k\"\nlevel = \"0.1Vrms\"\n", 48000, "amp.r_f=27k"),
+		line("squares at the supply and at the input", "[[interferer]]\ninto = \"supply\"\nfrequency = 7100\nlevel = \"0.3Vpp\"\nshape = \"square\"\n[[interferer]]\ninto = \"line\"\nfrequency = 450\nlevel = \"0.3Vpp\"\nshape = \"square\"\n", 48000, "amp.r_f=27k"),
+		file("../../cmd/command/demo/brood-box.toml", 48000),
+		file("../../cmd/command/demo/brood-box.toml", 44100, "capsule amp.r_f=4M7"),
+		file(chains+"state-variable.toml", 48000),
+		file(chains+"handbook-fifth-order.toml", 96000),
+		file(chains+"every-key.toml", 48000),
 	} {
-		n := parse(t, c.chain, c.set...)
 		for name, track := range hostile(c.rate) {
-			fast := renderAll(t, n, Options{}, track)
-			track.(*sliceTrack).at = 0
-			plain := renderAll(t, n, Options{plain: true}, track)
+			if strings.HasSuffix(c.name, ".toml") && name != "white" && name != "clicks and bursts" {
+				continue // a plain run of a large chain takes its time
+			}
+			tracks := make([]signals.Track, len(c.n.Inputs))
+			for i := range tracks {
+				tracks[i] = &sliceTrack{rate: c.rate, x: track.(*sliceTrack).x}
+			}
+			run := func(plain bool) *sound {
+				for _, one := range tracks {
+					one.(*sliceTrack).at = 0
+				}
+				return renderAll(t, c.n, Options{plain: plain}, tracks...)
+			}
+			fast, plain := run(false), run(true)
 			unit := fast.result.Span.Unit()
 			if len(fast.codes) != len(plain.codes) {
 				t.Fatalf("%s, %s: %d conversions, stepped %d", c.name, name, len(fast.codes), len(plain.codes))

@@ -62,6 +62,7 @@ type simulator struct {
 	cellMeans          [][]float64 // of each input with fine lanes or stairs
 	inputMost          []float64   // V or A, how large each input of u gets in the block
 	ripple             []float64   // V or A, by how much each is off its cells' means at most
+	quick              []float64   // quantities × inputs: how far 1 of that takes a quantity within a cell at most
 	deviations         []float64   // as sizes: of the difference, and of what the inputs are given from its middle
 	level              []float64
 	isRead             []bool    // of each quantity, in this block
@@ -255,6 +256,7 @@ func (s *simulator) lift(lanes []*lane) {
 	s.coarse, s.fine, s.stairs = make([]inputMaps, s.inputs), make([]inputMaps, s.inputs), make([]stairMaps, s.inputs)
 	s.cells = make([]blas64.General, s.inputs)
 	s.sums, s.fineSums = make([][]float64, s.inputs), make([][]float64, s.inputs)
+	s.quick = make([]float64, s.quantities*s.inputs)
 	states := s.circuit.States()
 	cell := g
 	cell.base, cell.steps = 1, scale
@@ -287,6 +289,7 @@ func (s *simulator) lift(lanes []*lane) {
 		}
 		if fine || stairs {
 			if stairs || s.fineSums[u] != nil {
+				s.quicken(u, readings[:s.quantities])
 				_, s.cells[u] = s.overBlock(l.FromState, constant(l.FromInput), 1)
 			}
 			advance, _ := s.overBlock(l.FromState, l.FromInput, scale)
@@ -324,6 +327,23 @@ func (s *simulator) lift(lanes []*lane) {
 			s.addReach(states+2*u+1, s.cells[u], false)
 			s.cellMeans[u] = make([]float64, g.base)
 		}
+	}
+}
+
+// quicken finds how far an input takes the quantities, which are read as given but at every step, within a cell.
+func (s *simulator) quicken(u int, quantities []bilinear.Reading) {
+	steps := 1 << s.grid.plan.Doublings
+	var readings []bilinear.Reading
+	for _, r := range quantities {
+		for r.Step = range steps {
+			readings = append(readings, r)
+		}
+	}
+	m := s.circuit.Lift(steps, u, readings).FromInput
+	for i := range readings {
+		row := m.Data[(m.Rows-len(readings)+i)*m.Stride:][:m.Cols]
+		most := &s.quick[i/steps*s.inputs+u]
+		*most = max(*most, floats.Norm(row, 1))
 	}
 }
 
@@ -650,9 +670,17 @@ func (s *simulator) look() bool {
 	return false
 }
 
-// passes tells whether a quantity comes nearer to a bound than the margin.
+// passes tells whether a quantity could come to a bound in the block. It is read only where its size does not settle it.
 func (s *simulator) passes(q int, low, high float64) bool {
-	if q < 0 || s.most[q]*margin < math.Min(high, -low) {
+	if q < 0 {
+		return false
+	}
+	within := 0. // what inputs do within a cell, which the values at base samples do not tell
+	for u, r := range s.ripple {
+		within += s.quick[q*s.inputs+u] * r
+	}
+	low, high = low+within, high-within
+	if s.most[q]*margin < min(high, -low) {
 		return false
 	}
 	if l, h := s.between(q); l*margin > low && h*margin < high {
@@ -663,12 +691,8 @@ func (s *simulator) passes(q int, low, high float64) bool {
 	for i, v := range linear {
 		x[i] = v + moved[i]
 	}
-	// What lies between the instants: the values' bend from one to the next, of which a parabola needs an eighth; and what
-	// inputs do within a cell.
+	// Between two of them it bends: a parabola by an eighth of what the values do.
 	least, most, bend := spread(x)
-	for u, r := range s.ripple {
-		bend += s.reach.Data[q*s.reach.Stride+len(s.linear)+2*u+1] * r
-	}
 	return least-bend <= low || most+bend >= high
 }
 
