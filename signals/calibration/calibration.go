@@ -176,20 +176,25 @@ func fit(x []float64, omega float64) fitted {
 	f := fitted{omega: omega}
 	var a, b float64
 	for range steps {
-		normal, right := mat.NewSymDense(4, nil), mat.NewVecDense(4, nil)
+		var sums [4][5]float64 // the products of the columns a, b, c, the step of ω·length, and the block
 		square := 0.
 		for i, v := range x {
 			t := float64(i) - middle
 			sin, cos := math.Sincos(f.omega * t)
-			// The columns: a, b, c, and the step of ω·length.
-			row := [4]float64{cos, sin, 1, t / length * (b*cos - a*sin)}
-			for j := range row {
-				for k := j; k < 4; k++ {
-					normal.SetSym(j, k, normal.At(j, k)+row[j]*row[k])
+			row := [5]float64{cos, sin, 1, t / length * (b*cos - a*sin), v}
+			for j := range sums {
+				for k := j; k < len(row); k++ {
+					sums[j][k] += float64(row[j] * row[k])
 				}
-				right.SetVec(j, right.AtVec(j)+row[j]*v)
 			}
-			square += v * v
+			square += float64(v * v)
+		}
+		normal, right := mat.NewSymDense(4, nil), mat.NewVecDense(4, nil)
+		for j := range sums {
+			for k := j; k < 4; k++ {
+				normal.SetSym(j, k, sums[j][k])
+			}
+			right.SetVec(j, sums[j][4])
 		}
 		columns := 4
 		if a == 0 && b == 0 {
