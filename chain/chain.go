@@ -4,6 +4,7 @@ import (
 	"slices"
 
 	"midrail/chain/amplifier"
+	"midrail/chain/preferred"
 )
 
 // Chain is one front end as its owner describes it in a chain file.
@@ -56,6 +57,17 @@ type Part struct {
 	Series    string  // preferred series, "E3" to "E192"; empty: the default
 	Tolerance float64 // share of 1; 0: that of the [tolerance] table
 	Pos       Pos
+}
+
+// Preferred returns the series that the part's values are taken from: its own, or the default of its kind.
+func (p *Part) Preferred() preferred.Series {
+	switch s, err := preferred.Parse(p.Series); {
+	case err == nil:
+		return s
+	case p.Unit == Farad:
+		return preferred.DefaultCapacitors
+	}
+	return preferred.DefaultResistors
 }
 
 // Unit tells what a part's value is in.

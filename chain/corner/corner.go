@@ -10,6 +10,7 @@
 package corner
 
 import (
+	"context"
 	"errors"
 	"io"
 	"math"
@@ -57,9 +58,9 @@ const (
 	mostLoud = 96
 )
 
-// Listen takes recordings, one for each of the chain's inputs (nil: silence) and all at one rate in Hz, as they are in
-// front of the filter.
-func Listen(n *circuit.Network, feeds []signals.Stream, rate float64) (*Sound, error) {
+// Listen takes a recording, one feed for each of the chain's inputs (nil: silence) and all at one rate in Hz, as it is in
+// front of the filter. It returns ctx's error where that ends it.
+func Listen(ctx context.Context, n *circuit.Network, feeds []signals.Stream, rate float64) (*Sound, error) {
 	length := 2 * int(math.Round(frameSeconds*rate/2))
 	plan := fourier.NewFFT(length)
 	points := length/2 + 1
@@ -91,6 +92,9 @@ func Listen(n *circuit.Network, feeds []signals.Stream, rate float64) (*Sound, e
 	}
 	var loud []loudFrame
 	for frames := 0; ; frames++ {
+		if err := ctx.Err(); err != nil {
+			return nil, err
+		}
 		frame := make([]float64, points)
 		ended := true
 		for i, feed := range feeds {
@@ -146,22 +150,56 @@ func Listen(n *circuit.Network, feeds []signals.Stream, rate float64) (*Sound, e
 	return s, nil
 }
 
+// Fold is what a candidate lets through of a recording.
+type Fold struct {
+	Wanted    float64 // dBFS
+	FoldBack  float64 // dBFS; −Inf where the recording holds nothing to fold
+	FoldBackA float64 // dBFS, A-weighted where it lands
+	Worst     float64 // dBFS of the worst eighth of a second
+	Below     float64 // dB of fold-back below wanted; +Inf where there is none
+	Proven    bool    // whether the recording holds anything where sound comes down into the band that is kept
+}
+
 // Candidate is a rate and a filter, and what they do.
 type Candidate struct {
-	Rate      float64 // Hz
+	Rate      float64 // Hz, of the converter
 	Order     int
 	Alignment alignment.Alignment
 	Corner    float64 // Hz
+	Digital           // what stands behind the converter
 
 	Droop      float64 // dB lost at the edge of the band that is kept; negative where ripple lifts it
-	Wanted     float64 // dBFS
-	FoldBack   float64 // dBFS; −Inf where the recording holds nothing to fold
-	FoldBackA  float64 // dBFS, A-weighted where it lands
-	Worst      float64 // dBFS of the worst eighth of a second
-	Below      float64 // dB of fold-back below wanted
+	Fold               // of that recording of which it lies the least below the wanted sound
+	Sound      int     // which recording that is
 	WorstTone  float64 // dB: the loudest that a tone of any frequency comes out within the band, against one in it
 	Overshoot  float64 // of a step, share
 	Amplifiers int
+}
+
+// Digital is a linear-phase low-pass behind the converter, of whose outputs every By-th is kept.
+type Digital struct {
+	By          int       // 1: there is none
+	Taps        []float64 // at the converter's rate
+	Attenuation float64   // dB, of its stop band
+}
+
+// MultiplyAdds returns how many multiply-adds a second it takes behind a converter of the rate in Hz: those of the outputs
+// that are kept.
+func (d *Digital) MultiplyAdds(rate float64) float64 {
+	return float64(len(d.Taps)) * rate / float64(d.By)
+}
+
+// power returns the square of its gain at f, at a converter's rate, both in Hz.
+func (d *Digital) power(f, rate float64) float64 {
+	if d.By == 1 {
+		return 1
+	}
+	half := len(d.Taps) / 2
+	g := d.Taps[half]
+	for i := 1; i <= half; i++ {
+		g += 2 * d.Taps[half+i] * math.Cos(2*math.Pi*f/rate*float64(i))
+	}
+	return g * g
 }
 
 // Wish is what is wanted.
@@ -180,10 +218,57 @@ func Common() []float64 {
 // corners are the corners that are tried, as multiples of the band's edge.
 var corners = [...]float64{0.9, 1, 1.1, 1.2, 1.35, 1.5, 1.7, 2, 2.4, 3}
 
-// Candidates judges every rate that can hold the band with every order, alignment and corner.
-func Candidates(n *circuit.Network, s *Sound, w Wish) ([]Candidate, error) {
-	halfSpan := (n.Chain.Converter.High - n.Chain.Converter.Low) / 2
+// behind is a converter's rate in Hz and what stands behind it.
+type behind struct {
+	rate float64
+	Digital
+	points []points // of each recording
+}
+
+// points are what becomes of a recording's points behind the converter.
+type points struct {
+	digital  []float64 // the square of the digital filter's gain; nil: 1
+	weighted []float64 // the A-weighting, as a factor of power, of where they land
+}
+
+func (s *Sound) behind(rate float64, d Digital) points {
+	p := points{weighted: make([]float64, len(s.mean))}
+	if d.By > 1 {
+		p.digital = make([]float64, len(s.mean))
+	}
+	for k := range s.mean {
+		f := float64(k) * s.step
+		if d.By > 1 {
+			p.digital[k] = d.power(f, rate)
+		}
+		p.weighted[k] = math.Pow(10, level.AWeighting(math.Max(Folds(f, rate/float64(d.By)), s.step))/10)
+	}
+	return p
+}
+
+func behindAll(sounds []*Sound, rate float64, d Digital) behind {
+	b := behind{rate: rate, Digital: d}
+	for _, s := range sounds {
+		b.points = append(b.points, s.behind(rate, d))
+	}
+	return b
+}
+
+// Candidates judges every rate that can hold the band with every order, alignment and corner, on one or more recordings.
+// It returns ctx's error where that ends it.
+func Candidates(ctx context.Context, n *circuit.Network, sounds []*Sound, w Wish) ([]Candidate, error) {
+	var converters []behind
+	for _, rate := range w.Rates {
+		if rate >= 2*w.Keep {
+			converters = append(converters, behindAll(sounds, rate, Digital{By: 1}))
+		}
+	}
+	return candidates(ctx, n, sounds, w, converters)
+}
+
+func candidates(ctx context.Context, n *circuit.Network, sounds []*Sound, w Wish, converters []behind) ([]Candidate, error) {
 	var all []Candidate
+	h := make([][]float64, len(sounds))
 	for order := 1; order <= alignment.Highest; order++ {
 		for _, a := range alignment.All() {
 			if order == 1 && a != alignment.Butterworth {
@@ -195,17 +280,24 @@ func Candidates(n *circuit.Network, s *Sound, w Wish) ([]Candidate, error) {
 			}
 			overshoot := alignment.Overshoot(sections)
 			for _, by := range corners {
-				h := make([]float64, len(s.mean))
-				for k := range h {
-					g := cmplx.Abs(alignment.Response(sections, float64(k)*s.step/(by*w.Keep)))
-					h[k] = g * g
+				if err := ctx.Err(); err != nil {
+					return nil, err
 				}
-				for _, rate := range w.Rates {
-					if rate < 2*w.Keep {
-						continue
+				for i, s := range sounds {
+					h[i] = s.through(sections, by*w.Keep)
+				}
+				for _, b := range converters {
+					c := Candidate{Rate: b.rate, Order: order, Alignment: a, Corner: by * w.Keep, Digital: b.Digital, Overshoot: overshoot, Amplifiers: amplifiers(order)}
+					c.Droop = -20*math.Log10(cmplx.Abs(alignment.Response(sections, 1/by))) - 10*math.Log10(b.power(w.Keep, b.rate))
+					c.WorstTone = c.worstTone(sections, w.Keep)
+					for i, s := range sounds {
+						f := c.on(n, s, h[i], b.points[i], w.Keep)
+						if i == 0 || f.Below < c.Below {
+							f.Proven = f.Proven || c.Proven
+							c.Fold, c.Sound = f, i
+						}
+						c.Proven = c.Proven || f.Proven
 					}
-					c := Candidate{Rate: rate, Order: order, Alignment: a, Corner: by * w.Keep, Overshoot: overshoot, Amplifiers: (order + 1) / 2}
-					c.judge(s, h, sections, w.Keep, halfSpan)
 					all = append(all, c)
 				}
 			}
@@ -214,10 +306,47 @@ func Candidates(n *circuit.Network, s *Sound, w Wish) ([]Candidate, error) {
 	return all, nil
 }
 
-func (c *Candidate) judge(s *Sound, h []float64, sections []alignment.Section, keep, halfSpan float64) {
-	response := func(f float64) float64 { return cmplx.Abs(alignment.Response(sections, f/c.Corner)) }
-	c.Droop = -20 * math.Log10(response(keep))
-	half := int(math.Ceil(c.Rate / 2 / s.step))
+// amplifiers is how many a filter takes: one for each pair of poles, and one between a lone pole and the pairs behind it.
+func amplifiers(order int) int {
+	if order == 1 {
+		return 0
+	}
+	return (order + 1) / 2
+}
+
+// through returns the square of a filter's gain at each point.
+func (s *Sound) through(sections []alignment.Section, corner float64) []float64 {
+	h := make([]float64, len(s.mean))
+	for k := range h {
+		g := cmplx.Abs(alignment.Response(sections, float64(k)*s.step/corner))
+		h[k] = g * g
+	}
+	return h
+}
+
+// On tells what the candidate lets through of one recording.
+func (c *Candidate) On(n *circuit.Network, s *Sound, keep float64) (Fold, error) {
+	sections, err := alignment.Sections(c.Alignment, c.Order)
+	if err != nil {
+		return Fold{}, err
+	}
+	return c.on(n, s, s.through(sections, c.Corner), s.behind(c.Rate, c.Digital), keep), nil
+}
+
+// on is On with the square of the filter's gain at each point.
+func (c *Candidate) on(n *circuit.Network, s *Sound, h []float64, behind points, keep float64) Fold {
+	out := c.Rate / float64(c.By)
+	half := len(h)
+	if s.Top > out/2 {
+		half = int(math.Ceil(out / 2 / s.step))
+	}
+	if behind.digital != nil {
+		both := make([]float64, len(h))
+		for k := range both {
+			both[k] = h[k] * behind.digital[k]
+		}
+		h = both
+	}
 	wanted, fold, weighted := 0., 0., 0.
 	for k := 1; k < len(h); k++ {
 		p := s.mean[k] * h[k]
@@ -226,24 +355,43 @@ func (c *Candidate) judge(s *Sound, h []float64, sections []alignment.Section, k
 			continue
 		}
 		fold += p
-		weighted += p * math.Pow(10, level.AWeighting(math.Max(Folds(float64(k)*s.step, c.Rate), s.step))/10)
+		weighted += p * behind.weighted[k]
 	}
 	worst := 0.
 	for _, frame := range s.loud {
 		p := 0.
-		for k := min(half, len(h)); k < len(h); k++ {
+		for k := half; k < len(h); k++ {
 			p += frame[k] * h[k]
 		}
 		worst = math.Max(worst, p)
 	}
+	halfSpan := (n.Chain.Converter.High - n.Chain.Converter.Low) / 2
 	db := func(power float64) float64 { return level.DBFS(math.Sqrt(power) / halfSpan) }
-	c.Wanted, c.FoldBack, c.FoldBackA, c.Worst = db(wanted), db(fold), db(weighted), db(worst)
-	c.Below = math.Inf(1)
+	f := Fold{Wanted: db(wanted), FoldBack: db(fold), FoldBackA: db(weighted), Worst: db(worst), Below: math.Inf(1), Proven: s.Top > c.Rate-keep}
 	if fold > 0 {
-		c.Below = c.Wanted - c.FoldBack
+		f.Below = f.Wanted - f.FoldBack
 	}
-	// The nearest tone that lands within the band is the loudest: the filter falls from there on.
-	c.WorstTone = 20 * math.Log10(response(c.Rate-keep))
+	return f
+}
+
+// worstTone looks at the tones that come down into the band. Above its corner the filter falls, so the nearest to the
+// converter's rate is the loudest of those that fold there; the others are folded by what stands behind.
+func (c *Candidate) worstTone(sections []alignment.Section, keep float64) float64 {
+	const points = 64
+	response := func(f float64) float64 { return cmplx.Abs(alignment.Response(sections, f/c.Corner)) }
+	worst := 0.
+	look := func(from, to float64) {
+		for i := range points + 1 {
+			f := from + (to-from)*float64(i)/points
+			worst = math.Max(worst, response(f)*math.Sqrt(c.power(f, c.Rate)))
+		}
+	}
+	out := c.Rate / float64(c.By)
+	for m := 1; m < c.By; m++ {
+		look(float64(m)*out-keep, float64(m)*out+keep)
+	}
+	look(c.Rate-keep, math.Max(c.Rate+keep, c.Corner))
+	return 20 * math.Log10(worst)
 }
 
 // Folds returns where a frequency lands after sampling at a rate, both in Hz.
@@ -253,7 +401,16 @@ func Folds(f, rate float64) float64 {
 }
 
 // meets tells whether a candidate is good enough.
-func (c *Candidate) meets(w Wish) bool { return c.off() <= w.Droop && c.Below >= w.Below }
+func (c *Candidate) meets(w Wish) bool { return c.off() <= w.Droop && c.Held() >= w.Below }
+
+// Held returns by how many dB fold-back is held below the wanted sound: on the recordings and, where none of them holds
+// anything that would land in the band, of the worst tone against one in the band.
+func (c *Candidate) Held() float64 {
+	if c.Proven {
+		return c.Below
+	}
+	return math.Min(c.Below, -c.WorstTone)
+}
 
 // off is how far the band's edge is from flat, up or down.
 func (c *Candidate) off() float64 { return math.Abs(c.Droop) }
@@ -284,7 +441,7 @@ func Recommend(all []Candidate, w Wish) (Candidate, bool) {
 	}
 	for i := range all {
 		c := &all[i]
-		if best == nil || (c.off() <= w.Droop) != (best.off() <= w.Droop) && c.off() <= w.Droop || (c.off() <= w.Droop) == (best.off() <= w.Droop) && c.Below > best.Below {
+		if best == nil || (c.off() <= w.Droop) != (best.off() <= w.Droop) && c.off() <= w.Droop || (c.off() <= w.Droop) == (best.off() <= w.Droop) && c.Held() > best.Held() {
 			best = c
 		}
 	}
@@ -303,8 +460,8 @@ func Efficient(all []Candidate, w Wish) []Candidate {
 		beaten := false
 		for j := range all {
 			d := &all[j]
-			if d.Rate <= c.Rate && d.Amplifiers <= c.Amplifiers && d.off() <= c.off() && d.Below >= c.Below &&
-				(d.Rate < c.Rate || d.Amplifiers < c.Amplifiers || d.off() < c.off() || d.Below > c.Below || j < i) {
+			if d.Rate <= c.Rate && d.Amplifiers <= c.Amplifiers && d.off() <= c.off() && d.Held() >= c.Held() &&
+				(d.Rate < c.Rate || d.Amplifiers < c.Amplifiers || d.off() < c.off() || d.Held() > c.Held() || j < i) {
 				beaten = true
 				break
 			}

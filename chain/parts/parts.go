@@ -205,10 +205,16 @@ func (w Wish) judge(v Values) Choice {
 	return c
 }
 
-// nearest sorts by error, a wide spread of capacitors counting as a little error, and keeps the first.
+// easyOhms is the resistance that choices of equal error are the nearer to the better: common practice, no source. It
+// loads an amplifier little, and what it feeds loads it little.
+const easyOhms = 10e3
+
+// nearest sorts by error, a wide spread of capacitors and resistors far from the easy ones counting as a little error, and
+// keeps the first.
 func nearest(all []Choice, most int) []Choice {
 	cost := func(c Choice) float64 {
-		return math.Abs(c.ErrorF0) + math.Abs(c.ErrorQ) + math.Abs(c.ErrorGain) + 1e-4*math.Log(c.Spread)
+		away := math.Max(math.Abs(math.Log(c.R1/easyOhms)), math.Abs(math.Log(math.Max(c.R2, c.R1)/easyOhms)))
+		return math.Abs(c.ErrorF0) + math.Abs(c.ErrorQ) + math.Abs(c.ErrorGain) + 1e-4*math.Log(c.Spread) + 1e-4*away
 	}
 	sort.SliceStable(all, func(i, j int) bool { return cost(all[i]) < cost(all[j]) })
 	return all[:min(most, len(all))]

@@ -33,7 +33,7 @@ func Fit(n *circuit.Network, r *render.Result, k int) (chain.Part, float64, bool
 	if !ok {
 		return chain.Part{}, 0, false
 	}
-	series := seriesOf(part)
+	series := part.Preferred()
 	out := n.Amplifiers[k].Out
 	before := loudest(n, out)
 	value := part.Value

@@ -8,7 +8,6 @@ import (
 	"midrail/chain/circuit"
 	"midrail/chain/noise"
 	"midrail/chain/parts"
-	"midrail/chain/preferred"
 	"midrail/chain/render"
 	"midrail/signals"
 	"midrail/signals/tone"
@@ -78,16 +77,23 @@ type Suggestion struct {
 	Fits  bool    // whether that run touched no limit and kept the margin
 }
 
-// Suggest returns the value of the part that sets the gain of the tightest stage with which a full run leaves the margin
-// in dB, verified by that run: the nearest preferred value to the present one that does. It reports false where no part
-// sets a gain. run renders the tracks through a network.
-func Suggest(n *circuit.Network, r *render.Result, margin float64, run func(*circuit.Network) (*render.Result, error)) (Suggestion, bool, error) {
-	tightest := -1
-	for k := range r.Amplifiers {
-		if tightest < 0 || r.Amplifiers[k].Room() < r.Amplifiers[tightest].Room() {
-			tightest = k
+// Tightest returns the amplifier that has the least room of a run, and how much in dB; −1 and +Inf where nothing is asked
+// of any.
+func Tightest(n *circuit.Network, r *render.Result) (k int, left float64) {
+	k, left = -1, math.Inf(1)
+	for i := range r.Amplifiers {
+		if x := r.Amplifiers[i].Room(); !n.Amplifiers[i].Virtual && x < left {
+			k, left = i, x
 		}
 	}
+	return k, left
+}
+
+// Suggest returns the value of the part that sets the gain of the tightest stage with which a full run leaves the margin
+// in dB, verified by that run: the nearest preferred value to the present one that does. It reports false where no part
+// sets a gain. run renders a track through a network.
+func Suggest(n *circuit.Network, r *render.Result, margin float64, run func(*circuit.Network) (*render.Result, error)) (Suggestion, bool, error) {
+	tightest, left := Tightest(n, r)
 	if tightest < 0 {
 		return Suggestion{}, false, nil
 	}
@@ -95,7 +101,7 @@ func Suggest(n *circuit.Network, r *render.Result, margin float64, run func(*cir
 	if !ok {
 		return Suggestion{}, false, nil
 	}
-	series := seriesOf(part)
+	series := part.Preferred()
 	s := Suggestion{Stage: n.Amplifiers[tightest].Name, Part: part, Value: part.Value}
 	fits := func(value float64) (bool, error) {
 		with, _ := n.With(part.Name, value)
@@ -103,11 +109,8 @@ func Suggest(n *circuit.Network, r *render.Result, margin float64, run func(*cir
 		if err != nil {
 			return false, err
 		}
-		s.Value, s.Room = value, math.Inf(1)
-		for _, x := range result.Amplifiers {
-			s.Room = math.Min(s.Room, x.Room())
-		}
-		s.Fits = s.Room >= margin && result.Overloaded == 0
+		_, s.Room = Tightest(with, result)
+		s.Value, s.Fits = value, s.Room >= margin && result.Overloaded == 0
 		return s.Fits, nil
 	}
 	quieter, louder := series.Down, series.Up
@@ -115,35 +118,40 @@ func Suggest(n *circuit.Network, r *render.Result, margin float64, run func(*cir
 		quieter, louder = louder, quieter
 	}
 	// Gain goes nearly as the part: start where it says, then go on by single values.
-	guess := math.Pow(10, (r.Amplifiers[tightest].Room()-margin)/20)
+	guess := math.Pow(10, (left-margin)/20)
 	if !less {
 		guess = 1 / guess
 	}
-	value := series.Nearest(part.Value * guess)
+	value := series.Nearest(part.Value * math.Max(1e-3, math.Min(guess, 1e3)))
 	ok, err := fits(value)
 	for tried := 0; err == nil && !ok && tried < tries; tried++ {
 		value = quieter(value)
 		ok, err = fits(value)
 	}
+	kept := s
 	for tried := 0; err == nil && ok && tried < tries; tried++ {
-		var more bool
-		if more, err = fits(louder(value)); err != nil || !more {
-			break
-		}
 		value = louder(value)
+		if ok, err = fits(value); ok {
+			kept = s
+		}
 	}
-	if err == nil {
-		_, err = fits(value)
-	}
-	return s, true, err
+	return kept, true, err
 }
 
 // Centre is a bias that rests midway between what its stage can reach.
 type Centre struct {
-	Bias    string
-	Now     float64 // V
-	Wanted  float64 // V
-	Divider parts.Ratio
+	Bias        string
+	Now         float64 // V
+	Wanted      float64 // V
+	Top, Bottom chain.Part
+	Divider     parts.Ratio // A at the top, B at the bottom
+}
+
+// Network returns the chain with the divider in it.
+func (c *Centre) Network(n *circuit.Network) *circuit.Network {
+	with, _ := n.With(c.Top.Name, c.Divider.A)
+	with, _ = with.With(c.Bottom.Name, c.Divider.B)
+	return with
 }
 
 // Centres returns, for each bias that a stage's tightest amplifier rides on off centre by more than a hundredth of its
@@ -171,19 +179,9 @@ func Centres(n *circuit.Network, r *render.Result) []Centre {
 		if math.Abs(off) < 0.01*(tightest.LimitHigh-tightest.LimitLow) || !(wanted > 0 && wanted < n.Chain.Supply.Voltage) {
 			continue
 		}
-		list = append(list, Centre{b.Name, r.At.Volts[n.BiasNode(i)], wanted, parts.Bias(wanted, n.Chain.Supply.Voltage, seriesOf(b.Top), 1)[0]})
+		list = append(list, Centre{b.Name, r.At.Volts[n.BiasNode(i)], wanted, b.Top, b.Bottom, parts.Bias(wanted, n.Chain.Supply.Voltage, b.Top.Preferred(), 1)[0]})
 	}
 	return list
-}
-
-func seriesOf(p chain.Part) preferred.Series {
-	if s, err := preferred.Parse(p.Series); err == nil {
-		return s
-	}
-	if p.Unit == chain.Farad {
-		return preferred.DefaultCapacitors
-	}
-	return preferred.DefaultResistors
 }
 
 // Distortion is what a sine of a level comes out with.

@@ -33,9 +33,10 @@ type Options struct {
 	Boards int // 2 or more
 	Seed   uint64
 	Keep   float64 // Hz, where droop is told; 0: the chain's limit, or none
-	// Result and Sound are of a recording through the nominal chain; nil leaves room and fold-back out.
-	Result *render.Result
-	Sound  *corner.Sound
+	// Results and Sounds are of recordings through the nominal chain; room and fold-back are those of the recording that a
+	// board serves worst. None leaves them out.
+	Results []*render.Result
+	Sounds  []*corner.Sound
 	// Thorough adds settling and noise, which take a hundred times as long.
 	Thorough bool
 	Progress func(done int) // called now and then, from several goroutines; may be nil
@@ -55,13 +56,23 @@ const (
 
 // Figure is one figure over all boards.
 type Figure struct {
-	Name    string
-	Unit    string    // "Hz", "dB", "dBFS" or "s"
-	Nominal float64   // of the board with every part at its value
-	Sorted  []float64 // of every board, ascending
-	Shares  []Share   // parts by their share of the variance, the largest first
-	// WorstLow and WorstHigh are the figure with every part at that end of its tolerance that takes it down, or up.
-	WorstLow, WorstHigh float64
+	Name                string
+	Unit                string    // "Hz", "dB", "dBFS" or "s"
+	Nominal             float64   // of the board with every part at its value
+	Sorted              []float64 // of every board, ascending
+	Shares              []Share   // parts by their share of the variance, the largest first
+	WorstLow, WorstHigh Vertex
+	Sound               int // which recording the nominal board serves worst; of room and fold-back
+}
+
+// Vertex is a worst case: a figure with every part at an end of its tolerance. Where a part alone takes the figure up and
+// down tells which end; where a board that was drawn lies further out, the ends nearest to that board are looked at too, and
+// where that does not reach it, either, the board is told itself.
+type Vertex struct {
+	Figure float64
+	// Up and Down are the parts at the higher and at the lower end; those of no influence are in neither. Both are empty
+	// for a board that was drawn.
+	Up, Down []string
 }
 
 // Percentile returns the figure that p of 1 of the boards do not pass.
@@ -187,7 +198,7 @@ func Make(ctx context.Context, n *circuit.Network, o Options) (*Run, error) {
 	if err := ctx.Err(); err != nil {
 		return nil, err
 	}
-	return m.gather(n, vars, factors, values), nil
+	return m.gather(ctx, n, vars, factors, values)
 }
 
 // hypercube draws each variable's factor for every board.
@@ -222,6 +233,7 @@ type measure struct {
 	droopAt float64   // Hz; 0: none
 	asked   []float64 // magnitude at each amplifier's output at mid, nominal
 	nominal []float64
+	worst   []int // of each figure, the recording that the nominal board serves worst
 }
 
 func newMeasure(n *circuit.Network, o Options) *measure {
@@ -254,14 +266,20 @@ func newMeasure(n *circuit.Network, o Options) *measure {
 	add(!math.IsNaN(m.low), LowCorner, "Hz")
 	add(!math.IsNaN(m.high), HighCorner, "Hz")
 	add(m.droopAt > 0, Droop, "dB")
-	add(o.Result != nil, Room, "dB")
-	add(o.Sound != nil, Below, "dB")
+	add(len(o.Results) > 0, Room, "dB")
+	add(len(o.Sounds) > 0, Below, "dB")
 	add(o.Thorough, Settling, "s")
 	add(o.Thorough, Noise, "dBFS")
-	if o.Result != nil {
+	if len(o.Results) > 0 {
 		m.asked = atOutputs(n, m.mid)
 	}
-	m.nominal = m.figures(n)
+	m.nominal, m.worst = m.figures(n), make([]int, len(m.names))
+	if k := slices.Index(m.names, Room); k >= 0 {
+		_, m.worst[k] = m.room(n)
+	}
+	if k := slices.Index(m.names, Below); k >= 0 {
+		_, m.worst[k] = m.below(n)
+	}
 	return m
 }
 
@@ -293,11 +311,13 @@ func (m *measure) figures(n *circuit.Network) []float64 {
 	if m.droopAt > 0 {
 		out = append(out, 20*math.Log10(mid/gain(m.droopAt)))
 	}
-	if m.o.Result != nil {
-		out = append(out, m.room(n))
+	if len(m.o.Results) > 0 {
+		left, _ := m.room(n)
+		out = append(out, left)
 	}
-	if m.o.Sound != nil {
-		out = append(out, m.o.Sound.BelowWith(n))
+	if len(m.o.Sounds) > 0 {
+		below, _ := m.below(n)
+		out = append(out, below)
 	}
 	if m.o.Thorough {
 		out = append(out, settling(n), noise.At(n).Figures(n).DBFS)
@@ -338,33 +358,53 @@ func cross(gain func(f float64) float64, near, level float64, rises float64) flo
 	return math.Exp(x1)
 }
 
-// room is what the tightest amplifier of a board has left of the nominal run's excursions, which grow with the gain.
-func (m *measure) room(n *circuit.Network) float64 {
+// below is by how much fold-back lies below the wanted sound of the recording that a board serves worst, and which that is.
+func (m *measure) below(n *circuit.Network) (least float64, which int) {
+	least = math.Inf(1)
+	for i, s := range m.o.Sounds {
+		if b := s.BelowWith(n); b < least {
+			least, which = b, i
+		}
+	}
+	return least, which
+}
+
+// room is what the tightest amplifier of a board has left of the nominal runs' excursions, which grow with the gain, and of
+// which run.
+func (m *measure) room(n *circuit.Network) (least float64, which int) {
 	at, err := n.Rest()
 	if err != nil {
-		return math.Inf(-1)
+		return math.Inf(-1), 0
 	}
 	asked := atOutputs(n, m.mid)
-	least := math.Inf(1)
-	for k, x := range m.o.Result.Amplifiers {
-		a := &n.Amplifiers[k]
-		if a.Virtual {
-			continue
+	least = math.Inf(1)
+	for i, result := range m.o.Results {
+		for k, x := range result.Amplifiers {
+			a := &n.Amplifiers[k]
+			if a.Virtual {
+				continue
+			}
+			grown := 1.
+			if m.asked[k] > 0 {
+				grown = asked[k] / m.asked[k]
+			}
+			rest := at.Sources[k]
+			board := render.AmplifierRange{Rest: rest, Lowest: rest + (x.Lowest-x.Rest)*grown, Highest: rest + (x.Highest-x.Rest)*grown, LimitLow: a.Low, LimitHigh: a.High}
+			if left := board.Room(); left < least {
+				least, which = left, i
+			}
 		}
-		grown := 1.
-		if m.asked[k] > 0 {
-			grown = asked[k] / m.asked[k]
-		}
-		rest := at.Sources[k]
-		board := render.AmplifierRange{Rest: rest, Lowest: rest + (x.Lowest-x.Rest)*grown, Highest: rest + (x.Highest-x.Rest)*grown, LimitLow: a.Low, LimitHigh: a.High}
-		least = math.Min(least, board.Room())
 	}
-	return least
+	return least, which
 }
 
 // gather puts the boards' figures together.
-func (m *measure) gather(n *circuit.Network, vars []variable, factors, values [][]float64) *Run {
+func (m *measure) gather(ctx context.Context, n *circuit.Network, vars []variable, factors, values [][]float64) (*Run, error) {
 	run := &Run{Boards: m.o.Boards}
+	slopes, err := m.slopes(ctx, n, vars)
+	if err != nil {
+		return nil, err
+	}
 	columns := make([][]float64, len(m.names))
 	for k := range m.names {
 		column := make([]float64, len(values))
@@ -372,18 +412,14 @@ func (m *measure) gather(n *circuit.Network, vars []variable, factors, values []
 			column[i] = values[i][k]
 		}
 		columns[k] = column
-		f := Figure{Name: m.names[k], Unit: m.units[k], Nominal: m.nominal[k], Sorted: slices.Clone(column)}
+		f := Figure{Name: m.names[k], Unit: m.units[k], Nominal: m.nominal[k], Sorted: slices.Clone(column), Sound: m.worst[k]}
 		sort.Float64s(f.Sorted)
-		low, high := newBoard(n), newBoard(n)
 		for v, x := range vars {
 			r := correlation(factors[v], column)
 			f.Shares = append(f.Shares, Share{x.name, r * r})
-			toward := math.Copysign(x.tolerance, r)
-			x.apply(high, 1+toward)
-			x.apply(low, 1-toward)
 		}
 		sort.SliceStable(f.Shares, func(i, j int) bool { return f.Shares[i].Share > f.Shares[j].Share })
-		f.WorstLow, f.WorstHigh = m.figures(low.network(n))[k], m.figures(high.network(n))[k]
+		f.WorstLow, f.WorstHigh = m.vertex(n, vars, k, -1, slopes, factors, column), m.vertex(n, vars, k, 1, slopes, factors, column)
 		run.Figures = append(run.Figures, f)
 	}
 	holds := make([]bool, len(values))
@@ -424,7 +460,70 @@ func (m *measure) gather(n *circuit.Network, vars []variable, factors, values []
 		}
 	}
 	run.Yield = float64(good) / float64(len(values))
-	return run
+	return run, nil
+}
+
+// vertex finds the worst case of the k-th figure towards +1 or −1.
+func (m *measure) vertex(n *circuit.Network, vars []variable, k int, toward float64, slopes, factors [][]float64, column []float64) Vertex {
+	at := func(end func(v int) float64) Vertex {
+		b := newBoard(n)
+		var x Vertex
+		for v := range vars {
+			if vars[v].tolerance == 0 {
+				continue
+			}
+			switch e := end(v); {
+			case e > 0:
+				x.Up = append(x.Up, vars[v].name)
+				vars[v].apply(b, 1+vars[v].tolerance)
+			case e < 0:
+				x.Down = append(x.Down, vars[v].name)
+				vars[v].apply(b, 1-vars[v].tolerance)
+			}
+		}
+		x.Figure = m.figures(b.network(n))[k]
+		return x
+	}
+	worst := at(func(v int) float64 { return toward * slopes[v][k] })
+	furthest := 0
+	for i := range column {
+		if toward*(column[i]-column[furthest]) > 0 {
+			furthest = i
+		}
+	}
+	beyond := func(x float64) bool { return toward*(x-worst.Figure) > 0 }
+	if beyond(column[furthest]) {
+		if near := at(func(v int) float64 { return factors[v][furthest] - 1 }); beyond(near.Figure) {
+			worst = near
+		}
+		if beyond(column[furthest]) {
+			worst = Vertex{Figure: column[furthest]}
+		}
+	}
+	return worst
+}
+
+// slopes tells, for each variable and figure, how far the figure goes from the lower to the higher end of that variable
+// alone; 0 where that is less than rounding.
+func (m *measure) slopes(ctx context.Context, n *circuit.Network, vars []variable) ([][]float64, error) {
+	const rounding = 1e-10
+	all := make([][]float64, len(vars))
+	for v, x := range vars {
+		if err := ctx.Err(); err != nil {
+			return nil, err
+		}
+		low, high := newBoard(n), newBoard(n)
+		x.apply(low, 1-x.tolerance)
+		x.apply(high, 1+x.tolerance)
+		from, to := m.figures(low.network(n)), m.figures(high.network(n))
+		all[v] = make([]float64, len(m.names))
+		for k := range all[v] {
+			if d := to[k] - from[k]; math.Abs(d) > rounding*math.Abs(m.nominal[k]) {
+				all[v][k] = d
+			}
+		}
+	}
+	return all, nil
 }
 
 // correlation is Pearson's; 0 where one does not vary.

@@ -5,6 +5,7 @@ import (
 	"math"
 	"reflect"
 	"runtime"
+	"slices"
 	"testing"
 
 	"midrail/chain"
@@ -115,11 +116,14 @@ func TestCornerOfAnRCSpreadsAsItsParts(t *testing.T) {
 	// Every part at its end: 1/((1 ± 1 %)(1 ± 5 %)). Mid-band is told a hundredth of the corner up, where an RC has lost
 	// 4e-4 dB of it already.
 	f0 := 1 / (2 * math.Pi * 1e-4)
-	if low, high := f0/(1.01*1.05), f0/(0.99*0.95); !(math.Abs(f.WorstLow/low-1) < 2e-4) || !(math.Abs(f.WorstHigh/high-1) < 2e-4) {
-		t.Errorf("worst %g to %g Hz, want %g to %g Hz", f.WorstLow, f.WorstHigh, low, high)
+	if low, high := f0/(1.01*1.05), f0/(0.99*0.95); !(math.Abs(f.WorstLow.Figure/low-1) < 2e-4) || !(math.Abs(f.WorstHigh.Figure/high-1) < 2e-4) {
+		t.Errorf("worst %g to %g Hz, want %g to %g Hz", f.WorstLow.Figure, f.WorstHigh.Figure, low, high)
 	}
-	if !(f.Sorted[0] >= f.WorstLow && f.Sorted[len(f.Sorted)-1] <= f.WorstHigh) {
+	if !(f.Sorted[0] >= f.WorstLow.Figure && f.Sorted[len(f.Sorted)-1] <= f.WorstHigh.Figure) {
 		t.Error("a board lies beyond the worst case")
+	}
+	if up, down := f.WorstHigh.Up, f.WorstHigh.Down; len(up) != 0 || !slices.Equal(down, []string{"it.r", "it.c"}) {
+		t.Errorf("the highest corner has %v up and %v down", up, down)
 	}
 }
 

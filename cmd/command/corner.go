@@ -7,6 +7,7 @@ import (
 	"io"
 	"math"
 	"os"
+	"slices"
 	"strconv"
 	"strings"
 
@@ -17,6 +18,7 @@ import (
 	"midrail/chain/circuit"
 	"midrail/chain/corner"
 	"midrail/chain/parts"
+	"midrail/chain/preferred"
 	"midrail/chain/quantity"
 	"midrail/chain/render"
 	"midrail/chain/residue"
@@ -34,7 +36,8 @@ func newCorner(s streams) *cobra.Command {
 		Long: `corner tries common converter rates with filters of order 1 to 8, three alignments and ten corners in place of the
 chain's own anti-alias filter, and tells what each would let fold back of a recording (the demo's, if none is given):
 the efficient ones, than which none is better in every respect, and one recommendation with its parts, verified by a
-full run. Several recordings are taken as one, the second following the first. --write puts it into a chain file.`,
+full run. Of several recordings each candidate is judged on the one that it serves worst. It tells, too, whether converting
+faster with a digital low-pass behind the converter would save amplifiers. --write puts the recommendation into a chain file.`,
 		Example: "  midrail corner front-end.toml song.wav --keep 3kHz --write better.toml",
 		Args:    withChain,
 		RunE: func(cmd *cobra.Command, args []string) (err error) {
@@ -59,7 +62,10 @@ full run. Several recordings are taken as one, the second following the first. -
 					return usageError{err}
 				}
 			}
-			r, err := read.one(cmd.Context(), n.Chain, s.in, args[1:])
+			if write != "" && len(f.set) > 0 {
+				return usageError{errors.New("--write writes what is in the chain file: put the values of --set there first")}
+			}
+			list, err := read.orDemo(cmd.Context(), n.Chain, s.in, args[1:])
 			if err != nil {
 				return err
 			}
@@ -67,7 +73,7 @@ full run. Several recordings are taken as one, the second following the first. -
 			if err != nil {
 				return err
 			}
-			out, err := cornerOf(cmd.Context(), n, string(text), r, w)
+			out, err := cornerOf(cmd.Context(), n, string(text), f.set, list, w)
 			if err != nil {
 				return err
 			}
@@ -95,31 +101,46 @@ full run. Several recordings are taken as one, the second following the first. -
 
 // The choice as JSON.
 type cornerResult struct {
-	Track     string            `json:"track"`
-	Replaces  []string          `json:"replaces"` // stages
-	Tried     int               `json:"tried"`
-	Efficient []cornerCandidate `json:"efficient"`
-	Best      cornerCandidate   `json:"recommendation"`
-	Meets     bool              `json:"meets"`
-	Proven    bool              `json:"track_proves_it"` // whether the track holds anything above half the recommended rate
-	Stages    []string          `json:"stages"`          // of the recommendation, as lines of a chain file
-	FullRun   cornerRun         `json:"full_run"`
-	File      string            `json:"-"`
+	Tracks       []cornerTrack   `json:"tracks"`
+	Replaces     []string        `json:"replaces"` // stages
+	Tried        int             `json:"tried"`
+	Efficient    []cornerChoice  `json:"efficient"`
+	Best         cornerChoice    `json:"recommendation"`
+	Meets        bool            `json:"meets"`
+	Stages       []string        `json:"stages"` // of the recommendation, as lines of a chain file
+	Oversampling *cornerOversamp `json:"oversampling"`
+	File         string          `json:"-"`
+	Keep         float64         `json:"-"` // Hz
 }
 
-type cornerCandidate struct {
-	Rate       report.Number `json:"rate_hz"`
-	Order      int           `json:"order"`
-	Alignment  string        `json:"alignment"`
-	Corner     report.Number `json:"corner_hz"`
-	Droop      report.Number `json:"droop_db"`
-	FoldBack   report.Number `json:"fold_back_dbfs"`
-	FoldBackA  report.Number `json:"fold_back_dbfs_a"`
-	Worst      report.Number `json:"fold_back_worst_125ms_dbfs"`
-	Below      report.Number `json:"fold_back_below_wanted_db"`
+// cornerChoice is a candidate; what folds back is that of the track of which it lies the least below the wanted sound.
+type cornerChoice struct {
+	Rate      report.Number `json:"rate_hz"` // conversions a second
+	Order     int           `json:"order"`
+	Alignment string        `json:"alignment"`
+	Corner    report.Number `json:"corner_hz"`
+	Droop     report.Number `json:"droop_db"`
+	Track     string        `json:"track"`
+	cornerFold
 	WorstTone  report.Number `json:"worst_tone_db"`
 	Overshoot  report.Number `json:"overshoot"`
 	Amplifiers int           `json:"amplifiers"`
+}
+
+type cornerFold struct {
+	FoldBack  report.Number `json:"fold_back_dbfs"`
+	FoldBackA report.Number `json:"fold_back_dbfs_a"`
+	Worst     report.Number `json:"fold_back_worst_125ms_dbfs"`
+	Below     report.Number `json:"fold_back_below_wanted_db"`
+	Proven    bool          `json:"track_proves_it"` // whether the track holds anything where sound comes down into the band that is kept
+}
+
+// cornerTrack is what the recommendation does on one track.
+type cornerTrack struct {
+	Name string        `json:"track"`
+	Top  report.Number `json:"holds_up_to_hz"`
+	cornerFold
+	FullRun cornerRun `json:"full_run"`
 }
 
 type cornerRun struct {
@@ -128,13 +149,36 @@ type cornerRun struct {
 	Wanted   report.Number `json:"wanted_dbfs"`
 }
 
-func candidateOf(c corner.Candidate) cornerCandidate {
+// cornerOversamp compares a converter at the rate that is handed on with a faster one and a digital low-pass behind it.
+type cornerOversamp struct {
+	HandedOn report.Number  `json:"handed_on_hz"`
+	Direct   cornerChoice   `json:"direct"`
+	Meets    bool           `json:"direct_meets"`
+	Over     *cornerDigital `json:"oversampled"` // null: none saves an amplifier
+}
+
+type cornerDigital struct {
+	cornerChoice
+	By           int           `json:"by"`
+	Taps         int           `json:"taps"`
+	PassEdge     report.Number `json:"pass_edge_hz"`
+	StopEdge     report.Number `json:"stop_edge_hz"`
+	Attenuation  report.Number `json:"stop_attenuation_db"`
+	MultiplyAdds report.Number `json:"multiply_adds_per_s"`
+}
+
+func foldOf(f corner.Fold) cornerFold {
 	of := report.Of
-	return cornerCandidate{of(c.Rate), c.Order, string(c.Alignment), of(c.Corner), of(c.Droop), of(c.FoldBack), of(c.FoldBackA), of(c.Worst), of(c.Below), of(c.WorstTone), of(c.Overshoot), c.Amplifiers}
+	return cornerFold{of(f.FoldBack), of(f.FoldBackA), of(f.Worst), of(f.Below), f.Proven}
+}
+
+func choiceOf(c corner.Candidate, list []recording) cornerChoice {
+	of := report.Of
+	return cornerChoice{of(c.Rate), c.Order, string(c.Alignment), of(c.Corner), of(c.Droop), list[c.Sound].name, foldOf(c.Fold), of(c.WorstTone), of(c.Overshoot), c.Amplifiers}
 }
 
 // soundOf reads a recording as it is in front of the filter.
-func soundOf(n *circuit.Network, r recording) (*corner.Sound, error) {
+func soundOf(ctx context.Context, n *circuit.Network, r recording) (*corner.Sound, error) {
 	tracks, err := openTracks(n.Chain, jobOf(n.Chain, r))
 	if err != nil {
 		return nil, err
@@ -144,25 +188,32 @@ func soundOf(n *circuit.Network, r recording) (*corner.Sound, error) {
 	for i := range feeds {
 		feeds[i] = tracks.feeds[i].Sound
 	}
-	return corner.Listen(n, feeds, tracks.list[0].Rate())
+	return corner.Listen(ctx, n, feeds, tracks.list[0].Rate())
 }
 
-func cornerOf(ctx context.Context, n *circuit.Network, text string, r recording, w corner.Wish) (*cornerResult, error) {
-	sound, err := soundOf(n, r)
-	if err != nil {
-		return nil, err
+func cornerOf(ctx context.Context, n *circuit.Network, text string, set []string, list []recording, w corner.Wish) (*cornerResult, error) {
+	var sounds []*corner.Sound
+	for i, r := range list {
+		sound, err := soundOf(ctx, n, r)
+		if err != nil {
+			return nil, during(err, "reading %s, %d of %d", r.name, i+1, len(list))
+		}
+		sounds = append(sounds, sound)
 	}
-	all, err := corner.Candidates(n, sound, w)
+	all, err := corner.Candidates(ctx, n, sounds, w)
 	if err != nil {
-		return nil, err
+		return nil, during(err, "judging candidates, the recordings being read")
 	}
 	if len(all) == 0 {
 		return nil, usageError{fmt.Errorf("no rate holds a band up to %s: a rate is at least twice that", quantity.Format(quantity.Frequency, w.Keep))}
 	}
 	best, meets := corner.Recommend(all, w)
-	out := &cornerResult{Track: r.name, Tried: len(all), Best: candidateOf(best), Meets: meets, Proven: sound.Top > best.Rate/2}
+	out := &cornerResult{Tried: len(all), Best: choiceOf(best, list), Meets: meets, Keep: w.Keep}
 	for _, c := range corner.Efficient(all, w) {
-		out.Efficient = append(out.Efficient, candidateOf(c))
+		out.Efficient = append(out.Efficient, choiceOf(c, list))
+	}
+	if out.Oversampling, err = oversamplingOf(ctx, n, sounds, list, w); err != nil {
+		return nil, during(err, "comparing with oversampling, %d candidates being judged", len(all))
 	}
 	var from string
 	out.Replaces, from = corner.Filter(n)
@@ -170,26 +221,70 @@ func cornerOf(ctx context.Context, n *circuit.Network, text string, r recording,
 		return nil, err
 	}
 	out.File = rewritten(text, out.Replaces, out.Stages, best.Rate)
-	c, err := chain.Read(n.Chain.File+" with the recommended filter", []byte(out.File), nil)
+	c, err := chain.Read(n.Chain.File+" with the recommended filter", []byte(out.File), kept(set, out.Replaces))
 	if err != nil {
 		return nil, err
 	}
 	for i := range c.Inputs { // which the filter leaves alone
 		c.Inputs[i].FullScale = n.Chain.Inputs[i].FullScale
 	}
-	out.FullRun, err = fullRun(ctx, circuit.New(c), r)
-	return out, err
+	with := circuit.New(c)
+	for i, r := range list {
+		fold, err := best.On(n, sounds[i], w.Keep)
+		if err != nil {
+			return nil, err
+		}
+		full, err := fullRun(ctx, with, r)
+		if err != nil {
+			return nil, during(err, "verifying the recommendation on %s, %d of %d", r.name, i+1, len(list))
+		}
+		out.Tracks = append(out.Tracks, cornerTrack{r.name, report.Of(sounds[i].Top), foldOf(fold), full})
+	}
+	return out, nil
+}
+
+// kept is those of --set that the recommended filter and its converter leave standing.
+func kept(set, replaces []string) []string {
+	var still []string
+	for _, one := range set {
+		name, _, _ := strings.Cut(one, "=")
+		owner, key, _ := strings.Cut(strings.TrimSpace(name), ".")
+		if slices.Contains(replaces, owner) || owner == "converter" && slices.Contains(converterSource, key) {
+			continue
+		}
+		still = append(still, one)
+	}
+	return still
+}
+
+// oversamplingOf compares order with oversampling for the chain's own rate or, where that does not hold the band, for the
+// lowest of those that are tried.
+func oversamplingOf(ctx context.Context, n *circuit.Network, sounds []*corner.Sound, list []recording, w corner.Wish) (*cornerOversamp, error) {
+	handedOn := n.Chain.Converter.Rate
+	if handedOn < 2*w.Keep {
+		handedOn = math.Inf(1)
+		for _, r := range w.Rates {
+			if r >= 2*w.Keep {
+				handedOn = math.Min(handedOn, r)
+			}
+		}
+	}
+	direct, meets, over, err := corner.Oversample(ctx, n, sounds, w, handedOn)
+	if err != nil {
+		return nil, err
+	}
+	of := report.Of
+	out := &cornerOversamp{HandedOn: of(handedOn), Direct: choiceOf(direct, list), Meets: meets}
+	if over != nil {
+		out.Over = &cornerDigital{choiceOf(*over, list), over.By, len(over.Taps), of(w.Keep), of(handedOn / 2), of(over.Attenuation), of(over.MultiplyAdds(over.Rate))}
+	}
+	return out, nil
 }
 
 // fullRun renders the recording through the recommended chain.
 func fullRun(ctx context.Context, n *circuit.Network, r recording) (cornerRun, error) {
-	tracks, err := openTracks(n.Chain, jobOf(n.Chain, r))
-	if err != nil {
-		return cornerRun{}, err
-	}
-	defer tracks.close()
 	meters := residue.NewMeters(n.Chain.Converter.Rate)
-	if _, err := render.Run(ctx, n, tracks.feeds, render.Options{}, func(b *render.Block) error { meters.Write(b); return nil }); err != nil {
+	if _, err := runOf(ctx, n, r, meters.Write); err != nil {
 		return cornerRun{}, err
 	}
 	res := meters.Result()
@@ -222,9 +317,19 @@ func filterStages(n *circuit.Network, c corner.Candidate, replaces []string, fro
 	if err != nil {
 		return nil, err
 	}
+	resistors, capacitors := preferred.DefaultResistors, preferred.DefaultCapacitors
+	for _, one := range replaces {
+		for _, p := range n.Chain.StageNamed(one).Parts {
+			if p.Unit == chain.Farad {
+				capacitors = p.Preferred()
+			} else {
+				resistors = p.Preferred()
+			}
+		}
+	}
 	var stages []string
 	for i, section := range sections {
-		wish := parts.Wish{Kind: parts.SallenKeyKind, F0: section.F0 * c.Corner, Q: section.Q, GainBandwidth: model}
+		wish := parts.Wish{Kind: parts.SallenKeyKind, F0: section.F0 * c.Corner, Q: section.Q, GainBandwidth: model, Resistors: resistors, Capacitors: capacitors}
 		if section.Q == 0 {
 			wish.Kind = parts.RCKind
 		}
@@ -261,6 +366,9 @@ func filterStages(n *circuit.Network, c corner.Candidate, replaces []string, fro
 	return stages, nil
 }
 
+// converterSource are the keys that tell a converter's rate and what it converts.
+var converterSource = []string{"rate", "clock", "divide", "from"}
+
 // rewritten returns a chain file's text with the named stages taken out, others put in front of its converter, and the
 // converter's rate and source set.
 func rewritten(text string, without, stages []string, rate float64) string {
@@ -283,8 +391,7 @@ func rewritten(text string, without, stages []string, rate float64) string {
 				out = append(out, "")
 			}
 			for _, line := range block {
-				switch key, _, _ := strings.Cut(strings.TrimSpace(line), "="); strings.TrimSpace(key) {
-				case "rate", "clock", "divide", "from":
+				if key, _, _ := strings.Cut(strings.TrimSpace(line), "="); slices.Contains(converterSource, strings.TrimSpace(key)) {
 					continue
 				}
 				out = append(out, line)
@@ -328,37 +435,80 @@ func named(block, names []string) bool {
 	return false
 }
 
+// tenth prints a figure to a tenth, without its unit.
+func tenth(n report.Number) string {
+	v, there := n.Value()
+	if !there {
+		return report.Plain(n, 3)
+	}
+	return strings.Replace(strconv.FormatFloat(math.Round(10*v)/10+0, 'f', 1, 64), "-", "−", 1)
+}
+
+// kilo prints a frequency in kHz.
+func kilo(n report.Number) string {
+	v, _ := n.Value()
+	return report.Plain(report.Of(v/1000), 4)
+}
+
+// shortAlignment are the names of alignments in a table.
+var shortAlignment = map[string]string{"butterworth": "Bu", "bessel": "Be", "chebyshev": "Ch"}
+
 func (r *cornerResult) print(w io.Writer, written string) error {
 	t := report.NewText(w)
-	t.Words("%d candidates on %s; those than which none is better in rate, amplifiers, droop and fold-back:", r.Tried, r.Track)
+	var names []string
+	for _, track := range r.Tracks {
+		names = append(names, track.Name)
+	}
+	t.Words("%d candidates on %s. Those than which none is better in rate, amplifiers, droop and fold-back:", r.Tried, strings.Join(names, ", "))
 	t.Line("")
 	var rows [][]string
-	row := func(c cornerCandidate) []string {
-		return []string{report.Hz(c.Rate), fmt.Sprintf("%d %s", c.Order, c.Alignment), report.Hz(c.Corner), report.DB(c.Droop), report.DB(c.Below), report.DB(c.WorstTone), fmt.Sprint(c.Amplifiers)}
-	}
 	const most = 14
 	step := max(1, (len(r.Efficient)+most-1)/most)
 	for i, c := range r.Efficient {
 		if i%step == 0 {
-			rows = append(rows, row(c))
+			over, _ := c.Overshoot.Value()
+			rows = append(rows, []string{kilo(c.Rate), fmt.Sprint(c.Order, " ", shortAlignment[c.Alignment]), kilo(c.Corner), fmt.Sprint(c.Amplifiers), tenth(c.Droop), fmt.Sprintf("%.0f", 100*over),
+				tenth(c.WorstTone), tenth(c.FoldBack), tenth(c.FoldBackA), tenth(c.Worst), tenth(c.Below)})
 		}
 	}
-	t.Table([]string{"rate", "order", "corner", "droop", "below wanted", "worst tone", "amps"}, rows)
+	t.Table([]string{"rate", "order", "corner", "amps", "droop", "step", "tone", "fold", "A", "125 ms", "below"}, rows)
+	t.Line("")
+	t.Words("rate: thousand conversions a second. order: Bu Butterworth, Be Bessel, Ch Chebyshev of 0.5 dB. corner: kHz. amps: amplifiers. droop: dB at %s. step: overshoot, %%. "+
+		"tone: the most that comes into the band of a full-scale tone at any frequency, dB. fold, A, 125 ms: fold-back, A-weighted, and of the worst eighth of a second, dBFS. below: fold-back below wanted, dB.", report.Hz(report.Of(r.Keep)))
+	if len(r.Tracks) > 1 {
+		t.Words("Fold-back is that of the recording which a candidate serves worst.")
+	}
 	if step > 1 {
-		t.Line("one in %d of %d is shown; --json tells all", step, len(r.Efficient))
+		t.Line("One in %d of %d is shown; --json tells all.", step, len(r.Efficient))
 	}
 	t.Line("")
 	verdict := "does all that is asked with the fewest amplifiers and the lowest rate"
 	if !r.Meets {
-		verdict = "is the best there is; none does all that is asked. A higher rate, with a digital filter behind it, may be cheaper than a higher order"
+		verdict = "is the best there is; none does all that is asked"
 	}
 	b := r.Best
-	t.Words("Recommended: %s, order %d %s at %s, which %s: it droops by %s, and fold-back lies %s below the wanted sound (%s; worst eighth of a second %s)",
-		report.Hz(b.Rate), b.Order, b.Alignment, report.Hz(b.Corner), verdict, report.DB(b.Droop), report.DB(b.Below), report.DBFS(b.FoldBack), report.DBFS(b.Worst))
-	t.Words("A full run of that chain, with its preferred values, gives %s below wanted (%s)", report.DB(r.FullRun.Below), report.DBFS(r.FullRun.FoldBack))
-	if !r.Proven {
-		t.Words("The track cannot prove it: it holds nothing above half its own rate")
+	t.Words("Recommended: %s, which %s: it %s, a step overshoots by %s, and a full-scale tone of any frequency leaves %s at most in the band.",
+		filterWords(b), verdict, droopWords(b.Droop, r.Keep), report.Percent(b.Overshoot), report.DB(b.WorstTone))
+	t.Line("")
+	rows = nil
+	proven := false
+	for _, track := range r.Tracks {
+		rows = append(rows, []string{track.Name, tenth(track.Below), tenth(track.FoldBack), tenth(track.FoldBackA), tenth(track.Worst), tenth(track.FullRun.Below), tenth(track.FullRun.FoldBack)})
+		proven = proven || track.Proven
 	}
+	t.Table([]string{"fold-back on", "below", "fold", "A", "125 ms", "full run: below", "fold"}, rows)
+	t.Words("The full run is of that chain with its preferred values.")
+	if rate, _ := b.Rate.Value(); !proven {
+		top := 0.
+		for _, track := range r.Tracks {
+			hz, _ := track.Top.Value()
+			top = math.Max(top, hz)
+		}
+		t.Words("The track cannot prove it: there is nothing in it above half its own rate, %s, and what would come down into the band lies above %s. The choice went by the worst tone as well.",
+			report.Hz(report.Of(top)), report.Hz(report.Of(rate-r.Keep)))
+	}
+	t.Line("")
+	r.Oversampling.print(t, r.Keep)
 	t.Line("")
 	for _, s := range r.Stages {
 		for _, line := range strings.Split(s, "\n") {
@@ -370,4 +520,53 @@ func (r *cornerResult) print(w io.Writer, written string) error {
 		t.Line("written to %s", written)
 	}
 	return t.Err()
+}
+
+// filterWords tells a candidate in words.
+func filterWords(c cornerChoice) string {
+	return fmt.Sprintf("%s, order %d %s at %s (%s)", report.Hz(c.Rate), c.Order, c.Alignment, report.Hz(c.Corner), amplifierWords(c.Amplifiers))
+}
+
+func amplifierWords(count int) string {
+	switch count {
+	case 0:
+		return "no amplifier"
+	case 1:
+		return "1 amplifier"
+	}
+	return fmt.Sprintf("%d amplifiers", count)
+}
+
+func droopWords(droop report.Number, keep float64) string {
+	v, _ := droop.Value()
+	if v < 0 {
+		return fmt.Sprintf("lifts %s by %s", report.Hz(report.Of(keep)), report.DB(report.Of(-v)))
+	}
+	return fmt.Sprintf("droops by %s at %s", report.DB(droop), report.Hz(report.Of(keep)))
+}
+
+func (o *cornerOversamp) print(t *report.Text, keep float64) {
+	rate := report.Hz(o.HandedOn)
+	direct := fmt.Sprintf("converting at that rate takes order %d %s at %s (%s; %s below)", o.Direct.Order, o.Direct.Alignment, report.Hz(o.Direct.Corner), amplifierWords(o.Direct.Amplifiers), report.DB(o.Direct.Below))
+	if !o.Meets {
+		direct = "no order up to 8 does what is asked when converting at that rate"
+	}
+	if o.Over == nil {
+		t.Words("To hand on %s, %s; converting faster with a digital low-pass behind would save no amplifier.", rate, direct)
+		return
+	}
+	c := o.Over
+	t.Words("To hand on %s, %s. Cheaper than order: convert %d times as often, at %s, behind order %d %s at %s (%s), then a digital low-pass of %d taps (to %s, %s down from %s; %s multiply-adds a second for the samples that are kept), and keep one sample in %d: "+
+		"fold-back lies %s below the wanted sound (%s), the worst tone %s, and it %s.",
+		rate, direct, c.By, report.Hz(c.Rate), c.Order, c.Alignment, report.Hz(c.Corner), amplifierWords(c.Amplifiers), c.Taps, report.Hz(c.PassEdge), report.DB(c.Attenuation), report.Hz(c.StopEdge), millions(c.MultiplyAdds), c.By,
+		report.DB(c.Below), report.DBFS(c.FoldBack), report.DB(c.WorstTone), droopWords(c.Droop, keep))
+}
+
+// millions prints a count in thousands or millions.
+func millions(n report.Number) string {
+	v, _ := n.Value()
+	if v < 1e6 {
+		return report.Plain(report.Of(v/1e3), 3) + " thousand"
+	}
+	return report.Plain(report.Of(v/1e6), 3) + " million"
 }

@@ -72,6 +72,22 @@ type usageError struct{ error }
 // refusal is something that is not done for the user's sake.
 type refusal struct{ error }
 
+// interrupted is an interruption that tells what was being done.
+type interrupted struct {
+	at string
+	error
+}
+
+func (i interrupted) Unwrap() error { return i.error }
+
+// during tells, of an interruption, what was being done; other errors it leaves alone.
+func during(err error, format string, args ...any) error {
+	if !errors.Is(err, context.Canceled) {
+		return err
+	}
+	return interrupted{fmt.Sprintf(format, args...), err}
+}
+
 // errBroken says that the work is done and a limit does not hold.
 var errBroken = errors.New("a limit is broken")
 
@@ -81,6 +97,7 @@ func (s streams) status(err error) int {
 	var format *signals.FormatError
 	var usage usageError
 	var refused refusal
+	var stopped interrupted
 	switch {
 	case err == nil:
 		return Done
@@ -98,6 +115,9 @@ func (s streams) status(err error) int {
 	case errors.As(err, &refused):
 		fmt.Fprintf(s.err, "midrail: %v\n", refused.error)
 		return WrongInput
+	case errors.As(err, &stopped):
+		fmt.Fprintf(s.err, "midrail: interrupted while %s; nothing was left behind\n", stopped.at)
+		return Failed
 	case errors.Is(err, context.Canceled):
 		fmt.Fprintln(s.err, "midrail: interrupted; nothing was left behind")
 		return Failed

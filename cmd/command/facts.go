@@ -91,15 +91,12 @@ func partsOf(c *chain.Chain) []report.Part {
 	for _, p := range c.Parts() {
 		owner := strings.TrimSuffix(p.Name, "."+p.Key)
 		one := report.Part{Ref: p.Ref, Stage: owner, Role: roles[p.Key], Key: p.Key, Value: report.Of(p.Value), Unit: report.Ohm, Series: p.Series}
-		series := preferred.DefaultResistors
+		series := p.Preferred()
 		if p.Unit == chain.Farad {
-			one.Unit, series = report.Farad, preferred.DefaultCapacitors
+			one.Unit = report.Farad
 		}
 		if owner, filter := strings.CutSuffix(owner, ".supply_filter"); filter {
 			one.Stage, one.Role = owner, "supply filter "+one.Role
-		}
-		if s, err := preferred.Parse(p.Series); err == nil {
-			series = s
 		}
 		one.Series = series.String()
 		if t, there := tolerances[series]; there {

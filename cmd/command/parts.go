@@ -114,7 +114,7 @@ func newFilterParts(s streams) *cobra.Command {
 a given f0 and Q. With --amplifier the values are chosen so that the section comes out right with that class's
 gain-bandwidth; what an ideal design would give with it is told beside.`,
 		Args: cobra.NoArgs,
-		RunE: func(*cobra.Command, []string) error {
+		RunE: func(cmd *cobra.Command, _ []string) error {
 			wish := parts.Wish{Gain: 1}
 			var err error
 			if wish.Resistors, wish.Capacitors, err = f.series(); err != nil {
@@ -147,6 +147,9 @@ gain-bandwidth; what an ideal design would give with it is told beside.`,
 			}
 			var out partsResult
 			for i, section := range sections {
+				if err := cmd.Context().Err(); err != nil {
+					return during(err, "finding values, %d of %d sections being done", i, len(sections))
+				}
 				one := wish
 				if i > 0 {
 					one.Gain = 1 // the first section has it all

@@ -231,44 +231,13 @@ func (r *reading) keep(ctx context.Context, in io.Reader) error {
 	}
 }
 
-// one is the recordings of the paths and of the column as one, each following the one before without a gap; the demo's
-// track where there are none.
-func (r *reading) one(ctx context.Context, c *chain.Chain, in io.Reader, paths []string) (recording, error) {
+// orDemo is recordings, or the demo's track where there are none.
+func (r *reading) orDemo(ctx context.Context, c *chain.Chain, in io.Reader, paths []string) ([]recording, error) {
 	list, err := r.recordings(ctx, c, in, paths)
-	if err != nil {
-		return recording{}, err
+	if err == nil && len(list) == 0 {
+		list = []recording{demoRecording()}
 	}
-	switch len(list) {
-	case 0:
-		return demoRecording(), nil
-	case 1:
-		return list[0], nil
-	}
-	var names []string
-	for _, one := range list {
-		names = append(names, one.name)
-	}
-	return recording{name: strings.Join(names, ", "), open: func() (signals.Track, error) {
-		var tracks []signals.Track
-		shut := func(err error) (signals.Track, error) {
-			for _, t := range tracks {
-				t.Close()
-			}
-			return nil, err
-		}
-		for _, one := range list {
-			t, err := one.open()
-			if err != nil {
-				return shut(err)
-			}
-			tracks = append(tracks, t)
-		}
-		joined, err := signals.Join(tracks...)
-		if err != nil {
-			return shut(usageError{err})
-		}
-		return joined, nil
-	}}, nil
+	return list, err
 }
 
 // file is the recording in a file, whose first bytes tell what it is.

@@ -6,6 +6,8 @@ import (
 	"fmt"
 	"io"
 	"math"
+	"strings"
+	"sync/atomic"
 
 	"github.com/spf13/cobra"
 
@@ -28,8 +30,9 @@ func newSpread(s streams) *cobra.Command {
 		Use:   "spread CHAIN [TRACK...]",
 		Short: "A production run at the given tolerances: percentiles, yield, governing parts",
 		Long: `spread draws a production run whose parts, amplifiers and supply lie within their tolerances ([tolerance] in the
-chain file, or tolerance of a part), and tells how corners, gain and droop spread, and with a recording room and fold-back;
-how many boards hold the chain's limits; which part governs; and each figure with every part at its worst end.`,
+chain file, or tolerance of a part), and tells how corners, gain and droop spread, and with recordings room and fold-back,
+of the one that a board serves worst; how many boards hold the chain's limits; which parts govern; and each figure with
+every part at its worst end.`,
 		Example: "  midrail spread front-end.toml song.wav --boards 2000",
 		Args:    withChain,
 		RunE: func(cmd *cobra.Command, args []string) (err error) {
@@ -47,25 +50,22 @@ how many boards hold the chain's limits; which part governs; and each figure wit
 					return err
 				}
 			}
-			r, err := read.one(cmd.Context(), n.Chain, s.in, args[1:])
+			list, err := read.recordings(cmd.Context(), n.Chain, s.in, args[1:])
 			if err != nil {
 				return err
 			}
-			if !r.demo {
+			for i, r := range list {
 				if err := listenFor(cmd.Context(), n, r, &o); err != nil {
-					return err
+					return during(err, "running %s, %d of %d, before the boards", r.name, i+1, len(list))
 				}
 			}
 			bar := newBar(s, "boards", int64(boards))
-			done := 0
-			o.Progress = func(d int) { done = max(done, d); bar.to(int64(d)) }
+			var done atomic.Int64
+			o.Progress = func(d int) { done.Store(int64(d)); bar.to(int64(d)) }
 			run, err := spread.Make(cmd.Context(), n, o)
 			bar.end(err == nil)
-			if errors.Is(err, context.Canceled) {
-				fmt.Fprintf(s.err, "%d of %d boards were done\n", done, boards)
-			}
 			if err != nil {
-				return err
+				return during(err, "drawing boards, %d of %d being done", done.Load(), boards)
 			}
 			if svg != "" {
 				if err := replaceFile(svg, func(w io.Writer) error { return report.PlotSVG(w, bands(n, o), 100) }); err != nil {
@@ -73,9 +73,9 @@ how many boards hold the chain's limits; which part governs; and each figure wit
 				}
 			}
 			if f.json {
-				return writeJSON(s.out, spreadJSON(run, seed))
+				return writeJSON(s.out, spreadJSON(run, seed, list))
 			}
-			return printSpread(s.out, run)
+			return printSpread(s.out, run, list)
 		},
 	}
 	f.add(cmd)
@@ -106,6 +106,7 @@ type spreadLimit struct {
 type spreadFigure struct {
 	Name      string        `json:"name"`
 	Unit      string        `json:"unit"`
+	Track     *string       `json:"track"` // the one that the nominal board serves worst; null: the figure is of none
 	Nominal   report.Number `json:"nominal"`
 	Lowest    report.Number `json:"lowest"`
 	P1        report.Number `json:"p1"`
@@ -114,9 +115,15 @@ type spreadFigure struct {
 	P95       report.Number `json:"p95"`
 	P99       report.Number `json:"p99"`
 	Highest   report.Number `json:"highest"`
-	WorstLow  report.Number `json:"worst_case_low"`
-	WorstHigh report.Number `json:"worst_case_high"`
+	WorstLow  spreadVertex  `json:"worst_case_low"`
+	WorstHigh spreadVertex  `json:"worst_case_high"`
 	Governs   []spreadShare `json:"governs"`
+}
+
+type spreadVertex struct {
+	Figure report.Number `json:"figure"`
+	Up     []string      `json:"parts_at_high_end"`
+	Down   []string      `json:"parts_at_low_end"`
 }
 
 type spreadShare struct {
@@ -124,7 +131,15 @@ type spreadShare struct {
 	Share report.Number `json:"share"`
 }
 
-func spreadJSON(run *spread.Run, seed uint64) spreadResult {
+// trackOf is the recording that a figure is of; "" for none.
+func trackOf(f *spread.Figure, list []recording) string {
+	if f.Name != spread.Room && f.Name != spread.Below {
+		return ""
+	}
+	return list[f.Sound].name
+}
+
+func spreadJSON(run *spread.Run, seed uint64, list []recording) spreadResult {
 	of := report.Of
 	out := spreadResult{Boards: run.Boards, Seed: seed, Yield: of(run.Yield)}
 	for _, l := range run.Limits {
@@ -133,7 +148,10 @@ func spreadJSON(run *spread.Run, seed uint64) spreadResult {
 	for i := range run.Figures {
 		f := &run.Figures[i]
 		p := func(x float64) report.Number { return of(f.Percentile(x)) }
-		one := spreadFigure{f.Name, f.Unit, of(f.Nominal), p(0), p(0.01), p(0.05), p(0.5), p(0.95), p(0.99), p(1), of(f.WorstLow), of(f.WorstHigh), nil}
+		one := spreadFigure{f.Name, f.Unit, nil, of(f.Nominal), p(0), p(0.01), p(0.05), p(0.5), p(0.95), p(0.99), p(1), spreadVertex{of(f.WorstLow.Figure), f.WorstLow.Up, f.WorstLow.Down}, spreadVertex{of(f.WorstHigh.Figure), f.WorstHigh.Up, f.WorstHigh.Down}, nil}
+		if name := trackOf(f, list); name != "" {
+			one.Track = &name
+		}
 		for _, s := range f.Shares {
 			one.Governs = append(one.Governs, spreadShare{s.Part, of(s.Share)})
 		}
@@ -142,7 +160,7 @@ func spreadJSON(run *spread.Run, seed uint64) spreadResult {
 	return out
 }
 
-func printSpread(w io.Writer, run *spread.Run) error {
+func printSpread(w io.Writer, run *spread.Run, list []recording) error {
 	t := report.NewText(w)
 	t.Line("%d boards", run.Boards)
 	t.Line("")
@@ -157,28 +175,50 @@ func printSpread(w io.Writer, run *spread.Run) error {
 		}
 		return report.DB(report.Of(x))
 	}
-	var rows, worst [][]string
+	const (
+		leastShare = 0.01 // that is told
+		// surely is, in parts of the number of boards, a share that chance gives to a part without influence once in twenty.
+		surely = 4
+	)
+	longest := 0
+	var percentiles, ends, governs [][]string
 	for i := range run.Figures {
 		f := &run.Figures[i]
-		row := []string{f.Name, say(f, f.Nominal)}
-		for _, p := range [...]float64{0.01, 0.05, 0.95, 0.99} {
+		longest = max(longest, len(f.Name))
+		row := []string{f.Name}
+		for _, p := range [...]float64{0.01, 0.05, 0.5, 0.95, 0.99} {
 			row = append(row, say(f, f.Percentile(p)))
 		}
-		rows = append(rows, row)
-		governs := ""
-		for _, s := range f.Shares[:min(1, len(f.Shares))] {
-			if s.Share >= 0.01 {
-				governs += s.Part + " " + report.Percent(report.Of(s.Share))
+		percentiles = append(percentiles, row)
+		ends = append(ends, []string{f.Name, say(f, f.Nominal), say(f, f.Percentile(0)), say(f, f.Percentile(1)), say(f, f.WorstLow.Figure), say(f, f.WorstHigh.Figure)})
+		var parts []string
+		for _, s := range f.Shares[:min(3, len(f.Shares))] {
+			if s.Share >= leastShare && s.Share*float64(run.Boards) >= surely {
+				parts = append(parts, fmt.Sprintf("%s %.0f %%", s.Part, 100*s.Share))
 			}
 		}
-		worst = append(worst, []string{f.Name, say(f, f.WorstLow) + " to " + say(f, f.WorstHigh), governs})
+		governs = append(governs, []string{f.Name, strings.Join(parts, ", ")})
 	}
-	t.Table([]string{"", "nominal", "1 %", "5 %", "95 %", "99 %"}, rows)
+	t.Table([]string{"boards below", "1 %", "5 %", "50 %", "95 %", "99 %"}, percentiles)
 	t.Line("")
-	t.Table([]string{"", "every part at its worst end", "governed by"}, worst)
+	t.Table([]string{"", "nominal", "lowest", "highest", "worst case", "to"}, ends)
+	t.Words("Lowest and highest are of the boards drawn; the worst case is with every part at that end of its tolerance which takes the figure there (--json tells which).")
+	t.Line("")
+	t.Line("Parts that govern, by their share of the variance:")
+	for _, g := range governs {
+		t.Line("  %-*s  %s", longest, g[0], g[1])
+	}
+	t.Line("")
+	if len(list) == 0 {
+		t.Line("Give a recording to see room and fold-back.")
+	}
+	for i := range run.Figures {
+		if f := &run.Figures[i]; len(list) > 1 && trackOf(f, list) != "" {
+			t.Words("%s is that of the recording which a board serves worst; the nominal one: %s", f.Name, trackOf(f, list))
+		}
+	}
 	if len(run.Limits) > 0 {
-		t.Line("")
-		rows = nil
+		var rows [][]string
 		for _, l := range run.Limits {
 			rows = append(rows, []string{l.Name, report.Plain(report.Of(l.Bound), 4), report.Percent(report.Of(l.Yield))})
 		}
@@ -202,14 +242,14 @@ func bands(n *circuit.Network, o spread.Options) report.Plot {
 
 // listenFor runs a recording through the nominal chain for its room and its fold-back.
 func listenFor(ctx context.Context, n *circuit.Network, r recording, o *spread.Options) error {
-	tracks, err := openTracks(n.Chain, jobOf(n.Chain, r))
+	run, err := runOf(ctx, n, r, func(*render.Block) {})
 	if err != nil {
 		return err
 	}
-	defer tracks.close()
-	if o.Result, err = render.Run(ctx, n, tracks.feeds, render.Options{}, func(*render.Block) error { return nil }); err != nil {
+	sound, err := soundOf(ctx, n, r)
+	if err != nil {
 		return err
 	}
-	o.Sound, err = soundOf(n, r)
-	return err
+	o.Results, o.Sounds = append(o.Results, run.Result), append(o.Sounds, sound)
+	return nil
 }

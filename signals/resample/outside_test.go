@@ -46,3 +46,32 @@ func TestAgainstSoX(t *testing.T) {
 		}
 	}
 }
+
+// The taps are those of SciPy's kaiserord, kaiser_beta and firwin with as many of them.
+func TestLowPassAgainstSciPy(t *testing.T) {
+	const rounding = 1e-9 // of SciPy's Bessel function, and of ours
+	for _, c := range []struct{ pass, stop, down float64 }{{0.1, 0.15, 40}, {0.125, 0.2, 56}, {0.05, 0.07, 80}, {0.02, 0.3, 30}} {
+		got := LowPass(c.pass, c.stop, c.down)
+		script := fmt.Sprintf(`
+from scipy import signal
+import sys, struct
+least, beta = signal.kaiserord(%[3]g, 2*(%[2]g-%[1]g))
+w = signal.firwin(%[4]d, (%[1]g+%[2]g)/2, window=("kaiser", beta), fs=1.0)
+sys.stdout.buffer.write(struct.pack("<d", least) + w.astype("<f8").tobytes())
+`, c.pass, c.stop, c.down, len(got))
+		out, err := exec.Command("/usr/bin/python3", "-c", script).Output()
+		if err != nil {
+			t.Fatal(err)
+		}
+		want := make([]float64, len(out)/8)
+		binary.Read(bytes.NewReader(out), binary.LittleEndian, want)
+		if least := int(want[0]); len(got) < least || len(got) > least+1 {
+			t.Errorf("%+v: %d taps, SciPy %d", c, len(got), least)
+		}
+		for i, w := range want[1:] {
+			if !(math.Abs(got[i]-w) <= rounding) {
+				t.Fatalf("%+v: tap %d is %g, SciPy's %g", c, i, got[i], w)
+			}
+		}
+	}
+}

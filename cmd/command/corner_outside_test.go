@@ -1,0 +1,28 @@
+//go:build outside
+
+package command
+
+import (
+	"testing"
+
+	"midrail/chain/corner"
+	"midrail/signals"
+	"midrail/signals/tone"
+)
+
+// All candidates on more noise and on the whole of the demo's track: too long for every test.
+func TestEveryPredictedFoldBack(t *testing.T) {
+	f := newFolding(t)
+	f.hold(t, "white noise", func() signals.Track { return tone.White(48000, 4, -25, 6) }, foldingCases)
+	f.hold(t, "the demo", func() signals.Track { return tone.Demo() }, foldingCases)
+}
+
+func TestPredictedDecimationOfTheDemo(t *testing.T) {
+	f := newFolding(t)
+	for _, w := range []corner.Wish{
+		{Keep: 3000, Rates: corner.Common(), Droop: 1, Below: 50},
+		{Keep: 3000, Rates: []float64{16000}, Droop: 1, Below: 40},
+	} {
+		f.holdOversampled(t, "the demo", tone.Demo(), w, 8000)
+	}
+}
