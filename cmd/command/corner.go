@@ -7,6 +7,7 @@ import (
 	"io"
 	"math"
 	"os"
+	"path/filepath"
 	"slices"
 	"strconv"
 	"strings"
@@ -45,6 +46,9 @@ faster with a digital low-pass behind the converter would save amplifiers. --wri
 			n, err := s.open(args[0], f.set)
 			if err != nil {
 				return err
+			}
+			if write != "" && filepath.Dir(write) != filepath.Dir(args[0]) && len(calibrationsOf(n.Chain)) > 0 {
+				return refusal{fmt.Errorf("%s: an input is calibrated by a recording whose path goes from the chain file's folder; write into that", write)}
 			}
 			var w corner.Wish
 			if w.Keep, err = valueOf(quantity.Frequency, keep, 20, 1e6); err != nil {
