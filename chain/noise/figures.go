@@ -121,7 +121,7 @@ func Best(n *circuit.Network) Change {
 func againstGain(n *circuit.Network) float64 {
 	c := &n.Chain.Converter
 	step := (c.High - c.Low) / math.Exp2(float64(c.Bits))
-	db := 10 * math.Log10(unfolded(n).Power+step*step/12)
+	db := 10 * math.Log10(unfolded(n, compared).Power+step*step/12)
 	into := n.At(1000).Into(n.Output)
 	for i := range n.Inputs {
 		db -= circuit.Gain(into.Input(circuit.SoundInput(i))) / float64(len(n.Inputs))

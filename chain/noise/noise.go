@@ -31,6 +31,7 @@ const Boltzmann = 1.380649e-23
 
 const (
 	perDecade = 100 // points of the frequency grid; a resonance of Q 10 is wider than three of them
+	compared  = 25  // as many where budgets are only compared
 	// beyond is how many times the widest amplifier's gain-bandwidth the grid reaches at the most: no real circuit
 	// keeps a flat floor further than its parts' own strays let it.
 	beyond = 100
@@ -80,7 +81,7 @@ type Budget struct {
 // At computes the noise budget of a network.
 func At(n *circuit.Network) *Budget {
 	c := n.Chain
-	b := unfolded(n)
+	b := unfolded(n, perDecade)
 	b.fold(c.Converter.Rate)
 	for _, s := range converterSources(c) {
 		for i := range b.Folded {
@@ -91,8 +92,8 @@ func At(n *circuit.Network) *Budget {
 	return b
 }
 
-// unfolded computes the budget but for the folded spectrum, its sources in no order.
-func unfolded(n *circuit.Network) *Budget {
+// unfolded computes the budget but for the folded spectrum, its sources in no order, from so many points a decade.
+func unfolded(n *circuit.Network, points float64) *Budget {
 	c := n.Chain
 	b := &Budget{}
 	sources := circuitSources(n)
@@ -100,7 +101,7 @@ func unfolded(n *circuit.Network) *Budget {
 	for i, s := range sources {
 		b.Sources[i] = Source{Name: s.name, Kind: s.kind}
 	}
-	ratio := math.Pow(10, 1./perDecade)
+	ratio := math.Pow(10, 1/points)
 	widest := 0.
 	for _, a := range n.Amplifiers {
 		widest = math.Max(widest, a.Model.GainBandwidth)
