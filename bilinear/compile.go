@@ -60,6 +60,7 @@ type State struct {
 	H      []float64 // e + (T/2)·g of each amplifier, V from rest
 	E      []float64 // e of each amplifier in V, drain current of each capsule, current of each diode in A, from rest
 	Pieces []Piece
+	Held   int64 // steps so far at which the elements' laws had no solution that could be found
 
 	s0    []float64
 	num   []float64

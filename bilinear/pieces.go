@@ -142,7 +142,6 @@ type solver struct {
 	matrix []float64 // scratch
 	rhs    []float64
 	sense  []float64
-	trial  []Piece
 	key    []byte
 	// inverses are those of the matrices of the combinations of pieces met so far; nil for a singular one. What they are
 	// made from, den and resist of the laws, is the same at every step.
@@ -152,19 +151,15 @@ type solver struct {
 func newSolver(k int, b []float64) solver {
 	return solver{
 		k: k, b: b, matrix: make([]float64, k*k), rhs: make([]float64, k), sense: make([]float64, k),
-		trial: make([]Piece, k), key: make([]byte, k), inverses: map[string][]float64{},
+		key: make([]byte, k), inverses: map[string][]float64{},
 	}
 }
 
-// mostInverses bounds what is kept of the combinations met.
-const mostInverses = 1024
+// mostInverses and mostKept bound what is kept of the combinations met: how many there are of them, and how many numbers in all.
+const mostInverses, mostKept = 1024, 1 << 22
 
-const (
-	// policyTries is how often all elements are put on their proper pieces before the search turns to one at a time.
-	policyTries = 24
-	// mostTrials bounds the search over all combinations of pieces.
-	mostTrials = 200000
-)
+// policyTries is how often all elements are put on their proper pieces before the search turns to one at a time.
+const policyTries = 24
 
 // solve starts from pieces and leaves the solution in pieces and e. It reports false where it found none.
 func (v *solver) solve(laws []law, s0 []float64, pieces []Piece, e []float64) bool {
@@ -186,7 +181,7 @@ func (v *solver) solve(laws []law, s0 []float64, pieces []Piece, e []float64) bo
 			return true
 		}
 	}
-	return v.search(laws, s0, pieces, e)
+	return v.follow(laws, s0, pieces) && v.linear(laws, s0, pieces, e)
 }
 
 // settle moves up to most elements to their proper pieces and reports whether it moved any.
@@ -204,40 +199,6 @@ func (v *solver) settle(laws []law, pieces []Piece, e []float64, most int) bool 
 		}
 	}
 	return moved > 0
-}
-
-// search tries every combination of pieces.
-func (v *solver) search(laws []law, s0 []float64, pieces []Piece, e []float64) bool {
-	choices := [...][]Piece{
-		amplifierElement: {Linear, High, Low, SlewUp, SlewDown},
-		capsuleElement:   {Linear, CutOff, Saturated},
-		diodeElement:     {Linear, Off, On},
-	}
-	digits := make([]int, v.k)
-	for range mostTrials {
-		for i, d := range digits {
-			pieces[i] = choices[laws[i].kind][d]
-		}
-		if v.linear(laws, s0, pieces, e) && !v.settle(laws, v.copyOf(pieces), e, 1) {
-			return true
-		}
-		i := 0
-		for ; i < v.k; i++ {
-			if digits[i]++; digits[i] < len(choices[laws[i].kind]) {
-				break
-			}
-			digits[i] = 0
-		}
-		if i == v.k {
-			break
-		}
-	}
-	return false
-}
-
-func (v *solver) copyOf(p []Piece) []Piece {
-	copy(v.trial, p)
-	return v.trial
 }
 
 // linear solves for e with every element on its piece, and leaves the senses. It reports false where the equations
@@ -286,35 +247,32 @@ func (v *solver) inverse(laws []law, pieces []Piece) []float64 {
 	}
 	k := v.k
 	inverse = make([]float64, k*k)
-	column := make([]float64, k)
-	for j := range k {
-		for i := range k {
-			a, b, _ := laws[i].row(pieces[i])
-			row := v.matrix[i*k : (i+1)*k]
-			for m := range row {
-				row[m] = b * v.b[i*k+m]
-			}
-			row[i] += a
-			column[i] = 0
+	for i := range k {
+		a, b, _ := laws[i].row(pieces[i])
+		row := v.matrix[i*k : (i+1)*k]
+		for m := range row {
+			row[m] = b * v.b[i*k+m]
 		}
-		column[j] = 1
-		if !gauss(v.matrix, column, k) {
-			inverse = nil
-			break
-		}
-		for i, x := range column {
-			inverse[i*k+j] = x
-		}
+		row[i] += a
+		inverse[i*k+i] = 1
 	}
-	if len(v.inverses) == mostInverses {
+	if !gauss(v.matrix, inverse, k) {
+		inverse = nil
+	}
+	if most := min(mostInverses, mostKept/max(1, k*k)); len(v.inverses) >= most {
 		clear(v.inverses)
 	}
 	v.inverses[string(v.key)] = inverse
 	return inverse
 }
 
-// gauss solves m·x = b in place, b becoming x; false where m is singular or the result is not finite.
+// gauss solves m·x = b in place, b, of k rows, becoming x; false where m is singular or the result is not finite.
 func gauss(m, b []float64, k int) bool {
+	if k == 0 {
+		return true
+	}
+	width := len(b) / k
+	of := func(r int) []float64 { return b[r*width : (r+1)*width] }
 	for c := range k {
 		at, best := -1, 0.
 		for r := c; r < k; r++ {
@@ -329,7 +287,10 @@ func gauss(m, b []float64, k int) bool {
 			for j := c; j < k; j++ {
 				m[c*k+j], m[at*k+j] = m[at*k+j], m[c*k+j]
 			}
-			b[c], b[at] = b[at], b[c]
+			top, other := of(c), of(at)
+			for j := range top {
+				top[j], other[j] = other[j], top[j]
+			}
 		}
 		for r := c + 1; r < k; r++ {
 			f := m[r*k+c] / m[c*k+c]
@@ -339,17 +300,23 @@ func gauss(m, b []float64, k int) bool {
 			for j := c + 1; j < k; j++ {
 				m[r*k+j] -= f * m[c*k+j]
 			}
-			b[r] -= f * b[c]
+			for j, x := range of(c) {
+				of(r)[j] -= f * x
+			}
 		}
 	}
 	for c := k - 1; c >= 0; c-- {
-		sum := b[c]
+		row := of(c)
 		for j := c + 1; j < k; j++ {
-			sum -= m[c*k+j] * b[j]
+			for i, x := range of(j) {
+				row[i] -= m[c*k+j] * x
+			}
 		}
-		b[c] = sum / m[c*k+c]
-		if math.IsNaN(b[c]) || math.IsInf(b[c], 0) {
-			return false
+		for i := range row {
+			row[i] /= m[c*k+c]
+			if math.IsNaN(row[i]) || math.IsInf(row[i], 0) {
+				return false
+			}
 		}
 	}
 	return true

@@ -12,7 +12,9 @@ import (
 //
 //	e₁ = clip[low, high]( h + k·clip( ωt·(v+ − v− + Vos) − ωa·(e₁ − Vref), ±SR ) ),   k = T/2,   h' = e₁ + k·g
 //
-// solved exactly for all elements at once. It panics where u or y has another length than the network's.
+// solved exactly for all elements at once. Where no solution is found, as where parts differ by more than numbers can
+// tell, every source stays where it is, within its limits, and s.Held counts it. It panics where u or y has another length
+// than the network's.
 func (c *Compiled) Step(s *State, u, y []float64) (touched bool) {
 	c.senses(s, u)
 	for _, p := range s.Pieces {
@@ -25,7 +27,7 @@ func (c *Compiled) Step(s *State, u, y []float64) (touched bool) {
 	if touched { // from the last step's pieces on
 		c.fill(s.laws, u, s.H)
 		if !s.solve.solve(s.laws, s.s0, s.Pieces, s.E) {
-			panic("bilinear: the elements' laws have no common solution")
+			c.hold(s)
 		}
 		touched = false
 		for _, p := range s.Pieces {
@@ -34,6 +36,19 @@ func (c *Compiled) Step(s *State, u, y []float64) (touched bool) {
 	}
 	c.advance(s, u, y)
 	return touched
+}
+
+// hold leaves the sources where they are, within the limits of the laws.
+func (c *Compiled) hold(s *State) {
+	s.Held++
+	for i := range s.laws {
+		at := 0.
+		if i < len(c.amplifiers) {
+			at = s.H[i]
+		}
+		b := s.laws[i].box()
+		s.E[i], s.Pieces[i] = math.Min(math.Max(at, b.low), b.high), Linear
+	}
 }
 
 // StepLinear is [Compiled.Step] with every element on its linear piece, whatever its limits. Where Step would touch

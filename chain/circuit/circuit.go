@@ -1,10 +1,7 @@
 package circuit
 
 import (
-	"errors"
-	"fmt"
 	"slices"
-	"strings"
 
 	"midrail/bilinear"
 	"midrail/chain"
@@ -206,28 +203,6 @@ func (n *Network) Rest() (bilinear.Operating, error) {
 		return bilinear.Operating{}, n.fault(err)
 	}
 	return at, nil
-}
-
-// fault turns what package bilinear says of a network into faults that name the owner's nodes.
-func (n *Network) fault(err error) error {
-	var path *bilinear.NoPathError
-	if !errors.As(err, &path) {
-		return chain.Faults{{File: n.Chain.File, Text: fmt.Sprintf("the circuit has no rest point: %v", err),
-			Remedy: "look for parts whose values differ by more than a resistor and a wire do"}}
-	}
-	names := make([]string, len(path.Nodes))
-	var at chain.Pos
-	for i, node := range path.Nodes {
-		names[i] = "“" + n.Nodes[node] + "”"
-		if at.Line == 0 {
-			at = n.posOf(node)
-		}
-	}
-	text := "node " + names[0] + " has no DC path"
-	if len(names) > 1 {
-		text = "nodes " + strings.Join(names, ", ") + " have no DC path"
-	}
-	return chain.Faults{{File: n.Chain.File, Pos: at, Text: text, Remedy: "add a resistor to ground or to a bias"}}
 }
 
 // posOf returns the place in the chain file of a part that touches the node.

@@ -33,6 +33,8 @@ const (
 	// leastRate is the lowest internal rate in Hz: there an overloaded chain of bipolar amplifiers is exact to −115 dB of
 	// swing at 1 kHz, −105 dB at 3 kHz and −99 dB at 9 kHz.
 	leastRate = 6e6
+	// mostRate is the highest internal rate in Hz that accuracy is looked for at: a sharp resonance's error is told instead.
+	mostRate = 200e6
 	// unheard is how far below its peak a response may lie before its error no longer counts.
 	unheard = 1e-7
 	// perInterferer is how many steps the shortest period of an interferer gets at least.
@@ -59,7 +61,7 @@ func NewPlan(n *circuit.Network, to float64) Plan {
 		if p.Rate < least {
 			continue
 		}
-		if p.LargestError = warpError(n, p.Rate, to); p.LargestError <= accuracy {
+		if p.LargestError = warpError(n, p.Rate, to); p.LargestError <= accuracy || 2*p.Rate > mostRate {
 			return p
 		}
 	}

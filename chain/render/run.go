@@ -145,6 +145,9 @@ func Run(ctx context.Context, n *circuit.Network, feeds []Feed, o Options, sink 
 	if err := p.run(ctx); err != nil {
 		return nil, err
 	}
+	if held := sim.limited.state.Held; held > 0 {
+		return nil, n.Unsolved(held)
+	}
 	return p.result(at, g.plan), nil
 }
 

@@ -173,7 +173,7 @@ func newSimulator(n *circuit.Network, at bilinear.Operating, g grid, settle sett
 		see(a.Out)
 	}
 	var err error
-	s.circuit, err = bilinear.Compile(n.Description(), at, g.plan.Rate, s.watch)
+	s.circuit, err = n.Compile(n.Description(), at, g.plan.Rate, s.watch)
 	if err != nil {
 		return nil, err
 	}

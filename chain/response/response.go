@@ -276,7 +276,7 @@ func Poles(n *circuit.Network, at bilinear.Operating) ([]Pole, error) {
 	// What stands for no part, as of a supply's rejection, has no natural frequency that anyone could find.
 	parts := *n
 	parts.Capacitors = slices.DeleteFunc(slices.Clone(n.Capacitors), func(c circuit.Component) bool { return c.Virtual })
-	c, err := bilinear.Compile(parts.Description(), at, 1e5, nil)
+	c, err := parts.Compile(parts.Description(), at, 1e5, nil)
 	if err != nil {
 		return nil, err
 	}

@@ -186,7 +186,7 @@ func slow(n *circuit.Network, at bilinear.Operating) ([]Slow, error) {
 
 // slowPoles returns the decay rates in 1/s of the real poles below the audible, the slowest first.
 func slowPoles(n *circuit.Network, at bilinear.Operating) ([]float64, error) {
-	c, err := bilinear.Compile(n.Description(), at, 4800, nil)
+	c, err := n.Compile(n.Description(), at, 4800, nil)
 	if err != nil {
 		return nil, err
 	}

@@ -30,7 +30,8 @@ type Settling struct {
 
 // Settle follows a chain from an unpowered board, every capacitor empty, with the supply rising in a millisecond. The
 // circuit is stepped more coarsely than for sound, with its limits; what stiff time constants alternate by is averaged
-// out. at is the network's rest point. The error is bilinear's.
+// out. at is the network's rest point. The error is bilinear's, or
+// tells of steps that have no solution.
 func Settle(n *circuit.Network, at bilinear.Operating) (Settling, error) {
 	d, u := n.Powered()
 	off := bilinear.Operating{Volts: make([]float64, d.Nodes), Sources: make([]float64, len(at.Sources))}
@@ -40,7 +41,7 @@ func Settle(n *circuit.Network, at bilinear.Operating) (Settling, error) {
 	}
 	duration := rise + constants*slowest
 	rate := steps / duration
-	c, err := bilinear.Compile(d, off, rate, []int{n.Output})
+	c, err := n.Compile(d, off, rate, []int{n.Output})
 	if err != nil {
 		return Settling{}, err
 	}
@@ -68,6 +69,9 @@ func Settle(n *circuit.Network, at bilinear.Operating) (Settling, error) {
 		if away > lsb {
 			s.LSB = t
 		}
+	}
+	if state.Held > 0 {
+		return Settling{}, n.Unsolved(state.Held)
 	}
 	if s.Usable == float64(steps)/rate {
 		s.Usable = math.Inf(1)
@@ -105,7 +109,7 @@ func roomy(n *circuit.Network, e, room []float64) bool {
 // slowest returns the network's longest time constant in s.
 func slowest(n *circuit.Network, at bilinear.Operating) (float64, error) {
 	const rate = 48000
-	c, err := bilinear.Compile(n.Description(), at, rate, nil)
+	c, err := n.Compile(n.Description(), at, rate, nil)
 	if err != nil {
 		return 0, err
 	}

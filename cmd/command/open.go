@@ -3,10 +3,8 @@ package command
 import (
 	"fmt"
 	"io"
-	"math"
 	"os"
 
-	"midrail/bilinear"
 	"midrail/chain"
 	"midrail/chain/circuit"
 )
@@ -40,33 +38,8 @@ func (s streams) open(path string, set []string) (*circuit.Network, error) {
 		return nil, err
 	}
 	n := circuit.New(c)
-	if err := stable(n); err != nil {
+	if err := n.Check(); err != nil {
 		return nil, err
 	}
 	return n, nil
-}
-
-// stable refuses a circuit without a rest point, and one that runs away from it.
-func stable(n *circuit.Network) error {
-	at, err := n.Rest()
-	if err != nil {
-		return err
-	}
-	c, err := bilinear.Compile(n.Description(), at, 1e6, nil)
-	if err != nil {
-		return err
-	}
-	growing := 0
-	for _, p := range c.Poles() {
-		if real(p) > 1e-9*math.Hypot(real(p), imag(p)) {
-			growing++
-		}
-	}
-	switch {
-	case growing%2 == 1:
-		return chain.Faults{{File: n.Chain.File, Text: "the circuit latches: an amplifier's feedback is positive and it runs to a limit", Remedy: "look at gains above 1 around a loop"}}
-	case growing > 0:
-		return chain.Faults{{File: n.Chain.File, Text: "the circuit oscillates by itself", Remedy: "look at gains around a loop and at loads on amplifiers' outputs"}}
-	}
-	return nil
 }
