@@ -10,22 +10,24 @@ import (
 )
 
 // limiter takes the limited run through the blocks in which a limit could be touched. As long as every element stays on
-// one piece the circuit is affine: a cell, which is the steps of one base sample, is one map, or else each eighth of it
-// is. Only an eighth in which an element may leave its piece is stepped.
+// one piece the circuit is affine: a few cells, each of which is the steps of one base sample, are one map, or else each
+// cell is, or each eighth of it. Only an eighth in which an element may leave its piece is stepped.
 type limiter struct {
-	plain         bool // step everything
-	state         *bilinear.State
-	cell          grid // of blocks of one cell
-	cells, eighth *holder
-	refined       blas64.General // to a cell's steps, from a window of base samples
-	x, rows       []float64      // what a map is applied to, and what it gives
-	y             []float64      // watched nodes
+	plain   bool // step everything
+	state   *bilinear.State
+	cell    grid      // of blocks of one cell
+	holders []*holder // of several cells and of one, the longest first
+	eighth  *holder
+	refined blas64.General // to a cell's steps, from a window of base samples
+	x, rows []float64      // what a map is applied to, and what it gives
+	y       []float64      // watched nodes
 }
 
 // holder has the maps over a stretch of steps with the elements on the pieces met so far.
 type holder struct {
+	grid    grid // of blocks as long as the stretch; of no base sample where coarse inputs are given as steps, not as windows
 	steps   int
-	windows bool // whether coarse inputs are given as windows of base samples, not as steps
+	seen    []int // steps at which the watched nodes and the sources are told
 	columns int
 	held    map[string]*heldRun // nil where there is none
 	key     []byte
@@ -36,7 +38,7 @@ type holder struct {
 type heldRun struct {
 	looks       int            // at each condition
 	most        []float64      // of each condition
-	maps        blas64.General // to the states after, the conditions, the watched nodes and the sources at the end
+	maps        blas64.General // to the states after, the conditions, and the watched nodes and the sources each time
 	constant    []float64
 	convert     blas64.General // to the ports at the last step, and to the first of them at the one before
 	convertFrom []float64      // its constant
@@ -55,23 +57,38 @@ func newLimiter(s *simulator, plain bool) *limiter {
 	l := &limiter{plain: plain, state: s.circuit.Start(), cell: s.grid, y: make([]float64, len(s.watch))}
 	l.cell.base, l.cell.steps = 1, 1<<s.grid.plan.Doublings
 	l.refined = l.cell.refined()
-	l.cells = newHolder(s, l.cell.steps, true)
-	l.eighth = newHolder(s, max(1, l.cell.steps/eighths), false)
-	l.x = make([]float64, max(l.cells.columns, l.eighth.columns))
+	for cells := mostCells; cells > 0; cells-- {
+		// Conversions come at the end of a stretch.
+		if s.grid.plan.Base%cells == 0 {
+			l.holders = append(l.holders, newHolder(s, cells, cells*l.cell.steps))
+			if cells > 1 {
+				cells = 2 // one cell is next
+			}
+		}
+	}
+	l.eighth = newHolder(s, 0, max(1, l.cell.steps/eighths))
+	l.x = make([]float64, max(l.holders[0].columns, l.eighth.columns))
 	return l
 }
 
-func newHolder(s *simulator, steps int, windows bool) *holder {
-	h := &holder{steps: steps, windows: windows, columns: s.circuit.States(), held: map[string]*heldRun{}, key: make([]byte, len(s.bounds))}
+// mostCells is how many cells are one map at the most.
+const mostCells = 4
+
+func newHolder(s *simulator, cells, steps int) *holder {
+	h := &holder{grid: s.grid, steps: steps, columns: s.circuit.States(), held: map[string]*heldRun{}, key: make([]byte, len(s.bounds))}
+	h.grid.base, h.grid.steps = cells, steps
+	for part := range max(cells, 1) {
+		h.seen = append(h.seen, (part+1)*steps/max(cells, 1)-1)
+	}
 	for u := range s.inputs {
-		if !windows {
+		if cells == 0 {
 			if s.driven(u) {
 				h.columns += steps
 			}
 			continue
 		}
 		if s.sums[u] != nil {
-			h.columns += 1 + 2*s.grid.reach
+			h.columns += h.grid.window()
 		}
 		if s.fineSums[u] != nil {
 			h.columns += steps
@@ -114,7 +131,7 @@ func (h *holder) looks(s *simulator) []int {
 		}
 	}
 	for _, in := range s.stairs {
-		if in.present && !h.windows {
+		if in.present && h.grid.base == 0 {
 			parts = h.steps
 		}
 	}
@@ -134,11 +151,13 @@ func (h *holder) build(s *simulator) *heldRun {
 	}
 	var readings []bilinear.Reading
 	last := h.steps - 1
-	for w := range s.watch {
-		readings = append(readings, bilinear.Reading{Step: last, Of: bilinear.Node, Item: w})
-	}
-	for k := range s.n.Amplifiers {
-		readings = append(readings, bilinear.Reading{Step: last, Of: bilinear.Source, Item: k})
+	for _, at := range h.seen {
+		for w := range s.watch {
+			readings = append(readings, bilinear.Reading{Step: at, Of: bilinear.Node, Item: w})
+		}
+		for k := range s.n.Amplifiers {
+			readings = append(readings, bilinear.Reading{Step: at, Of: bilinear.Source, Item: k})
+		}
 	}
 	converted := len(s.ports) + 1
 	for _, p := range s.ports {
@@ -161,14 +180,14 @@ func (h *holder) build(s *simulator) *heldRun {
 	}
 	put(held.FromState)
 	for u := range s.inputs {
-		if !h.windows {
+		if h.grid.base == 0 {
 			if s.driven(u) {
 				put(held.FromInput[u])
 			}
 			continue
 		}
 		if s.sums[u] != nil {
-			put(s.limited.cell.fold(held.FromInput[u]))
+			put(h.grid.fold(held.FromInput[u]))
 		}
 		if s.fineSums[u] != nil {
 			put(held.FromInput[u])
@@ -221,17 +240,32 @@ func (s *simulator) stepBlock(o *conversions, first int, step int64) {
 		plain = plain || s.inputMost[u]*margin >= clip
 	}
 	b := limitedBlock{s: s, o: o, first: first, step: step}
-	for from := 0; from < s.grid.steps; from += l.cell.steps {
-		if !plain && b.take(l.cells, from) {
-			continue
+	for from := 0; from < s.grid.steps; {
+		if !plain {
+			if taken := b.stride(from); taken > 0 {
+				from += taken
+				continue
+			}
 		}
 		b.prepare(from)
-		for part := from; part < from+l.cell.steps; part += l.eighth.steps {
-			if plain || !b.take(l.eighth, part) {
-				b.walk(part, part+l.eighth.steps)
+		to := from + l.cell.steps
+		for ; from < to; from += l.eighth.steps {
+			if plain || !b.take(l.eighth, from) {
+				b.walk(from, from+l.eighth.steps)
 			}
 		}
 	}
+}
+
+// stride takes the limited run through the longest stretch of whole cells that can be taken from a step of the block, and
+// returns its steps; 0 where there is none.
+func (b *limitedBlock) stride(from int) int {
+	for _, h := range b.s.limited.holders {
+		if from%h.steps == 0 && b.take(h, from) {
+			return h.steps
+		}
+	}
+	return 0
 }
 
 // limitedBlock is a block on which the limited run is.
@@ -255,14 +289,14 @@ func (b *limitedBlock) take(h *holder, from int) bool {
 	s.circuit.Pack(x, l.state)
 	at, cell, in := states, from/l.cell.steps, from%l.cell.steps
 	for u := range s.inputs {
-		if !h.windows {
+		if h.grid.base == 0 {
 			if s.driven(u) {
 				at += copy(x[at:], s.steps[u][in:in+h.steps])
 			}
 			continue
 		}
 		if s.sums[u] != nil {
-			at += copy(x[at:], s.sums[u][cell:cell+l.cell.window()])
+			at += copy(x[at:], s.sums[u][cell:cell+h.grid.window()])
 		}
 		if s.fineSums[u] != nil {
 			at += copy(x[at:], s.fineSums[u][from:from+h.steps])
@@ -297,8 +331,12 @@ func (b *limitedBlock) take(h *holder, from int) bool {
 		s.touched = true
 		s.watchers.touched(s, to/l.cell.steps, last, int64(h.steps))
 	}
-	y, sources := out[states+conditions:states+conditions+len(s.watch)], out[states+conditions+len(s.watch):]
-	b.see(to, y, sources, int64(h.steps))
+	told := out[states+conditions:]
+	for _, at := range h.seen {
+		y, rest := told[:len(s.watch)], told[len(s.watch):]
+		b.see(from+at+1, y, rest[:len(s.n.Amplifiers)], int64(h.steps/len(h.seen)))
+		told = rest[len(s.n.Amplifiers):]
+	}
 	if to%s.grid.plan.Steps() == 0 {
 		out := append(s.converted[:0], one.convertFrom...)
 		s.converted = out
