@@ -3,6 +3,7 @@ package room
 import (
 	"context"
 	"math"
+	"slices"
 
 	"midrail/chain"
 	"midrail/chain/circuit"
@@ -25,8 +26,45 @@ type Stage struct {
 	Sine, Track []float64
 }
 
-// Of tells the room of every stage that a run went through.
-func Of(n *circuit.Network, r *render.Result) []Stage {
+// Converter is what the converter is called among the stages.
+const Converter = "converter"
+
+// Heard is a run, and how far the linear chain would have taken the converter's input.
+type Heard struct {
+	*render.Result
+	Lowest, Highest float64 // full scale, from the rest; [Heard.Write] keeps them
+}
+
+// Write takes a block of the run.
+func (h *Heard) Write(b *render.Block) {
+	for i, v := range b.Layers[render.Wanted] {
+		v += b.Layers[render.FoldBack][i] + b.Layers[render.Interference][i]
+		h.Lowest, h.Highest = math.Min(h.Lowest, v), math.Max(h.Highest, v)
+	}
+}
+
+// converterRoom returns what is left below and above in dB.
+func (h *Heard) converterRoom() (down, up float64) {
+	return left(1+h.Rest, -h.Lowest), left(1-h.Rest, h.Highest)
+}
+
+// converter is the converter as a stage.
+func (h *Heard) converter(n *circuit.Network) Stage {
+	volts := func(x float64) float64 { return h.Span.Middle() + x*h.Span.Unit() }
+	s := Stage{Name: Converter, Lowest: volts(h.Rest + h.Lowest), Highest: volts(h.Rest + h.Highest), LimitLow: h.Span.Low, LimitHigh: h.Span.High}
+	s.Down, s.Up = h.converterRoom()
+	nearer := math.Max(1-math.Abs(h.Rest), 0) * h.Span.Unit()
+	into := n.At(1000).Into(n.Output)
+	for i := range n.Inputs {
+		full := n.Chain.Inputs[i].FullScale
+		s.Sine = append(s.Sine, full*nearer/(abs(n.Inputs[i].Scale)*magnitude(into.Input(circuit.SoundInput(i)))))
+		s.Track = append(s.Track, full*math.Pow(10, math.Min(s.Down, s.Up)/20))
+	}
+	return s
+}
+
+// Of tells the room of every stage that a run went through, and of the converter.
+func Of(n *circuit.Network, r *Heard) []Stage {
 	exact := n.At(1000)
 	var stages []Stage
 	for k, a := range n.Amplifiers {
@@ -48,7 +86,7 @@ func Of(n *circuit.Network, r *render.Result) []Stage {
 		}
 		stages = append(stages, s)
 	}
-	return stages
+	return append(stages, r.converter(n))
 }
 
 // ratio is how far the output goes for each volt of its source, into the load that its swing is stated for; 1 where it
@@ -77,39 +115,40 @@ type Suggestion struct {
 	Fits  bool    // whether that run touched no limit and kept the margin
 }
 
-// Tightest returns the amplifier that has the least room of a run, and how much in dB; −1 and +Inf where nothing is asked
-// of any.
-func Tightest(n *circuit.Network, r *render.Result) (k int, left float64) {
-	k, left = -1, math.Inf(1)
+// Tightest returns the name of the amplifier that has the least room of a run, or [Converter] where that has less, the
+// number of the stage that it is of, or that drives the converter, and its room in dB; "", −1 and +Inf where nothing is
+// asked of any.
+func Tightest(n *circuit.Network, r *Heard) (name string, stage int, room float64) {
+	stage, room = -1, math.Inf(1)
 	for i := range r.Amplifiers {
-		if x := r.Amplifiers[i].Room(); !n.Amplifiers[i].Virtual && x < left {
-			k, left = i, x
+		if x := r.Amplifiers[i].Room(); !n.Amplifiers[i].Virtual && x < room {
+			name, stage, room = n.Amplifiers[i].Name, n.Amplifiers[i].Stage, x
 		}
 	}
-	return k, left
+	if x := math.Min(r.converterRoom()); x < room {
+		name, stage, room = Converter, stageIndex(n.Chain, n.Chain.Converter.From), x
+	}
+	return name, stage, room
 }
 
 // Suggest returns the value of the part that sets the gain of the tightest stage with which a full run leaves the margin
 // in dB, verified by that run: the nearest preferred value to the present one that does. It reports false where no part
 // sets a gain. run renders a track through a network.
-func Suggest(n *circuit.Network, r *render.Result, margin float64, run func(*circuit.Network) (*render.Result, error)) (Suggestion, bool, error) {
-	tightest, left := Tightest(n, r)
-	if tightest < 0 {
-		return Suggestion{}, false, nil
-	}
-	part, less, ok := gainPart(n.Chain, n.Amplifiers[tightest].Stage)
+func Suggest(n *circuit.Network, r *Heard, margin float64, run func(*circuit.Network) (*Heard, error)) (Suggestion, bool, error) {
+	name, stage, left := Tightest(n, r)
+	part, less, ok := gainPart(n.Chain, stage)
 	if !ok {
 		return Suggestion{}, false, nil
 	}
 	series := part.Preferred()
-	s := Suggestion{Stage: n.Amplifiers[tightest].Name, Part: part, Value: part.Value}
+	s := Suggestion{Stage: name, Part: part, Value: part.Value}
 	fits := func(value float64) (bool, error) {
 		with, _ := n.With(part.Name, value)
 		result, err := run(with)
 		if err != nil {
 			return false, err
 		}
-		_, s.Room = Tightest(with, result)
+		_, _, s.Room = Tightest(with, result)
 		s.Value, s.Fits = value, s.Room >= margin && result.Overloaded == 0
 		return s.Fits, nil
 	}
@@ -156,7 +195,7 @@ func (c *Centre) Network(n *circuit.Network) *circuit.Network {
 
 // Centres returns, for each bias that a stage's tightest amplifier rides on off centre by more than a hundredth of its
 // reach, the divider that would put it there.
-func Centres(n *circuit.Network, r *render.Result) []Centre {
+func Centres(n *circuit.Network, r *Heard) []Centre {
 	var list []Centre
 	for i := range n.Chain.Biases {
 		b := &n.Chain.Biases[i]
@@ -191,41 +230,72 @@ type Distortion struct {
 }
 
 // Sweep renders a tone at a tenth of the rate, but 997 Hz at most, at every input at levels from −60 dB to +12 dB of full
-// scale, and returns its THD+N over the converter's band, noise and rounding included.
+// scale, closer to each other where it last comes up through 1 %, and returns its THD+N over the converter's band, noise and
+// rounding included, the softest first.
 func Sweep(ctx context.Context, n *circuit.Network) ([]Distortion, error) {
-	const seconds, settled = 0.5, 0.2
-	rate := n.Chain.Converter.Rate
-	hz := math.Min(997, rate/10)
+	const steps, halvings = 24, 4 // of 3 dB; to 0.2 dB
 	budget := noise.At(n)
 	var list []Distortion
-	for level := -60.; level <= 12; level += 3 {
-		var heard []float64
-		feeds := make([]render.Feed, len(n.Inputs))
-		for i := range feeds {
-			t := tone.Sine(48000, seconds, hz, level)
-			feeds[i] = render.Feed{Sound: signals.Channels(t, 1)[0], Rate: t.Rate()}
-		}
-		_, err := render.Run(ctx, n, feeds, render.Options{Noise: budget}, func(b *render.Block) error {
-			heard = append(heard, b.Heard...)
-			return nil
-		})
+	for i := range steps + 1 {
+		one, err := distortion(ctx, n, budget, -60+72*float64(i)/steps)
 		if err != nil {
 			return nil, err
 		}
-		list = append(list, Distortion{level, thdn(heard[int(settled*rate):len(heard)-int(0.02*rate)], hz/rate)})
+		list = append(list, one)
+	}
+	for range halvings {
+		i := crossing(list)
+		if i < 0 {
+			break
+		}
+		one, err := distortion(ctx, n, budget, (list[i].Level+list[i+1].Level)/2)
+		if err != nil {
+			return nil, err
+		}
+		list = slices.Insert(list, i+1, one)
 	}
 	return list, nil
 }
 
-// OnePercent returns the level at which THD+N last comes up through 1 %, between the sweep's points; NaN where it does not.
-func OnePercent(sweep []Distortion) float64 {
-	for i := len(sweep) - 1; i > 0; i-- {
-		a, b := sweep[i-1], sweep[i]
-		if a.THDN < 0.01 && b.THDN >= 0.01 {
-			return a.Level + (b.Level-a.Level)*math.Log(0.01/a.THDN)/math.Log(b.THDN/a.THDN)
+// distortion renders a tone at a level in dB of full scale.
+func distortion(ctx context.Context, n *circuit.Network, budget *noise.Budget, level float64) (Distortion, error) {
+	const seconds, settled = 0.5, 0.2
+	rate := n.Chain.Converter.Rate
+	hz := math.Min(997, rate/10)
+	var heard []float64
+	feeds := make([]render.Feed, len(n.Inputs))
+	for i := range feeds {
+		t := tone.Sine(48000, seconds, hz, level)
+		feeds[i] = render.Feed{Sound: signals.Channels(t, 1)[0], Rate: t.Rate()}
+	}
+	_, err := render.Run(ctx, n, feeds, render.Options{Noise: budget}, func(b *render.Block) error {
+		heard = append(heard, b.Heard...)
+		return nil
+	})
+	if err != nil {
+		return Distortion{}, err
+	}
+	return Distortion{level, thdn(heard[int(settled*rate):len(heard)-int(0.02*rate)], hz/rate)}, nil
+}
+
+// crossing returns the point after which THD+N last comes up through 1 %; −1 where it does not.
+func crossing(sweep []Distortion) int {
+	for i := len(sweep) - 2; i >= 0; i-- {
+		if sweep[i].THDN < 0.01 && sweep[i+1].THDN >= 0.01 {
+			return i
 		}
 	}
-	return math.NaN()
+	return -1
+}
+
+// OnePercent returns the level at which THD+N last comes up through 1 %, between the sweep's points; NaN where it does not.
+func OnePercent(sweep []Distortion) float64 {
+	i := crossing(sweep)
+	if i < 0 {
+		return math.NaN()
+	}
+	a, b := sweep[i], sweep[i+1]
+	return a.Level + (b.Level-a.Level)*math.Log(0.01/a.THDN)/math.Log(b.THDN/a.THDN)
 }
 
 // thdn takes out DC and the tone, cycles a sample, by correlation over whole periods as near as can be, and returns the

@@ -237,10 +237,7 @@ type measure struct {
 }
 
 func newMeasure(n *circuit.Network, o Options) *measure {
-	m := &measure{o: o, input: circuit.SoundInput(0), scale: 1, droopAt: o.Keep}
-	if in := &n.Chain.Inputs[0]; in.Kind != chain.Line {
-		m.scale = math.Abs(n.Inputs[0].Scale) / (in.FullScale * math.Sqrt2)
-	}
+	m := &measure{o: o, input: circuit.SoundInput(0), scale: perUnit(n), droopAt: o.Keep}
 	path, _ := response.NewPath(n, "", "")
 	f := path.Figures()
 	m.low, m.high = f.LowCorner, f.HighCorner
@@ -281,6 +278,16 @@ func newMeasure(n *circuit.Network, o Options) *measure {
 		_, m.worst[k] = m.below(n)
 	}
 	return m
+}
+
+// perUnit is how much of what drives the network the first input's own unit is: 1 for a volt, and what a capsule makes of a
+// pascal.
+func perUnit(n *circuit.Network) float64 {
+	in := &n.Chain.Inputs[0]
+	if in.Kind == chain.Line {
+		return 1
+	}
+	return math.Abs(n.Inputs[0].Scale) / (in.FullScale * math.Sqrt2)
 }
 
 // atOutputs returns the largest magnitude from any input at each amplifier's output.
@@ -553,14 +560,15 @@ type Band struct {
 // bandBoards is how many boards a band is made of.
 const bandBoards = 100
 
-// Bands returns the nominal gain at frequencies in Hz, and the lowest, the 5 %, the 95 % and the highest of a hundred
+// Bands returns the nominal gain from the first input, volts for a volt or for a pascal, at frequencies in Hz, and the lowest, the 5 %, the 95 % and the highest of a hundred
 // boards.
 func Bands(n *circuit.Network, o Options, frequencies []float64) []Band {
 	o.Boards = bandBoards
 	vars := variables(n)
 	factors := hypercube(vars, n.Chain.Tolerance.Normal, o)
+	unit := perUnit(n)
 	gain := func(n *circuit.Network, f float64) float64 {
-		return circuit.Gain(n.At(f).Into(n.Output).Input(circuit.SoundInput(0)))
+		return circuit.Gain(n.At(f).Into(n.Output).Input(circuit.SoundInput(0)) * complex(unit, 0))
 	}
 	var boards []*circuit.Network
 	for i := range bandBoards {

@@ -288,7 +288,7 @@ func oversamplingOf(ctx context.Context, n *circuit.Network, sounds []*corner.So
 // fullRun renders the recording through the recommended chain.
 func fullRun(ctx context.Context, n *circuit.Network, r recording) (cornerRun, error) {
 	meters := residue.NewMeters(n.Chain.Converter.Rate)
-	if _, err := runOf(ctx, n, r, meters.Write); err != nil {
+	if _, _, err := runOf(ctx, n, r, meters.Write); err != nil {
 		return cornerRun{}, err
 	}
 	res := meters.Result()

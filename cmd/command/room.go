@@ -121,49 +121,41 @@ type roomPoint struct {
 	THDN  report.Number `json:"thdn"`
 }
 
-// heardRun is a run of one recording, of which nothing is written.
-type heardRun struct {
-	*render.Result
-	crest float64 // dB, peak against RMS
-}
-
-// runOf runs a recording through a chain.
-func runOf(ctx context.Context, n *circuit.Network, r recording, write func(*render.Block)) (*heardRun, error) {
+// runOf runs a recording through a chain, nothing being written, and returns the recording's crest factor in dB, too.
+func runOf(ctx context.Context, n *circuit.Network, r recording, write func(*render.Block)) (result *render.Result, crest float64, err error) {
 	tracks, err := openTracks(n.Chain, jobOf(n.Chain, r))
 	if err != nil {
-		return nil, err
+		return nil, 0, err
 	}
 	defer tracks.close()
-	result, err := render.Run(ctx, n, tracks.feeds, render.Options{}, func(b *render.Block) error { write(b); return nil })
+	result, err = render.Run(ctx, n, tracks.feeds, render.Options{}, func(b *render.Block) error { write(b); return nil })
 	if err != nil {
-		return nil, err
+		return nil, 0, err
 	}
 	t := tracks.list[0]
-	return &heardRun{result, level.Peak(t.peak) - level.DBFS(t.rms()) + 20*math.Log10(math.Sqrt2)}, nil
+	return result, level.Peak(t.peak) - level.DBFS(t.rms()) + 20*math.Log10(math.Sqrt2), nil
 }
 
 func roomOf(ctx context.Context, n *circuit.Network, list []recording, margin float64) (*roomResult, error) {
 	of := report.Of
 	out := &roomResult{Margin: of(margin)}
-	run := func(n *circuit.Network, r recording) (*render.Result, error) {
-		h, err := runOf(ctx, n, r, func(*render.Block) {})
-		if err != nil {
-			return nil, err
-		}
-		return h.Result, nil
+	crest := 0.
+	run := func(n *circuit.Network, r recording) (*room.Heard, error) {
+		h := &room.Heard{}
+		var err error
+		h.Result, crest, err = runOf(ctx, n, r, h.Write)
+		return h, err
 	}
-	results, worst, least := make([]*render.Result, len(list)), 0, math.Inf(1)
+	results, worst, least := make([]*room.Heard, len(list)), 0, math.Inf(1)
 	for i, r := range list {
-		h, err := runOf(ctx, n, r, func(*render.Block) {})
+		h, err := run(n, r)
 		if err != nil {
 			return nil, during(err, "running %s, %d of %d", r.name, i+1, len(list))
 		}
-		results[i] = h.Result
-		one := roomTrack{Name: r.name, Crest: of(h.crest), Stages: roomStages(n, h.Result)}
-		k, left := room.Tightest(n, h.Result)
-		if k >= 0 {
-			one.Tightest = n.Amplifiers[k].Name
-		}
+		results[i] = h
+		one := roomTrack{Name: r.name, Crest: of(crest), Stages: roomStages(n, h)}
+		var left float64
+		one.Tightest, _, left = room.Tightest(n, h)
 		if one.Room = of(left); left < least {
 			worst, least = i, left
 		}
@@ -172,7 +164,7 @@ func roomOf(ctx context.Context, n *circuit.Network, list []recording, margin fl
 	// What suits the worst recording mostly suits the others; where it does not, that one is the worst.
 	chosen := worst
 	for range list {
-		s, found, err := room.Suggest(n, results[chosen], margin, func(n *circuit.Network) (*render.Result, error) { return run(n, list[chosen]) })
+		s, found, err := room.Suggest(n, results[chosen], margin, func(n *circuit.Network) (*room.Heard, error) { return run(n, list[chosen]) })
 		if err != nil {
 			return nil, during(err, "looking for a gain for %s", list[chosen].name)
 		}
@@ -189,7 +181,7 @@ func roomOf(ctx context.Context, n *circuit.Network, list []recording, margin fl
 			if err != nil {
 				return nil, during(err, "verifying a gain on %s", r.name)
 			}
-			if _, left := room.Tightest(with, result); left < s.Room {
+			if _, _, left := room.Tightest(with, result); left < s.Room {
 				s.Room, next = left, i
 				s.Fits = s.Fits && left >= margin && result.Overloaded == 0
 			}
@@ -207,7 +199,7 @@ func roomOf(ctx context.Context, n *circuit.Network, list []recording, margin fl
 		if err != nil {
 			return nil, during(err, "verifying the bias %s", c.Bias)
 		}
-		_, left := room.Tightest(with, result)
+		_, _, left := room.Tightest(with, result)
 		out.Biases = append(out.Biases, roomBias{c.Bias, of(c.Now), of(c.Wanted), of(c.Divider.A), of(c.Divider.B), of(left)})
 	}
 	sweep, err := room.Sweep(ctx, n)
@@ -221,7 +213,7 @@ func roomOf(ctx context.Context, n *circuit.Network, list []recording, margin fl
 	return out, nil
 }
 
-func roomStages(n *circuit.Network, r *render.Result) []roomStage {
+func roomStages(n *circuit.Network, r *room.Heard) []roomStage {
 	of := report.Of
 	var list []roomStage
 	for _, s := range room.Of(n, r) {
@@ -318,8 +310,8 @@ func (r *roomResult) print(w io.Writer, n *circuit.Network) error {
 		t.Words("No one part sets the gain of %s, the tightest stage: a level in front of it has to", r.Tracks[i].Tightest)
 	}
 	for _, b := range r.Biases {
-		t.Words("Bias %s is at %s; midway between what its stage can reach is %s: top = %s, bottom = %s, with which a full run%s leaves %s", b.Bias, report.Volts(b.Now), report.Volts(b.Wanted),
-			quantity.FormatCode(quantity.Resistance, figure(b.Top)), quantity.FormatCode(quantity.Resistance, figure(b.Bottom)), on, leftWords(b.Room, true))
+		t.Words("Bias %s is at %s; midway between what its stage can reach is %s: top = %s, bottom = %s, with which a full run%s leaves %s (now %s)", b.Bias, report.Volts(b.Now), report.Volts(b.Wanted),
+			quantity.FormatCode(quantity.Resistance, figure(b.Top)), quantity.FormatCode(quantity.Resistance, figure(b.Bottom)), on, leftWords(b.Room, true), leftWords(r.least(), true))
 	}
 	if r.OnePercent.There() {
 		var at []string
@@ -334,9 +326,15 @@ func (r *roomResult) print(w io.Writer, n *circuit.Network) error {
 	return t.Err()
 }
 
+// least is the room that the worst track leaves.
+func (r *roomResult) least() report.Number {
+	i := slices.IndexFunc(r.Tracks, func(t roomTrack) bool { return t.Name == r.Worst })
+	return r.Tracks[i].Room
+}
+
 func (r *roomResult) plot() report.Plot {
 	p := report.Plot{Title: "THD+N against the input's level", X: "level, dB of full scale", Y: "THD+N, dB"}
-	c := report.PlotCurve{Label: "THD+N"}
+	c := report.PlotCurve{Label: "tone"}
 	one := report.PlotCurve{Label: "1 %"}
 	for _, x := range r.Sweep {
 		l, _ := x.Level.Value()

@@ -11,6 +11,7 @@ import (
 
 	"github.com/spf13/cobra"
 
+	"midrail/chain"
 	"midrail/chain/circuit"
 	"midrail/chain/quantity"
 	"midrail/chain/render"
@@ -75,7 +76,7 @@ every part at its worst end.`,
 			if f.json {
 				return writeJSON(s.out, spreadJSON(run, seed, list))
 			}
-			return printSpread(s.out, run, list)
+			return printSpread(s.out, n.Chain, run, list)
 		},
 	}
 	f.add(cmd)
@@ -160,7 +161,7 @@ func spreadJSON(run *spread.Run, seed uint64, list []recording) spreadResult {
 	return out
 }
 
-func printSpread(w io.Writer, run *spread.Run, list []recording) error {
+func printSpread(w io.Writer, c *chain.Chain, run *spread.Run, list []recording) error {
 	t := report.NewText(w)
 	t.Line("%d boards", run.Boards)
 	t.Line("")
@@ -202,6 +203,9 @@ func printSpread(w io.Writer, run *spread.Run, list []recording) error {
 	t.Table([]string{"boards below", "1 %", "5 %", "50 %", "95 %", "99 %"}, percentiles)
 	t.Line("")
 	t.Table([]string{"", "nominal", "lowest", "highest", "worst case", "to"}, ends)
+	if c.Inputs[0].Kind != chain.Line {
+		t.Words("Gain is that of a pascal at %s: 0 dB is 1 V/Pa.", c.Inputs[0].Name)
+	}
 	t.Words("Lowest and highest are of the boards drawn; the worst case is with every part at that end of its tolerance which takes the figure there (--json tells which).")
 	t.Line("")
 	t.Line("Parts that govern, by their share of the variance:")
@@ -234,6 +238,9 @@ func printSpread(w io.Writer, run *spread.Run, list []recording) error {
 func bands(n *circuit.Network, o spread.Options) report.Plot {
 	grid := response.Grid(10, math.Max(50e3, 2*n.Chain.Converter.Rate), 20)
 	p := report.Plot{Title: "Responses of a production run", X: "frequency, Hz", Y: "gain, dB", Log: true}
+	if n.Chain.Inputs[0].Kind != chain.Line {
+		p.Y = "gain, dB of 1 V/Pa"
+	}
 	for _, c := range spread.Bands(n, o, grid) {
 		p.Curves = append(p.Curves, report.PlotCurve{Label: c.Name, X: grid, Y: c.Gain})
 	}
@@ -242,7 +249,7 @@ func bands(n *circuit.Network, o spread.Options) report.Plot {
 
 // listenFor runs a recording through the nominal chain for its room and its fold-back.
 func listenFor(ctx context.Context, n *circuit.Network, r recording, o *spread.Options) error {
-	run, err := runOf(ctx, n, r, func(*render.Block) {})
+	result, _, err := runOf(ctx, n, r, func(*render.Block) {})
 	if err != nil {
 		return err
 	}
@@ -250,6 +257,6 @@ func listenFor(ctx context.Context, n *circuit.Network, r recording, o *spread.O
 	if err != nil {
 		return err
 	}
-	o.Results, o.Sounds = append(o.Results, run.Result), append(o.Sounds, sound)
+	o.Results, o.Sounds = append(o.Results, result), append(o.Sounds, sound)
 	return nil
 }
