@@ -143,6 +143,22 @@ func halfPower(poles []complex128) float64 {
 	return (low + high) / 2
 }
 
+// Corner returns the frequency at which sections are 3.01 dB below their gain at 0 Hz, in the unit of their F0.
+func Corner(sections []Section) float64 {
+	low, high := 0., 0.
+	for _, s := range sections {
+		high = math.Max(high, 10*s.F0)
+	}
+	for range 60 {
+		if mid := (low + high) / 2; cmplx.Abs(Response(sections, mid)) > math.Sqrt(0.5) {
+			low = mid
+		} else {
+			high = mid
+		}
+	}
+	return low
+}
+
 // Response returns the complex gain of sections with the filter's corner at 1, at f.
 func Response(sections []Section, f float64) complex128 {
 	h := complex(1, 0)

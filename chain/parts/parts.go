@@ -93,8 +93,15 @@ type Choice struct {
 	ErrorQ      float64
 	ErrorGain   float64
 	Spread      float64 // larger over smaller capacitor
-	// Sensitivity is the largest relative change of Q for one of a part's value; f0 changes by half of any of them.
-	Sensitivity float64
+	// Sensitivities are those to each part that the stage has, in the order of Values.
+	Sensitivities []Sensitivity
+}
+
+// Sensitivity tells how f0, Q and gain go with a part's value: S = ∂ln y/∂ln x, the relative change for a relative change,
+// with the amplifier.
+type Sensitivity struct {
+	Part        string // "r_1" to "c_2"
+	F0, Q, Gain float64
 }
 
 // Range of parts that are looked at, common practice for filters between amplifiers: from what loads an amplifier to what
@@ -129,7 +136,7 @@ func Find(w Wish, most int) []Choice {
 		for _, c := range capacitors {
 			all = w.consider(all, Values{R1: 1 / (2 * math.Pi * w.F0 * c), C1: c})
 		}
-		return nearest(all, most)
+		return w.told(nearest(all, most))
 	}
 	for _, c1 := range capacitors {
 		for _, c2 := range capacitors {
@@ -148,7 +155,15 @@ func Find(w Wish, most int) []Choice {
 			}
 		}
 	}
-	return nearest(all, most)
+	return w.told(nearest(all, most))
+}
+
+// told adds the sensitivities to choices.
+func (w Wish) told(choices []Choice) []Choice {
+	for i := range choices {
+		choices[i].Sensitivities = w.sensitivities(choices[i].Values)
+	}
+	return choices
 }
 
 func spread(a, b float64) float64 { return math.Max(a/b, b/a) }
@@ -186,12 +201,8 @@ func (w Wish) judge(v Values) Choice {
 		c.F0 = 1 / (2 * math.Pi * v.R1 * v.C1)
 	case SallenKeyKind:
 		c.F0, c.Q = SallenKeyOf(v)
-		// |S| of Q: ½ for the capacitors, |½ − r1/(r1 + r2)| for the resistors.
-		c.Sensitivity = 0.5
 	default:
 		c.F0, c.Q, c.Gain = MultipleFeedbackOf(v)
-		sum := v.R2 + v.R3 + v.R2*v.R3/v.R1
-		c.Sensitivity = math.Max(0.5, math.Max(math.Abs(0.5-(v.R2+v.R2*v.R3/v.R1)/sum), math.Abs(0.5-(v.R3+v.R2*v.R3/v.R1)/sum)))
 	}
 	if w.Kind != RCKind {
 		c.Spread = spread(v.C1, v.C2)
@@ -218,6 +229,30 @@ func nearest(all []Choice, most int) []Choice {
 	}
 	sort.SliceStable(all, func(i, j int) bool { return cost(all[i]) < cost(all[j]) })
 	return all[:min(most, len(all))]
+}
+
+// sensitivities returns those of a choice by central differences.
+func (w Wish) sensitivities(v Values) []Sensitivity {
+	const step = 1e-4
+	var list []Sensitivity
+	for i, key := range [...]string{"r_1", "r_2", "r_3", "c_1", "c_2"} {
+		up, down := v, v
+		at := func(v *Values) *float64 { return [...]*float64{&v.R1, &v.R2, &v.R3, &v.C1, &v.C2}[i] }
+		if *at(&v) == 0 {
+			continue
+		}
+		*at(&up) *= math.Exp(step)
+		*at(&down) *= math.Exp(-step)
+		a, b := w.judge(up), w.judge(down)
+		slope := func(up, down float64) float64 {
+			if up == 0 {
+				return 0
+			}
+			return math.Log(up/down) / (2 * step)
+		}
+		list = append(list, Sensitivity{key, slope(a.F0, b.F0), slope(a.Q, b.Q), slope(a.Gain, b.Gain)})
+	}
+	return list
 }
 
 // withAmplifier returns f0 and Q of the section's slow pole pair with a one-pole amplifier, from its cubic

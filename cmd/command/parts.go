@@ -4,6 +4,7 @@ import (
 	"fmt"
 	"io"
 	"math"
+	"strings"
 
 	"github.com/spf13/cobra"
 
@@ -74,6 +75,11 @@ func valueOf(kind quantity.Kind, text string, low, high float64) (float64, error
 
 type partsResult struct {
 	Sections []partsSection `json:"sections"`
+	// The −3 dB corner of the nearest choices together: wanted, as it comes out and, with an amplifier, as it would of
+	// designs that take it for ideal. Null for a single section.
+	Wanted report.Number `json:"corner_wanted_hz"`
+	Corner report.Number `json:"corner_hz"`
+	Plain  report.Number `json:"without_predistortion_corner_hz"`
 }
 
 type partsSection struct {
@@ -82,8 +88,10 @@ type partsSection struct {
 	Q       report.Number `json:"q"`
 	Choices []partsChoice `json:"choices"`
 	// What the nearest choice of a design that takes the amplifier for ideal would give with it; null without one.
-	PlainF0 report.Number `json:"without_predistortion_f0_hz"`
-	PlainQ  report.Number `json:"without_predistortion_q"`
+	PlainF0     report.Number `json:"without_predistortion_f0_hz"`
+	PlainQ      report.Number `json:"without_predistortion_q"`
+	PlainErrF0  report.Number `json:"without_predistortion_error_f0"`
+	PlainErrorQ report.Number `json:"without_predistortion_error_q"`
 }
 
 type partsChoice struct {
@@ -100,6 +108,15 @@ type partsChoice struct {
 	ErrorGain   report.Number `json:"error_gain"`
 	Spread      report.Number `json:"capacitor_spread"`
 	Sensitivity report.Number `json:"largest_sensitivity_of_q"`
+	// Relative change for a relative change of each part.
+	Sensitivities []partsSensitivity `json:"sensitivities"`
+}
+
+type partsSensitivity struct {
+	Part string        `json:"part"`
+	F0   report.Number `json:"f0"`
+	Q    report.Number `json:"q"`
+	Gain report.Number `json:"gain"`
 }
 
 func newFilterParts(s streams) *cobra.Command {
@@ -159,6 +176,9 @@ gain-bandwidth; what an ideal design would give with it is told beside.`,
 				}
 				out.Sections = append(out.Sections, sectionResult(one, f.most))
 			}
+			if f0 == "" {
+				out.corners(unit)
+			}
 			if f.json {
 				return writeJSON(s.out, out)
 			}
@@ -217,14 +237,47 @@ func sectionResult(w parts.Wish, most int) partsSection {
 		choice := partsChoice{R1: of(c.R1), R2: there(c.R2), R3: there(c.R3), C1: of(c.C1), C2: there(c.C2), F0: of(c.F0), ErrorF0: of(c.ErrorF0)}
 		if w.Kind != parts.RCKind {
 			choice.Q, choice.Gain, choice.ErrorQ, choice.ErrorGain = of(c.Q), of(c.Gain), of(c.ErrorQ), of(c.ErrorGain)
-			choice.Spread, choice.Sensitivity = of(c.Spread), of(c.Sensitivity)
+			most := 0.
+			for _, s := range c.Sensitivities {
+				most = math.Max(most, math.Abs(s.Q))
+			}
+			choice.Spread, choice.Sensitivity = of(c.Spread), of(most)
+		}
+		for _, s := range c.Sensitivities {
+			one := partsSensitivity{Part: s.Part, F0: of(s.F0)}
+			if w.Kind != parts.RCKind {
+				one.Q, one.Gain = of(s.Q), of(s.Gain)
+			}
+			choice.Sensitivities = append(choice.Sensitivities, one)
 		}
 		r.Choices = append(r.Choices, choice)
 	}
 	if plain, ok := parts.WithoutPredistortion(w); ok {
-		r.PlainF0, r.PlainQ = of(plain.F0), of(plain.Q)
+		r.PlainF0, r.PlainQ, r.PlainErrF0, r.PlainErrorQ = of(plain.F0), of(plain.Q), of(plain.ErrorF0), of(plain.ErrorQ)
 	}
 	return r
+}
+
+// corners finds the corner of the nearest choices together.
+func (r *partsResult) corners(wanted float64) {
+	var with, plain []alignment.Section
+	figure := func(n report.Number) float64 { x, _ := n.Value(); return x }
+	predistorted := false
+	for _, s := range r.Sections {
+		if len(s.Choices) == 0 {
+			return
+		}
+		one := alignment.Section{F0: figure(s.Choices[0].F0), Q: figure(s.Choices[0].Q)}
+		with = append(with, one)
+		if s.PlainF0.There() {
+			one, predistorted = alignment.Section{F0: figure(s.PlainF0), Q: figure(s.PlainQ)}, true
+		}
+		plain = append(plain, one)
+	}
+	r.Wanted, r.Corner = report.Of(wanted), report.Of(alignment.Corner(with))
+	if predistorted {
+		r.Plain = report.Of(alignment.Corner(plain))
+	}
 }
 
 func code(kind quantity.Kind, n report.Number) string {
@@ -250,17 +303,63 @@ func (r partsResult) print(w io.Writer) error {
 			t.Line("no preferred values within the parts that are looked at")
 			continue
 		}
-		var rows [][]string
-		for _, c := range s.Choices {
-			rows = append(rows, []string{code(quantity.Resistance, c.R1), code(quantity.Resistance, c.R2), code(quantity.Resistance, c.R3),
-				code(quantity.Capacitance, c.C1), code(quantity.Capacitance, c.C2), report.Percent(c.ErrorF0), report.Percent(c.ErrorQ), report.Percent(c.ErrorGain), report.Plain(c.Spread, 3)})
+		s.print(t)
+	}
+	if r.Corner.There() {
+		t.Line("")
+		words := ""
+		if r.Plain.There() {
+			words = "; designed for an ideal amplifier, with " + report.Hz(r.Plain)
 		}
-		t.Table([]string{"r_1", "r_2", "r_3", "c_1", "c_2", "f0 off", "Q off", "gain off", "c spread"}, rows)
-		if _, there := s.PlainF0.Value(); there {
-			t.Line("designed for an ideal amplifier it would come out at %s, Q %s", report.Hz(s.PlainF0), report.Plain(s.PlainQ, 4))
-		}
+		t.Words("The nearest choices together come out with a corner of %s (wanted: %s)%s", report.Hz(r.Corner), report.Hz(r.Wanted), words)
 	}
 	return t.Err()
+}
+
+// print prints a section's choices, the columns that its kind has.
+func (s *partsSection) print(t *report.Text) {
+	second, third := s.Kind != string(parts.RCKind), s.Kind == string(parts.MultipleFeedbackKind)
+	only := func(first, second, third []string, has2, has3 bool) []string {
+		row := first
+		if has2 {
+			row = append(row, second...)
+		}
+		if has3 {
+			row = append(row, third...)
+		}
+		return row
+	}
+	var rows [][]string
+	for _, c := range s.Choices {
+		row := only([]string{code(quantity.Resistance, c.R1)}, []string{code(quantity.Resistance, c.R2)}, []string{code(quantity.Resistance, c.R3)}, second, third)
+		row = append(row, code(quantity.Capacitance, c.C1))
+		row = append(row, only(nil, []string{code(quantity.Capacitance, c.C2)}, nil, second, false)...)
+		row = append(row, report.Percent(c.ErrorF0))
+		rows = append(rows, append(row, only(nil, []string{report.Percent(c.ErrorQ), report.Plain(c.Spread, 3), report.Plain(c.Sensitivity, 2)}, []string{report.Percent(c.ErrorGain)}, second, third)...))
+	}
+	head := only([]string{"r_1"}, []string{"r_2"}, []string{"r_3"}, second, third)
+	head = append(head, "c_1")
+	head = append(head, only(nil, []string{"c_2"}, nil, second, false)...)
+	head = append(head, "f0 off")
+	head = append(head, only(nil, []string{"Q off", "c spread", "Q by a part"}, []string{"gain off"}, second, third)...)
+	t.Table(head, rows)
+	nearest := s.Choices[0]
+	if s.PlainF0.There() {
+		t.Words("With this amplifier the nearest comes out at f0 %s, Q %s (%s, %s off). Designed for an ideal amplifier it would at f0 %s, Q %s (%s, %s off).",
+			report.Hz(nearest.F0), report.Plain(nearest.Q, 4), report.Percent(nearest.ErrorF0), report.Percent(nearest.ErrorQ),
+			report.Hz(s.PlainF0), report.Plain(s.PlainQ, 4), report.Percent(s.PlainErrF0), report.Percent(s.PlainErrorQ))
+	}
+	rows = nil
+	for _, x := range nearest.Sensitivities {
+		rows = append(rows, only([]string{x.Part, hundredths(x.F0)}, []string{hundredths(x.Q)}, []string{hundredths(x.Gain)}, second, third))
+	}
+	t.Table(only([]string{"1 % more of", "f0, %"}, []string{"Q, %"}, []string{"gain, %"}, second, third), rows)
+}
+
+// hundredths prints a figure with its sign, to a hundredth.
+func hundredths(n report.Number) string {
+	v, _ := n.Value()
+	return strings.Replace(fmt.Sprintf("%+.2f", math.Round(100*v)/100+0), "-", "−", 1)
 }
 
 type ratioResult struct {
