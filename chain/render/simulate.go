@@ -14,23 +14,23 @@ import (
 const (
 	// same is the difference in V below which the limited run is back on the linear one.
 	same = 1e-12
-	// margin is by how much less than a limit a linear run must stay at the instants that are looked at, which are at
-	// least four to a period of the tracks' highest frequency: 1/cos(π/4) is what may lie between them.
+	// margin is by how much less than a limit the bounds of a linear run must stay, which are of instants at least four to
+	// a period of the tracks' highest frequency: 1/cos(π/4) is what may lie between them.
 	margin = 1.42
 	// blockBase is about how many base samples a block has.
 	blockBase = 24
 )
 
 // simulator takes the circuit through chunks, block by block. Each lane has the linear circuit to itself, as a map from
-// block to block; their sum is looked at where limits could be touched, and only blocks in which they could are
-// stepped, with the limits. What the limits change lives on as the difference of the limited run and the linear one.
+// block to block; their sum is looked at where limits could be touched, and only through blocks in which they could the
+// limited run is taken. What the limits change lives on as the difference of the limited run and the linear one.
 type simulator struct {
 	n       *circuit.Network
 	circuit *bilinear.Compiled
 	grid    grid
 	bounds  []bilinear.Bounds
 	clip    []float64 // of each input of u; +Inf: none
-	always  bool      // step every block
+	always  bool      // take the limited run through every block
 
 	elements   []element
 	quantities int // that are read at each instant: first the watched nodes
