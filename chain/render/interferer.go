@@ -5,9 +5,11 @@ import (
 	"math/cmplx"
 	"math/rand/v2"
 
+	"gonum.org/v1/gonum/floats"
+
 	"midrail/bilinear"
-	"midrail/chain"
 	"midrail/chain/circuit"
+	"midrail/signals/resample"
 )
 
 // interferer is one part of the interferers on its way into one input of the network.
@@ -93,9 +95,21 @@ func newInterferers(n *circuit.Network, plan Plan, seed uint64) []*interferer {
 				add(inBandPart, outOfBandPart, fine, g)
 			}
 		case "noise":
-			inBand, folded := splitNoise(x, plan.Rate, half, seed, uint64(i))
-			add(inBandPart, none, true, inBand)
-			add(outOfBandPart, none, true, folded)
+			low, high := math.Max(x.Frequency-x.Bandwidth/2, 0), x.Frequency+x.Bandwidth/2
+			if x.Frequency == 0 {
+				low, high = 0, x.Bandwidth
+			}
+			// The two parts are independent, as bands of white noise are.
+			for stream, b := range [...]struct {
+				part     part
+				from, to float64
+			}{{inBandPart, low, math.Min(high, half)}, {outOfBandPart, math.Max(low, half), high}} {
+				if b.from < b.to {
+					level := x.Level * math.Sqrt((b.to-b.from)/(high-low))
+					g, fine := noiseBand(b.from, b.to, level, plan, rand.New(rand.NewPCG(seed, 2*uint64(i)+uint64(stream))))
+					add(b.part, none, fine, g)
+				}
+			}
 		default:
 			g, fine := tone(x.Frequency, x.Level)
 			p := inBandPart
@@ -274,21 +288,56 @@ func edge(phase, cycles float64) float64 {
 	return 0
 }
 
-// splitNoise parts a band of noise at half the converter's rate; the two parts are independent, as bands of
-// white noise are.
-func splitNoise(x chain.Interferer, rate, half float64, seed, index uint64) (inBand, folded generator) {
-	low, high := math.Max(x.Frequency-x.Bandwidth/2, 0), x.Frequency+x.Bandwidth/2
-	if x.Frequency == 0 {
-		low, high = 0, x.Bandwidth
+// noiseBand returns a band of noise and whether it is made at the internal rate: at the base rate where the tracks could
+// hold it too, else at as low a rate as gives its highest frequency its steps, and interpolated.
+func noiseBand(from, to, level float64, plan Plan, draw *rand.Rand) (g generator, fine bool) {
+	if to <= baseTone*plan.To {
+		return newBand(from, to, level, plan.baseRate(), draw), false
 	}
-	band := func(from, to float64, stream uint64) generator {
-		if from >= to {
-			return nil
-		}
-		level := x.Level * math.Sqrt((to-from)/(high-low))
-		return newBand(from, to, level, rate, rand.New(rand.NewPCG(seed, 2*index+stream)))
+	halvings := 0
+	for math.Ldexp(plan.Rate, -halvings-1) >= perInterferer*to {
+		halvings++
 	}
-	return band(low, math.Min(high, half), 0), band(math.Max(low, half), high, 1)
+	b := newBand(from, to, level, math.Ldexp(plan.Rate, -halvings), draw)
+	if halvings == 0 {
+		return b, true
+	}
+	return &interpolatedBand{band: b, halvings: halvings, rate: plan.Rate}, true
+}
+
+// interpolatedBand is a band made at a fraction of a rate and interpolated. Its steps are asked for in their order.
+type interpolatedBand struct {
+	*band
+	halvings int
+	rate     float64
+	in       *resample.Interpolator
+	block    []float64
+}
+
+func (b *interpolatedBand) add(dst []float64, first int64) {
+	if b.in == nil {
+		const top = 0.25 // of its own rate, far beyond the band
+		own := first >> b.halvings
+		b.in = resample.New(&bandStream{b.band, own}, math.Ldexp(b.rate, -b.halvings), b.rate, top, own, first, 0)
+	}
+	b.block = append(b.block[:0], make([]float64, len(dst))...)
+	if err := readAll(b.in, b.block); err != nil {
+		panic("render: noise does not end")
+	}
+	floats.Add(dst, b.block)
+}
+
+// bandStream is a band without end.
+type bandStream struct {
+	band *band
+	next int64
+}
+
+func (s *bandStream) Read(dst []float64) (int, error) {
+	clear(dst)
+	s.band.add(dst, s.next)
+	s.next += int64(len(dst))
+	return len(dst), nil
 }
 
 // band is Gaussian noise between two frequencies: low-pass noise, where the band does not start at 0 in phase and

@@ -486,17 +486,20 @@ func TestInterferingSquareHasItsHarmonics(t *testing.T) {
 
 // A band of noise comes out with the power that the response's mean square over the band lets through.
 func TestInterferingNoiseHasItsPower(t *testing.T) {
-	n := interfered(t, "line", "3kHz", "0.1Vrms", "shape = \"noise\"\nbandwidth = \"1kHz\"")
-	s := renderAll(t, n, Options{Seed: 5}, silence(4))
-	power := 0.
-	for f := 2505.; f < 3500; f += 10 {
-		power += square2(cmplx.Abs(n.At(f).Into(n.Output).Input(circuit.SoundInput(0)))) / 100
-	}
-	want := 0.1 * math.Sqrt(power) / s.result.Span.Unit()
-	// 4000 independent values in four seconds of a band 1 kHz wide: 1.6 % for one sigma of the RMS; three allowed, and the
-	// band's Butterworth skirts.
-	if got := rms(s.layers[Interference]); !(math.Abs(got/want-1) <= 0.05) {
-		t.Errorf("RMS %.4g, want %.4g", got, want)
+	for _, c := range []struct{ from, to float64 }{{2500, 3500}, {60e3, 64e3}} {
+		n := interfered(t, "line", fmt.Sprint((c.from+c.to)/2), "0.1Vrms", fmt.Sprintf("shape = \"noise\"\nbandwidth = %g", c.to-c.from))
+		s := renderAll(t, n, Options{Seed: 5}, silence(4))
+		power, points := 0., 100
+		for i := range points {
+			f := c.from + (c.to-c.from)*(float64(i)+0.5)/float64(points)
+			power += square2(cmplx.Abs(n.At(f).Into(n.Output).Input(circuit.SoundInput(0)))) / float64(points)
+		}
+		want := 0.1 * math.Sqrt(power) / s.result.Span.Unit()
+		// 4000 independent values in four seconds of a band 1 kHz wide: 1.6 % for one sigma of the RMS; three allowed, and the
+		// band's Butterworth skirts.
+		if got := rms(s.layers[Interference]); !(math.Abs(got/want-1) <= 0.05) {
+			t.Errorf("%g to %g Hz: RMS %.4g, want %.4g", c.from, c.to, got, want)
+		}
 	}
 }
 
