@@ -46,6 +46,7 @@ func Filter(n *circuit.Network) (stages []string, from string) {
 type Sound struct {
 	step float64     // Hz, between the points of a frame
 	mean []float64   // V² at each point, over all frames
+	each [][]float64 // the same of each input, as samples
 	loud [][]float64 // the frames that are loudest above loudAbove
 	Top  float64     // Hz, half the recording's rate
 }
@@ -64,12 +65,12 @@ func Listen(ctx context.Context, n *circuit.Network, feeds []signals.Stream, rat
 	length := 2 * int(math.Round(frameSeconds*rate/2))
 	plan := fourier.NewFFT(length)
 	points := length/2 + 1
-	s := &Sound{step: rate / float64(length), mean: make([]float64, points), Top: rate / 2}
+	s := &Sound{step: rate / float64(length), mean: make([]float64, points), each: make([][]float64, len(feeds)), Top: rate / 2}
 	_, from := Filter(n)
 	node, _ := n.NodeOf(from)
 	before := make([][]float64, len(feeds)) // |B|² of each input, for a sample of 1
 	for i := range feeds {
-		before[i] = make([]float64, points)
+		before[i], s.each[i] = make([]float64, points), make([]float64, points)
 		for k := 1; k < points; k++ {
 			g := cmplx.Abs(n.At(float64(k)*s.step).Into(node).Input(circuit.SoundInput(i))) * n.Inputs[i].Scale
 			before[i][k] = g * g
@@ -119,7 +120,9 @@ func Listen(ctx context.Context, n *circuit.Network, feeds []signals.Stream, rat
 				if k == points-1 {
 					share = 1
 				}
-				frame[k] += share * a * a / (power * float64(length)) * before[i][k]
+				a = share * a * a / (power * float64(length))
+				s.each[i][k] += a
+				frame[k] += a * before[i][k]
 			}
 		}
 		if ended {
@@ -128,6 +131,9 @@ func Listen(ctx context.Context, n *circuit.Network, feeds []signals.Stream, rat
 			}
 			for k := range s.mean {
 				s.mean[k] /= float64(frames)
+				for i := range s.each {
+					s.each[i][k] /= float64(frames)
+				}
 			}
 			break
 		}
@@ -477,41 +483,36 @@ func Efficient(all []Candidate, w Wish) []Candidate {
 // foldPoints is how many frequencies [Sound.BelowWith] looks at, by equal ratios.
 const foldPoints = 64
 
-// BelowWith returns by how many dB fold-back lies below the wanted sound with the filter that a network of the same stages
-// has, from the means of the spectrum over equal ratios of frequency: for comparing boards of one chain.
+// BelowWith returns by how many dB fold-back lies below the wanted sound in a network of the same inputs, from the means of
+// the spectrum over equal ratios of frequency and the network's whole response: for comparing boards of one chain.
 func (s *Sound) BelowWith(n *circuit.Network) float64 {
-	_, from := Filter(n)
-	node, _ := n.NodeOf(from)
 	half := n.Chain.Converter.Rate / 2
-	ratio := func(f float64) float64 {
-		h := n.At(f).FromInput(circuit.SoundInput(0))
-		if h[node] == 0 {
-			return 0
-		}
-		a := cmplx.Abs(h[n.Output] / h[node])
-		return a * a
-	}
-	wanted, fold := 0., 0.
-	band := func(low, high float64) (power float64) {
-		for k := max(1, int(math.Ceil(low/s.step))); k < len(s.mean) && float64(k)*s.step < high; k++ {
-			power += s.mean[k]
-		}
-		return power
-	}
-	edges := func(from, to float64, points int, into *float64) {
-		for i := range points {
-			low, high := from*math.Pow(to/from, float64(i)/float64(points)), from*math.Pow(to/from, float64(i+1)/float64(points))
-			if p := band(low, high); p > 0 {
-				*into += p * ratio(math.Sqrt(low*high))
+	between := func(from, to float64) (total float64) {
+		ratio := math.Pow(to/from, 2./foldPoints)
+		for low := range foldPoints / 2 {
+			low := from * math.Pow(ratio, float64(low))
+			first, end := max(1, int(math.Ceil(low/s.step))), min(int(math.Ceil(low*ratio/s.step)), len(s.mean))
+			if first >= end {
+				continue
+			}
+			into := n.At(low * math.Sqrt(ratio)).Into(n.Output)
+			for i, input := range n.Inputs {
+				power := 0.
+				for _, p := range s.each[i][first:end] {
+					power += p
+				}
+				g := cmplx.Abs(into.Input(circuit.SoundInput(i))) * input.Scale
+				total += power * g * g
 			}
 		}
+		return total
 	}
-	edges(20, half, foldPoints/2, &wanted)
-	if s.Top > half {
-		edges(half, s.Top, foldPoints/2, &fold)
+	if s.Top <= half {
+		return math.Inf(1)
 	}
+	fold := between(half, s.Top)
 	if fold == 0 {
 		return math.Inf(1)
 	}
-	return 10 * math.Log10(wanted/fold)
+	return 10 * math.Log10(between(math.Min(20, half/2), half)/fold)
 }

@@ -17,6 +17,8 @@ import (
 	"sync"
 	"sync/atomic"
 
+	"gonum.org/v1/gonum/mat"
+	"gonum.org/v1/gonum/stat"
 	"gonum.org/v1/gonum/stat/distuv"
 
 	"midrail/chain"
@@ -82,7 +84,8 @@ func (f *Figure) Percentile(p float64) float64 {
 	return f.Sorted[i] + (x-float64(i))*(f.Sorted[i+1]-f.Sorted[i])
 }
 
-// Share is a part's share of a figure's variance, by the square of their correlation.
+// Share is a part's share of a figure's variance: of what a straight line through all parts together, by least squares,
+// ascribes to it. Bends and what parts do together belong to none.
 type Share struct {
 	Part  string
 	Share float64
@@ -421,9 +424,8 @@ func (m *measure) gather(ctx context.Context, n *circuit.Network, vars []variabl
 		columns[k] = column
 		f := Figure{Name: m.names[k], Unit: m.units[k], Nominal: m.nominal[k], Sorted: slices.Clone(column), Sound: m.worst[k]}
 		sort.Float64s(f.Sorted)
-		for v, x := range vars {
-			r := correlation(factors[v], column)
-			f.Shares = append(f.Shares, Share{x.name, r * r})
+		for v, share := range shares(factors, column) {
+			f.Shares = append(f.Shares, Share{vars[v].name, share})
 		}
 		sort.SliceStable(f.Shares, func(i, j int) bool { return f.Shares[i].Share > f.Shares[j].Share })
 		f.WorstLow, f.WorstHigh = m.vertex(n, vars, k, -1, slopes, factors, column), m.vertex(n, vars, k, 1, slopes, factors, column)
@@ -533,22 +535,40 @@ func (m *measure) slopes(ctx context.Context, n *circuit.Network, vars []variabl
 	return all, nil
 }
 
-// correlation is Pearson's; 0 where one does not vary.
-func correlation(x, y []float64) float64 {
-	var mx, my float64
-	n := float64(len(x))
-	for i := range x {
-		mx, my = mx+x[i]/n, my+y[i]/n
+// shares returns each variable's share of the variance of y: β²·var(x)/var(y) with y = Σβ·x by least squares, of the sum
+// of those where that is more. It is 0 where either does not vary, or there are too few boards to tell.
+func shares(factors [][]float64, y []float64) []float64 {
+	out := make([]float64, len(factors))
+	centre, variance := stat.PopMeanVariance(y, nil)
+	var vary []int
+	for v := range factors {
+		if stat.PopVariance(factors[v], nil) > 0 {
+			vary = append(vary, v)
+		}
 	}
-	var xx, yy, xy float64
-	for i := range x {
-		a, b := x[i]-mx, y[i]-my
-		xx, yy, xy = xx+a*a, yy+b*b, xy+a*b
+	if !(variance > 0) || math.IsInf(variance, 0) || len(vary) == 0 || len(y) < 2*len(vary) {
+		return out
 	}
-	if xx == 0 || yy == 0 || math.IsNaN(yy) || math.IsInf(yy, 0) {
-		return 0
+	x, b := mat.NewDense(len(y), len(vary), nil), mat.NewVecDense(len(y), nil)
+	for i := range y {
+		b.SetVec(i, y[i]-centre)
+		for j, v := range vary {
+			x.Set(i, j, factors[v][i]-1)
+		}
 	}
-	return xy / math.Sqrt(xx*yy)
+	var beta mat.VecDense
+	if err := beta.SolveVec(x, b); err != nil {
+		return out
+	}
+	total := 0.
+	for j, v := range vary {
+		out[v] = beta.AtVec(j) * beta.AtVec(j) * stat.PopVariance(factors[v], nil)
+		total += out[v]
+	}
+	for v := range out { // parts that happen to pull against each other have more than the whole
+		out[v] /= math.Max(variance, total)
+	}
+	return out
 }
 
 // Band is a line of a band of responses.

@@ -528,7 +528,16 @@ func (r *cornerResult) print(w io.Writer, written string) error {
 
 // filterWords tells a candidate in words.
 func filterWords(c cornerChoice) string {
-	return fmt.Sprintf("%s, order %d %s at %s (%s)", report.Hz(c.Rate), c.Order, c.Alignment, report.Hz(c.Corner), amplifierWords(c.Amplifiers))
+	return fmt.Sprintf("%s, %s", report.Hz(c.Rate), c.filter())
+}
+
+// filter tells the filter alone.
+func (c *cornerChoice) filter() string {
+	order := fmt.Sprint("order ", c.Order)
+	if c.Order > 1 {
+		order += " " + c.Alignment
+	}
+	return fmt.Sprintf("%s at %s (%s)", order, report.Hz(c.Corner), amplifierWords(c.Amplifiers))
 }
 
 func amplifierWords(count int) string {
@@ -551,7 +560,7 @@ func droopWords(droop report.Number, keep float64) string {
 
 func (o *cornerOversamp) print(t *report.Text, keep float64) {
 	rate := report.Hz(o.HandedOn)
-	direct := fmt.Sprintf("converting at that rate takes order %d %s at %s (%s; %s below)", o.Direct.Order, o.Direct.Alignment, report.Hz(o.Direct.Corner), amplifierWords(o.Direct.Amplifiers), report.DB(o.Direct.Below))
+	direct := fmt.Sprintf("converting at that rate takes %s, with fold-back %s below", o.Direct.filter(), report.DB(o.Direct.Below))
 	if !o.Meets {
 		direct = "no order up to 8 does what is asked when converting at that rate"
 	}
@@ -560,9 +569,9 @@ func (o *cornerOversamp) print(t *report.Text, keep float64) {
 		return
 	}
 	c := o.Over
-	t.Words("To hand on %s, %s. Cheaper than order: convert %d times as often, at %s, behind order %d %s at %s (%s), then a digital low-pass of %d taps (to %s, %s down from %s; %s multiply-adds a second for the samples that are kept), and keep one sample in %d: "+
+	t.Words("To hand on %s, %s. Cheaper than order: convert %d times as often, at %s, behind %s, then a digital low-pass of %d taps (to %s, %s down from %s; %s multiply-adds a second for the samples that are kept), and keep one sample in %d: "+
 		"fold-back lies %s below the wanted sound (%s), the worst tone %s, and it %s.",
-		rate, direct, c.By, report.Hz(c.Rate), c.Order, c.Alignment, report.Hz(c.Corner), amplifierWords(c.Amplifiers), c.Taps, report.Hz(c.PassEdge), report.DB(c.Attenuation), report.Hz(c.StopEdge), millions(c.MultiplyAdds), c.By,
+		rate, direct, c.By, report.Hz(c.Rate), c.filter(), c.Taps, report.Hz(c.PassEdge), report.DB(c.Attenuation), report.Hz(c.StopEdge), millions(c.MultiplyAdds), c.By,
 		report.DB(c.Below), report.DBFS(c.FoldBack), report.DB(c.WorstTone), droopWords(c.Droop, keep))
 }
 

@@ -134,6 +134,20 @@ func TestPredictedFoldBackIsTheFullRuns(t *testing.T) {
 	f.hold(t, "the demo", func() signals.Track { return tone.Demo() }, foldingCases[:1])
 }
 
+// What spread takes for fold-back of the nominal board is the full run's.
+func TestFoldBackOfTheNominalBoard(t *testing.T) {
+	f := newFolding(t)
+	track := whiteNoise()
+	meters := residue.NewMeters(f.n.Chain.Converter.Rate)
+	if _, err := render.Run(context.Background(), f.n, []render.Feed{{Sound: signals.Channels(track, 1)[0], Rate: track.Rate()}}, render.Options{}, func(b *render.Block) error { meters.Write(b); return nil }); err != nil {
+		t.Fatal(err)
+	}
+	got, want := f.listen(t, whiteNoise()).BelowWith(f.n), meters.Result().BelowWanted(render.FoldBack)
+	if !(math.Abs(got-want) <= foldingWithin) {
+		t.Errorf("%.2f dB below wanted, full run %.2f dB", got, want)
+	}
+}
+
 // decimated renders sound through a chain, takes what of it is linear through a candidate's digital filter, keeps every
 // By-th sample, and leaves the ends out.
 func decimated(t *testing.T, n *circuit.Network, c *corner.Candidate, sound []float64, rate float64) []float64 {

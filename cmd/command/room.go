@@ -226,12 +226,17 @@ func roomStages(n *circuit.Network, r *room.Heard) []roomStage {
 	return list
 }
 
+// Levels above these are not met: the loudest sine in air, and more than any line carries.
+const mostPascals, mostVolts = 1e5, 1e3
+
 // levelAt prints a level at an input in the unit that its owner wrote its full scale in.
 func levelAt(in *chain.Input, x report.Number) string {
 	v, there := x.Value()
 	switch {
 	case !there:
 		return report.Plain(x, 3)
+	case in.Kind != chain.Line && v > mostPascals || v > mostVolts:
+		return "never"
 	case in.Kind != chain.Line:
 		return quantity.Format(quantity.SoundLevel, v)
 	}

@@ -176,11 +176,7 @@ func printSpread(w io.Writer, c *chain.Chain, run *spread.Run, list []recording)
 		}
 		return report.DB(report.Of(x))
 	}
-	const (
-		leastShare = 0.01 // that is told
-		// surely is, in parts of the number of boards, a share that chance gives to a part without influence once in twenty.
-		surely = 4
-	)
+	const leastShare = 0.01 // that is told
 	longest := 0
 	var percentiles, ends, governs [][]string
 	for i := range run.Figures {
@@ -194,7 +190,7 @@ func printSpread(w io.Writer, c *chain.Chain, run *spread.Run, list []recording)
 		ends = append(ends, []string{f.Name, say(f, f.Nominal), say(f, f.Percentile(0)), say(f, f.Percentile(1)), say(f, f.WorstLow.Figure), say(f, f.WorstHigh.Figure)})
 		var parts []string
 		for _, s := range f.Shares[:min(3, len(f.Shares))] {
-			if s.Share >= leastShare && s.Share*float64(run.Boards) >= surely {
+			if s.Share >= leastShare {
 				parts = append(parts, fmt.Sprintf("%s %.0f %%", s.Part, 100*s.Share))
 			}
 		}
