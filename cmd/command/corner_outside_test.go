@@ -17,12 +17,19 @@ func TestEveryPredictedFoldBack(t *testing.T) {
 	f.hold(t, "the demo", func() signals.Track { return tone.Demo() }, foldingCases)
 }
 
-func TestPredictedDecimationOfTheDemo(t *testing.T) {
+func TestEveryPredictedDecimation(t *testing.T) {
 	f := newFolding(t)
 	for _, w := range []corner.Wish{
 		{Keep: 3000, Rates: corner.Common(), Droop: 1, Below: 50},
 		{Keep: 3000, Rates: []float64{16000}, Droop: 1, Below: 40},
 	} {
 		f.holdOversampled(t, "the demo", tone.Demo(), w, 8000)
+	}
+	for _, w := range []corner.Wish{
+		{Keep: 3000, Rates: corner.Common(), Droop: 1, Below: 30},
+		{Keep: 3000, Rates: []float64{32000}, Droop: 1, Below: 40},
+		{Keep: 3400, Rates: []float64{24000}, Droop: 2, Below: 30},
+	} {
+		f.holdOversampled(t, "white noise", whiteNoise(), w, 8000)
 	}
 }

@@ -6,8 +6,8 @@ import (
 	"fmt"
 	"io"
 	"math"
-	"strings"
 	"sync/atomic"
+	"unicode/utf8"
 
 	"github.com/spf13/cobra"
 
@@ -194,7 +194,7 @@ func printSpread(w io.Writer, c *chain.Chain, run *spread.Run, list []recording)
 				parts = append(parts, fmt.Sprintf("%s %.0f %%", s.Part, 100*s.Share))
 			}
 		}
-		governs = append(governs, []string{f.Name, strings.Join(parts, ", ")})
+		governs = append(governs, append([]string{f.Name}, parts...))
 	}
 	t.Table([]string{"boards below", "1 %", "5 %", "50 %", "95 %", "99 %"}, percentiles)
 	t.Line("")
@@ -206,7 +206,16 @@ func printSpread(w io.Writer, c *chain.Chain, run *spread.Run, list []recording)
 	t.Line("")
 	t.Line("Parts that govern, by their share of the variance:")
 	for _, g := range governs {
-		t.Line("  %-*s  %s", longest, g[0], g[1])
+		line := fmt.Sprintf("  %-*s  ", longest, g[0])
+		for i, part := range g[1:] {
+			if i > 0 {
+				part = ", " + part
+			}
+			if utf8.RuneCountInString(line+part) <= 80 {
+				line += part
+			}
+		}
+		t.Line("%s", line)
 	}
 	t.Line("")
 	if len(list) == 0 {
