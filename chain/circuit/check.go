@@ -12,9 +12,10 @@ import (
 )
 
 const (
-	// mostUnknowns is the largest circuit that is solved, in nodes, amplifiers, capsules, diodes and capacitors: time goes with
+	// mostUnknowns is the largest circuit that is solved, in nodes, amplifiers, inputs, diodes and capacitors, which are those of
+	// some thirty amplifier stages: time goes with
 	// the cube of it, memory with the square.
-	mostUnknowns = 1200
+	mostUnknowns = 300
 	// mostGain is the largest coefficient of a transfer function once its frequencies are told against their geometric mean.
 	mostGain = 1e9
 	// slowestPole and fastestPole bound that mean, in Hz.

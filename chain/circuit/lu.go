@@ -16,7 +16,8 @@ func (m matrix) row(i int) []complex128 { return m.a[i*m.size : (i+1)*m.size] }
 
 func (m matrix) clearRow(i int) { clear(m.row(i)) }
 
-// lu is a matrix factored with row pivoting, P·A = L·U. gonum has no complex solve.
+// lu is a matrix factored with row pivoting, P·A = L·U, each row's pivot told against the row's largest entry, so that
+// rows of siemens and rows of volts are alike. gonum has no complex solve.
 type lu struct {
 	matrix
 	pivot []int // row of A that stands in row i
@@ -26,13 +27,17 @@ type lu struct {
 func (f *lu) factor(m matrix) bool {
 	n := m.size
 	f.matrix, f.pivot = m, make([]int, n)
+	largest := make([]float64, n)
 	for i := range f.pivot {
 		f.pivot[i] = i
+		for _, v := range m.row(i) {
+			largest[i] = max(largest[i], size1(v))
+		}
 	}
 	for k := range n {
 		best, at := 0.0, -1
 		for i := k; i < n; i++ {
-			if v := size1(m.a[i*n+k]); v > best {
+			if v := size1(m.a[i*n+k]) / largest[i]; v > best {
 				best, at = v, i
 			}
 		}
@@ -41,6 +46,7 @@ func (f *lu) factor(m matrix) bool {
 		}
 		if at != k {
 			f.pivot[k], f.pivot[at] = f.pivot[at], f.pivot[k]
+			largest[k], largest[at] = largest[at], largest[k]
 			top, other := m.row(k), m.row(at)
 			for j := range top {
 				top[j], other[j] = other[j], top[j]

@@ -48,7 +48,7 @@ func (w *wiring) rejection(owner string, m amplifier.Model) []bilinear.Term {
 	if math.IsInf(m.SupplyRejectionCorner, 1) {
 		return terms
 	}
-	const r = 1e3
+	const r = 1e12 // so large that it loads no supply
 	slope := w.node(owner + " supply slope")
 	c := 1 / (2 * math.Pi * m.SupplyRejection * m.SupplyRejectionCorner * r)
 	w.Capacitors = append(w.Capacitors, Component{Part: chain.Part{Name: owner + " supply slope.c", Unit: chain.Farad, Value: c}, A: w.Supply, B: slope, Virtual: true})
