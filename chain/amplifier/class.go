@@ -61,11 +61,28 @@ func Classes() []string {
 	return names
 }
 
-// Limits returns the limits of the internal source e in V on a supply in V. A datasheet gives the output's swing with
-// a load to mid-supply; e lies beyond it by what the load's current drops across the output resistance:
+// Limits returns the limits of the internal source e in V on a supply in V, with a load in Ω from the output to
+// mid-supply; +Inf: none. A datasheet gives the output's swing with SwingLoad to mid-supply; e lies beyond it by what the
+// load's current drops across the output resistance:
 //
 //	e = limit + Ro·(limit − supply/2)/SwingLoad
-func (m Model) Limits(supply float64) (low, high float64) {
-	behind := func(limit float64) float64 { return limit + m.OutputResistance*(limit-supply/2)/m.SwingLoad }
-	return behind(m.SwingLow), behind(supply - m.SwingHigh)
+//
+// Where that is beyond the rail, what the output stage is short of the rail by is no constant but a resistance, which with
+// SwingLoad leaves the limit: of a divider of the load and
+//
+//	Rs = SwingLoad·(rail − limit)/(limit − supply/2),    e = v + Ro·(v − supply/2)/load
+//
+// v being where the divider puts the output. An output without a load then comes to its rail, and never beyond.
+func (m Model) Limits(supply, load float64) (low, high float64) {
+	middle := supply / 2
+	side := func(limit, rail, outwards float64) float64 {
+		e := limit + m.OutputResistance*(limit-middle)/m.SwingLoad
+		if outwards*(e-rail) <= 0 {
+			return e
+		}
+		inner := m.SwingLoad * (rail - limit) / (limit - middle)
+		v := middle + (rail-middle)/(1+inner/load)
+		return v + m.OutputResistance*(v-middle)/load
+	}
+	return side(m.SwingLow, 0, -1), side(supply-m.SwingHigh, supply, 1)
 }

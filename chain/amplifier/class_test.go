@@ -94,7 +94,7 @@ func TestIdealHasNoLimits(t *testing.T) {
 	if m != want {
 		t.Errorf("%+v, want %+v", m, want)
 	}
-	if low, high := m.Limits(3.3); low != 0 || high != 3.3 {
+	if low, high := m.Limits(3.3, 10e3); low != 0 || high != 3.3 {
 		t.Errorf("its limits are %g and %g", low, high)
 	}
 }
@@ -108,7 +108,7 @@ func TestLimitsGiveTheSwingAtTheLoad(t *testing.T) {
 	for _, name := range Classes() {
 		m, _ := Class(name)
 		for _, supply := range []float64{3.3, 5, 12, 30} {
-			low, high := m.Limits(supply)
+			low, high := m.Limits(supply, m.SwingLoad)
 			share := 1.0
 			if !math.IsInf(m.SwingLoad, 1) {
 				share = m.SwingLoad / (m.SwingLoad + m.OutputResistance)
@@ -124,7 +124,38 @@ func TestLimitsGiveTheSwingAtTheLoad(t *testing.T) {
 	}
 	// By hand: 200 Ω, 10 kΩ, 5 V: 0.02 − 200·2.48/10000 and 3.5 + 200·1/10000.
 	m, _ := Class("bipolar single-supply")
-	if low, high := m.Limits(5); !(math.Abs(low+0.0296) <= rounding*5 && math.Abs(high-3.52) <= rounding*5) {
+	if low, high := m.Limits(5, 10e3); !(math.Abs(low+0.0296) <= rounding*5 && math.Abs(high-3.52) <= rounding*5) {
 		t.Errorf("%g, %g", low, high)
+	}
+}
+
+// Without a load an output comes to its rail at the most, and a heavier load than the datasheet's leaves it less swing.
+func TestLimitsAreWithinTheRails(t *testing.T) {
+	for _, name := range Classes() {
+		m, _ := Class(name)
+		const supply = 5
+		node := func(load float64) (low, high float64) {
+			low, high = m.Limits(supply, load)
+			share := 1 / (1 + m.OutputResistance/load)
+			return supply/2 + (low-supply/2)*share, supply/2 + (high-supply/2)*share
+		}
+		free, top := node(math.Inf(1))
+		if !(free >= -rounding*supply && top <= supply*(1+rounding)) {
+			t.Errorf("%s without a load goes from %g to %g", name, free, top)
+		}
+		if math.IsInf(m.SwingLoad, 1) {
+			continue
+		}
+		low, high := node(m.SwingLoad / 3)
+		if !(low > m.SwingLow && high < supply-m.SwingHigh) {
+			t.Errorf("%s with a heavy load goes from %g to %g", name, low, high)
+		}
+	}
+	// By hand: 20 mV with 10 kΩ to 2.5 V is 10 kΩ·0.02/2.48 = 80.645 Ω to ground; with 1 kΩ it leaves 2.5·80.645/1080.645 V,
+	// and 200 Ω more drop 0.2·(v − 2.5).
+	m, _ := Class("bipolar single-supply")
+	v := 2.5 * 80.64516129032258 / 1080.6451612903226
+	if low, _ := m.Limits(5, 1e3); !(math.Abs(low-(v+0.2*(v-2.5))) <= rounding*5) {
+		t.Errorf("%g", low)
 	}
 }

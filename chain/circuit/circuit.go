@@ -1,6 +1,7 @@
 package circuit
 
 import (
+	"math"
 	"slices"
 
 	"midrail/bilinear"
@@ -49,8 +50,10 @@ type Amplifier struct {
 	Stage            int    // index of the stage; -1 for a bias buffer
 	Model            amplifier.Model
 	Plus, Minus, Out int             // nodes
-	Low, High        float64         // V, limits of the internal source at the nominal supply
+	Load             float64         // Ω, that the output sees at 0 Hz; +Inf: none
+	Low, High        float64         // V, limits of the internal source at the nominal supply, with the load to mid-supply
 	Terms            []bilinear.Term // what else adds to v+ − v−
+	supply           float64         // V
 	// Virtual is set on what stands for no amplifier: the integrators of a transfer function.
 	Virtual bool
 }
@@ -92,7 +95,48 @@ func New(c *chain.Chain) *Network {
 	if cp := c.Converter.PinCapacitor; cp > 0 {
 		w.capacitor(chain.Part{Name: "converter.pin_capacitor", Key: "pin_capacitor", Unit: chain.Farad, Value: cp, Pos: c.Converter.Pos}, w.Output, Ground)
 	}
+	for k := range w.Amplifiers {
+		if a := &w.Amplifiers[k]; !a.Virtual {
+			a.Load = w.load(k)
+			a.limit(c.Supply.Voltage)
+		}
+	}
 	return w.Network
+}
+
+// Reach returns how far the output goes in V with its load to mid-supply, the internal source being at its limits.
+func (a *Amplifier) Reach() (low, high float64) {
+	middle := a.supply / 2
+	at := func(e float64) float64 { return middle + (e-middle)/(1+a.Model.OutputResistance/a.Load) }
+	return at(a.Low), at(a.High)
+}
+
+// limit sets the limits of the internal source on a supply in V.
+func (a *Amplifier) limit(supply float64) {
+	a.supply = supply
+	a.Low, a.High = a.Model.Limits(supply, a.Load)
+}
+
+// load returns what the k-th amplifier's output sees at 0 Hz in Ω, with every other loop closed: by the divider that it
+// is with the output resistance. +Inf where there is no output resistance to tell by, or no load.
+func (n *Network) load(k int) float64 {
+	a := &n.Amplifiers[k]
+	m := n.equations(0)
+	row := len(n.Nodes) - 1 + k
+	m.clearRow(row)
+	m.add(row, row, 1)
+	var e lu
+	if a.Model.OutputResistance == 0 || !e.factor(m) { // where a node has no voltage at rest, that is told later
+		return math.Inf(1)
+	}
+	b := make([]complex128, m.size)
+	b[row] = 1
+	e.solve(b)
+	share := real(b[a.Out-1])
+	if !(share > 0 && share < 1) {
+		return math.Inf(1)
+	}
+	return a.Model.OutputResistance * share / (1 - share)
 }
 
 // StageNode returns the output node of the chain's i-th stage.
@@ -269,7 +313,7 @@ func (n *Network) Varied(resistors, capacitors []float64, gainBandwidth map[stri
 			a.Model.GainBandwidth *= by
 		}
 		if !a.Virtual {
-			a.Low, a.High = a.Model.Limits(c.Supply.Voltage)
+			a.limit(c.Supply.Voltage)
 		}
 	}
 	return &other

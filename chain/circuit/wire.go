@@ -30,8 +30,7 @@ func (w *wiring) capacitor(p chain.Part, a, b int) {
 
 func (w *wiring) amplifier(owner string, stage int, entry string, plus, minus, out int) {
 	a := w.Chain.AmplifierNamed(entry)
-	low, high := a.Model.Limits(w.Chain.Supply.Voltage)
-	one := Amplifier{Name: owner, Entry: entry, Stage: stage, Model: a.Model, Plus: plus, Minus: minus, Out: out, Low: low, High: high}
+	one := Amplifier{Name: owner, Entry: entry, Stage: stage, Model: a.Model, Plus: plus, Minus: minus, Out: out}
 	one.Terms = w.rejection(owner, a.Model)
 	w.Amplifiers = append(w.Amplifiers, one)
 }

@@ -109,7 +109,7 @@ func node(n *circuit.Network, at bilinear.Operating, i int, name string) Node {
 		if a.Out != i {
 			continue
 		}
-		x.Low, x.High = a.Model.SwingLow, supply-a.Model.SwingHigh
+		x.Low, x.High = a.Reach()
 		low, high := a.Model.CommonModeLow, supply-a.Model.CommonModeHigh
 		plus := at.Volts[a.Plus]
 		switch e := at.Sources[k]; {

@@ -72,7 +72,8 @@ func Of(n *circuit.Network, r *Heard) []Stage {
 		if a.Virtual {
 			continue
 		}
-		s := Stage{Name: a.Name, LimitLow: a.Model.SwingLow, LimitHigh: n.Chain.Supply.Voltage - a.Model.SwingHigh}
+		s := Stage{Name: a.Name}
+		s.LimitLow, s.LimitHigh = a.Reach()
 		s.Down, s.Up = left(x.Rest-x.LimitLow, x.Rest-x.Lowest), left(x.LimitHigh-x.Rest, x.Highest-x.Rest)
 		rest := r.At.Volts[a.Out]
 		s.Lowest, s.Highest = rest+(x.Lowest-x.Rest)*ratio(s.LimitLow-rest, x.LimitLow-x.Rest), rest+(x.Highest-x.Rest)*ratio(s.LimitHigh-rest, x.LimitHigh-x.Rest)

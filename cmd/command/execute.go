@@ -523,7 +523,8 @@ func stageOf(n *circuit.Network, r *render.Result, i int) report.Stage {
 			continue
 		}
 		if a.Out == n.StageNode(i) {
-			stage.LimitLowV, stage.LimitHighV = of(a.Model.SwingLow), of(n.Chain.Supply.Voltage-a.Model.SwingHigh)
+			low, high := a.Reach()
+			stage.LimitLowV, stage.LimitHighV = of(low), of(high)
 		}
 		owners = append(owners, a.Name)
 		if left := r.Amplifiers[k].Room(); !(left > room) {
