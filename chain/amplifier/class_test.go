@@ -133,7 +133,7 @@ func TestLimitsGiveTheSwingAtTheLoad(t *testing.T) {
 func TestLimitsAreWithinTheRails(t *testing.T) {
 	for _, name := range Classes() {
 		m, _ := Class(name)
-		const supply = 5
+		const supply = 5.0
 		node := func(load float64) (low, high float64) {
 			low, high = m.Limits(supply, load)
 			share := 1 / (1 + m.OutputResistance/load)
