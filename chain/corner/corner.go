@@ -25,7 +25,8 @@ import (
 	"midrail/signals/level"
 )
 
-// Filter returns the run of low-pass stages in front of the converter, the last one first, and the node that drives it.
+// Filter returns the run of low-pass stages in front of the converter, the last one first, and what drives it. A follower
+// that does nothing but keep an RC from being loaded is of it.
 func Filter(n *circuit.Network) (stages []string, from string) {
 	from = n.Chain.Converter.From
 	for {
@@ -35,6 +36,12 @@ func Filter(n *circuit.Network) (stages []string, from string) {
 		}
 		switch s.Kind.Name {
 		case "sallen-key low-pass", "multiple-feedback low-pass", "rc low-pass":
+			stages, from = append(stages, s.Name), s.From[0]
+		case "follower":
+			before := n.Chain.StageNamed(s.From[0])
+			if len(s.Parts) > 0 || before == nil || before.Kind.Name != "rc low-pass" {
+				return stages, from
+			}
 			stages, from = append(stages, s.Name), s.From[0]
 		default:
 			return stages, from

@@ -109,7 +109,7 @@ type Sensitivity struct {
 const (
 	leastOhms, mostOhms     = 1e3, 200e3
 	leastFarads, mostFarads = 47e-12, 220e-9
-	mostSpread              = 100
+	mostSpread              = 1000 // a unity-gain section takes 4Q²
 )
 
 // Find returns the best choices, at most so many, the nearest first.

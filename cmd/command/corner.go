@@ -156,6 +156,7 @@ type cornerRun struct {
 // cornerOversamp compares a converter at the rate that is handed on with a faster one and a digital low-pass behind it.
 type cornerOversamp struct {
 	HandedOn report.Number  `json:"handed_on_hz"`
+	Fastest  report.Number  `json:"fastest_hz"` // that was tried
 	Direct   cornerChoice   `json:"direct"`
 	Meets    bool           `json:"direct_meets"`
 	Over     *cornerDigital `json:"oversampled"` // null: none saves an amplifier
@@ -211,18 +212,17 @@ func cornerOf(ctx context.Context, n *circuit.Network, text string, set []string
 	if len(all) == 0 {
 		return nil, usageError{fmt.Errorf("no rate holds a band up to %s: a rate is at least twice that", quantity.Format(quantity.Frequency, w.Keep))}
 	}
-	best, meets := corner.Recommend(all, w)
-	out := &cornerResult{Tried: len(all), Best: choiceOf(best, list), Meets: meets, Keep: w.Keep}
+	replaces, from := corner.Filter(n)
+	best, meets, stages, err := recommendation(n, all, w, replaces, from)
+	if err != nil {
+		return nil, err
+	}
+	out := &cornerResult{Tried: len(all), Best: choiceOf(best, list), Meets: meets, Replaces: replaces, Stages: stages, Keep: w.Keep}
 	for _, c := range corner.Efficient(all, w) {
 		out.Efficient = append(out.Efficient, choiceOf(c, list))
 	}
 	if out.Oversampling, err = oversamplingOf(ctx, n, sounds, list, w); err != nil {
 		return nil, during(err, "comparing with oversampling, %d candidates being judged", len(all))
-	}
-	var from string
-	out.Replaces, from = corner.Filter(n)
-	if out.Stages, err = filterStages(n, best, out.Replaces, from); err != nil {
-		return nil, err
 	}
 	out.File = rewritten(text, out.Replaces, out.Stages, best.Rate)
 	c, err := chain.Read(n.Chain.File+" with the recommended filter", []byte(out.File), kept(set, out.Replaces))
@@ -246,6 +246,26 @@ func cornerOf(ctx context.Context, n *circuit.Network, text string, set []string
 	}
 	return out, nil
 }
+
+// recommendation is the best candidate that preferred values make, and its stages.
+func recommendation(n *circuit.Network, all []corner.Candidate, w corner.Wish, replaces []string, from string) (corner.Candidate, bool, []string, error) {
+	for left := slices.Clone(all); ; {
+		best, meets := corner.Recommend(left, w)
+		stages, err := filterStages(n, best, replaces, from)
+		if !errors.Is(err, errNoValues) {
+			return best, meets, stages, err
+		}
+		same := func(c corner.Candidate) bool {
+			return c.Order == best.Order && c.Alignment == best.Alignment && c.Corner == best.Corner
+		}
+		if left = slices.DeleteFunc(left, same); len(left) == 0 {
+			return best, false, nil, refusal{err}
+		}
+	}
+}
+
+// errNoValues says that no preferred values make a filter.
+var errNoValues = errors.New("no preferred values make it")
 
 // kept is those of --set that the recommended filter and its converter leave standing.
 func kept(set, replaces []string) []string {
@@ -278,7 +298,7 @@ func oversamplingOf(ctx context.Context, n *circuit.Network, sounds []*corner.So
 		return nil, err
 	}
 	of := report.Of
-	out := &cornerOversamp{HandedOn: of(handedOn), Direct: choiceOf(direct, list), Meets: meets}
+	out := &cornerOversamp{HandedOn: of(handedOn), Fastest: of(slices.Max(w.Rates)), Direct: choiceOf(direct, list), Meets: meets}
 	if over != nil {
 		out.Over = &cornerDigital{choiceOf(*over, list), over.By, len(over.Taps), of(w.Keep), of(handedOn / 2), of(over.Attenuation), of(over.MultiplyAdds(over.Rate))}
 	}
@@ -339,7 +359,7 @@ func filterStages(n *circuit.Network, c corner.Candidate, replaces []string, fro
 		}
 		found := parts.Find(wish, 1)
 		if len(found) == 0 {
-			return nil, refusal{fmt.Errorf("no preferred values make a section of %s with a Q of %.2f", quantity.Format(quantity.Frequency, wish.F0), wish.Q)}
+			return nil, fmt.Errorf("a section of %s with a Q of %.2f: %w", quantity.Format(quantity.Frequency, wish.F0), wish.Q, errNoValues)
 		}
 		v := found[0].Values
 		own := name
@@ -388,6 +408,7 @@ func rewritten(text string, without, stages []string, rate float64) string {
 	for _, block := range blocks(text) {
 		switch header := strings.TrimSpace(block[0]); {
 		case strings.HasPrefix(header, "[[stage]]") && named(block, without):
+			out = append(out, remarks(block)...)
 			continue
 		case strings.HasPrefix(header, "[converter]"):
 			for _, s := range stages {
@@ -423,6 +444,21 @@ func blocks(text string) [][]string {
 	return list
 }
 
+// remarks is what stands below a table's last key: it is about the next table.
+func remarks(block []string) []string {
+	last := len(block)
+	for last > 0 {
+		if line := strings.TrimSpace(block[last-1]); line != "" && !strings.HasPrefix(line, "#") {
+			break
+		}
+		last--
+	}
+	if below := block[last:]; slices.ContainsFunc(below, func(line string) bool { return strings.TrimSpace(line) != "" }) {
+		return below
+	}
+	return nil
+}
+
 // named tells whether a stage's block is of one of the names.
 func named(block, names []string) bool {
 	for _, line := range block {
@@ -431,7 +467,7 @@ func named(block, names []string) bool {
 			continue
 		}
 		for _, n := range names {
-			if strings.HasPrefix(strings.TrimSpace(value), strconv.Quote(n)) {
+			if v := strings.TrimSpace(value); strings.HasPrefix(v, strconv.Quote(n)) || strings.HasPrefix(v, "'"+n+"'") {
 				return true
 			}
 		}
@@ -552,7 +588,10 @@ func amplifierWords(count int) string {
 
 func droopWords(droop report.Number, keep float64) string {
 	v, _ := droop.Value()
-	if v < 0 {
+	switch {
+	case math.Abs(v) < 0.05:
+		return "is flat to " + report.Hz(report.Of(keep))
+	case v < 0:
 		return fmt.Sprintf("lifts %s by %s", report.Hz(report.Of(keep)), report.DB(report.Of(-v)))
 	}
 	return fmt.Sprintf("droops by %s at %s", report.DB(droop), report.Hz(report.Of(keep)))
@@ -565,7 +604,12 @@ func (o *cornerOversamp) print(t *report.Text, keep float64) {
 		direct = "no order up to 8 does what is asked when converting at that rate"
 	}
 	if o.Over == nil {
-		t.Words("To hand on %s, %s; converting faster with a digital low-pass behind would save no amplifier.", rate, direct)
+		faster := "no rate that was tried is twice as fast"
+		on, _ := o.HandedOn.Value()
+		if top, _ := o.Fastest.Value(); top >= 2*on {
+			faster = fmt.Sprintf("converting faster, up to %s, with a digital low-pass behind would save no amplifier", report.Hz(o.Fastest))
+		}
+		t.Words("To hand on %s, %s; %s.", rate, direct, faster)
 		return
 	}
 	c := o.Over

@@ -3,12 +3,14 @@ package command
 import (
 	"context"
 	"math"
+	"slices"
 	"strings"
 	"testing"
 
 	"gonum.org/v1/gonum/dsp/fourier"
 
 	"midrail/chain"
+	"midrail/chain/alignment"
 	"midrail/chain/circuit"
 	"midrail/chain/corner"
 	"midrail/chain/render"
@@ -132,6 +134,30 @@ func TestPredictedFoldBackIsTheFullRuns(t *testing.T) {
 	f := newFolding(t)
 	f.hold(t, "white noise", whiteNoise, foldingCases[:6])
 	f.hold(t, "the demo", func() signals.Track { return tone.Demo() }, foldingCases[:1])
+}
+
+// A recommended filter of odd order is found again whole, with the follower that keeps its RC from being loaded.
+func TestFilterTakesItsBuffer(t *testing.T) {
+	f := newFolding(t)
+	n := f.with(t, corner.Candidate{Rate: 12000, Order: 3, Alignment: alignment.Butterworth, Corner: 3000})
+	if stages, from := corner.Filter(n); !slices.Equal(stages, []string{"filter", "filter 1 buffer", "filter 1"}) || from != "capsule amp" {
+		t.Errorf("the filter is %q from %q", stages, from)
+	}
+}
+
+// Sections of the highest Q that are recommended can be bought.
+func TestSteepestFilterHasValues(t *testing.T) {
+	f := newFolding(t)
+	f.with(t, corner.Candidate{Rate: 12000, Order: alignment.Highest, Alignment: alignment.Chebyshev, Corner: 3300})
+}
+
+// What stands below a stage that is taken out stays: it is about the next table.
+func TestRewrittenKeepsRemarks(t *testing.T) {
+	text := "[[stage]]\nname = 'old'\nr = 1 # ohm\n\n# The converter.\n[converter]\nrate = 8000\nbits = 10"
+	got := rewritten(text, []string{"old"}, []string{"[[stage]]\nname = \"new\""}, 16000)
+	if want := "\n# The converter.\n[[stage]]\nname = \"new\"\n\n[converter]\nfrom = \"new\"\nrate = 16000\nbits = 10"; got != want {
+		t.Errorf("rewritten:\n%s\nwant:\n%s", got, want)
+	}
 }
 
 // What spread takes for fold-back of the nominal board is the full run's.
