@@ -11,7 +11,9 @@ const warpTolerance = 1e-10
 
 // A stepped circuit responds at f exactly as the analogue one does at the warped frequency: H_d(f) = H_a((fs/π)·tan(πf/fs)),
 // the property that defines the bilinear transform (Oppenheim, Schafer, Discrete-Time Signal Processing, ch. 7). The
-// analogue responses are closed forms: 1/(1 + sRC), and for the unity-gain Sallen-Key 1/(1 + s·C2(R1+R2) + s²·R1R2C1C2).
+// analogue responses are closed forms: 1/(1 + sRC), for the unity-gain Sallen-Key 1/(1 + s·C2(R1+R2) + s²·R1R2C1C2), for an
+// inverting stage −Zf/Zin, and for the multiple-feedback low-pass, by Kirchhoff's current law at its two inner nodes,
+// −1/(R1R3C1C2) / (s² + s·(1/R1+1/R2+1/R3)/C2 + 1/(R2R3C1C2)).
 func TestSteppedCircuitsRespondAtTheWarpedFrequency(t *testing.T) {
 	const rate = 48000.
 	inf := math.Inf(1)
@@ -26,6 +28,15 @@ func TestSteppedCircuitsRespondAtTheWarpedFrequency(t *testing.T) {
 		{"Sallen-Key", Network{Nodes: 6, Resistors: []Branch{{2, 3, 8.2e3}, {3, 4, 8.2e3}}, Capacitors: []Branch{{3, 5, 3.3e-9}, {4, Ground, 1.5e-9}}, Drives: []int{1, 2},
 			Amplifiers: []Amplifier{{Plus: 4, Minus: 5, Out: 5, GainBandwidth: inf, OpenLoopGain: inf, SlewRate: inf, HighRail: 1, LowRail: Ground, HighMargin: -10, LowMargin: -10}}}, 5,
 			func(s complex128) complex128 { return 1 / (1 + s*1.5e-9*16.4e3 + s*s*8.2e3*8.2e3*3.3e-9*1.5e-9) }},
+		{"inverting", Network{Nodes: 6, Resistors: []Branch{{3, 4, 10e3}, {4, 5, 33e3}}, Capacitors: []Branch{{2, 3, 100e-9}, {4, 5, 470e-12}}, Drives: []int{1, 2},
+			Amplifiers: []Amplifier{{Plus: Ground, Minus: 4, Out: 5, GainBandwidth: inf, OpenLoopGain: inf, SlewRate: inf, HighRail: 1, LowRail: Ground, HighMargin: -10, LowMargin: -10}}}, 5,
+			func(s complex128) complex128 { return -1 / (1/complex(33e3, 0) + s*470e-12) / (10e3 + 1/(s*100e-9)) }},
+		{"multiple-feedback", Network{Nodes: 6, Resistors: []Branch{{2, 3, 10e3}, {3, 5, 22e3}, {3, 4, 5.6e3}}, Capacitors: []Branch{{4, 5, 470e-12}, {3, Ground, 4.7e-9}}, Drives: []int{1, 2},
+			Amplifiers: []Amplifier{{Plus: Ground, Minus: 4, Out: 5, GainBandwidth: inf, OpenLoopGain: inf, SlewRate: inf, HighRail: 1, LowRail: Ground, HighMargin: -10, LowMargin: -10}}}, 5,
+			func(s complex128) complex128 {
+				const r1, r2, r3, c1, c2 = 10e3, 22e3, 5.6e3, 470e-12, 4.7e-9
+				return -1 / (r1 * r3 * c1 * c2) / (s*s + s*(1/r1+1/r2+1/r3)/c2 + 1/(r2*r3*c1*c2))
+			}},
 	} {
 		compiled, err := Compile(c.network, Operating{Volts: make([]float64, c.network.Nodes), Sources: make([]float64, c.network.elements())}, rate, []int{c.out})
 		if err != nil {

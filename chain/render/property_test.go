@@ -27,6 +27,10 @@ var (
 // renderedEvery is how many chains there are for one that is rendered, which takes as long as some hundred others.
 const renderedEvery = 25
 
+// once are the seeds of chains that failed once: 2842 and 9467 had no pieces that the search of its time found, 404 had a
+// response that was off by 2e-5, and of 114594 the amplifiers' equations have no one solution.
+var once = []uint64{404, 2842, 9467, 114594}
+
 // TestRandomChains holds chains of every stage kind in any order to what every chain must do. One that fails is printed
 // as a chain file.
 func TestRandomChains(t *testing.T) {
@@ -40,6 +44,9 @@ func TestRandomChains(t *testing.T) {
 				}
 			}
 		})
+	}
+	for _, seed := range once {
+		seeds <- seed
 	}
 	for i := range uint64(*chains) {
 		seeds <- *firstSeed + i

@@ -21,7 +21,6 @@ type chainWriter struct {
 	draw                 *rand.Rand
 	text                 strings.Builder
 	impedance, frequency float64
-	amplifiers           int
 }
 
 func (w *chainWriter) line(format string, a ...any) { fmt.Fprintf(&w.text, format+"\n", a...) }
