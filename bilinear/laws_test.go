@@ -153,7 +153,7 @@ func TestLiftedBlockIsItsSteps(t *testing.T) {
 			size = math.Max(size, math.Abs(v))
 		}
 		for i := range want {
-			if !(math.Abs(got[i]-want[i]) <= 1e-11*size+1e-14) {
+			if !(math.Abs(got[i]-want[i]) <= 1e-12*size+1e-15) {
 				t.Fatalf("row %d: %g, stepped %g", i, got[i], want[i])
 			}
 		}
