@@ -68,8 +68,12 @@ type File struct {
 	frames int64
 	read   int64 // frames
 	block  []byte
+	decode Decoder
 	note   string
 }
+
+// Decoder fills dst with the samples that a block of whole frames is.
+type Decoder func(dst []float64, block []byte) error
 
 // New reads samples of a format from src, from its start to its end; name is what faults call it. The error is a
 // *[signals.FormatError] where there is not one frame.
@@ -82,7 +86,7 @@ func New(name string, src io.ReadSeeker, f Format) (*File, error) {
 		return nil, err
 	}
 	width := int64(f.Channels * f.Bits / 8)
-	r := Part(name, src, f, size/width)
+	r := Part(name, src, f, size/width, nil)
 	if r.frames == 0 {
 		return nil, &signals.FormatError{File: name, At: "byte 0", Text: "there is not one frame of sound in it", Remedy: "record again, or give its format with --raw"}
 	}
@@ -92,10 +96,13 @@ func New(name string, src io.ReadSeeker, f Format) (*File, error) {
 	return r, nil
 }
 
-// Part reads a number of frames from src, as they lie within a file of another kind. That they are not all there is an
-// error of reading.
-func Part(name string, src io.Reader, f Format, frames int64) *File {
-	return &File{name: name, src: bufio.NewReaderSize(src, 1<<16), format: f, frames: frames}
+// Part reads a number of frames from src, as they lie within a file of another kind, by a decoder; nil: that of the
+// format. That they are not all there is an error of reading.
+func Part(name string, src io.Reader, f Format, frames int64, decode Decoder) *File {
+	if decode == nil {
+		decode = f.decode
+	}
+	return &File{name: name, src: bufio.NewReaderSize(src, 1<<16), format: f, frames: frames, decode: decode}
 }
 
 // Rate returns the rate in Hz.
@@ -139,14 +146,16 @@ func (r *File) ReadFrames(dst []float64) (int, error) {
 			}
 			return done, fmt.Errorf("%s: reading frame %d: %w", r.name, r.read, err)
 		}
-		r.format.decode(dst[done*width:(done+frames)*width], r.block)
+		if err := r.decode(dst[done*width:(done+frames)*width], r.block); err != nil {
+			return done, fmt.Errorf("%s: decoding frame %d: %w", r.name, r.read, err)
+		}
 		done, r.read = done+frames, r.read+int64(frames)
 	}
 	return done, nil
 }
 
 // decode fills dst with the samples of b.
-func (f Format) decode(dst []float64, b []byte) {
+func (f Format) decode(dst []float64, b []byte) error {
 	size, scale := f.Bits/8, math.Ldexp(1, 1-f.Bits)
 	step, most := 1, size-1 // towards the most significant byte, which is the last
 	if f.Big {
@@ -170,4 +179,5 @@ func (f Format) decode(dst []float64, b []byte) {
 		}
 		dst[i] = float64(int64(code)>>(64-f.Bits)) * scale
 	}
+	return nil
 }

@@ -118,7 +118,7 @@ func TestMemory(t *testing.T) {
 // A file that becomes shorter while it is read is no file that ends.
 func TestBecomesShorter(t *testing.T) {
 	for _, left := range []int{0, 3, 4 * blockFrames, 4*blockFrames + 1} {
-		r := Part("x", bytes.NewReader(make([]byte, left)), Format{Kind: 's', Bits: 16, Rate: 8000, Channels: 2}, 10*blockFrames)
+		r := Part("x", bytes.NewReader(make([]byte, left)), Format{Kind: 's', Bits: 16, Rate: 8000, Channels: 2}, 10*blockFrames, nil)
 		n, err := r.ReadFrames(make([]float64, 2*10*blockFrames))
 		if n != left/(4*blockFrames)*blockFrames || !errors.Is(err, io.ErrUnexpectedEOF) || errors.Is(err, io.EOF) {
 			t.Errorf("%d bytes left: %d frames, %v", left, n, err)

@@ -9,6 +9,9 @@ import (
 	"math"
 	"os"
 
+	"github.com/go-audio/audio"
+	"github.com/go-audio/wav"
+
 	"midrail/signals"
 	"midrail/signals/raw"
 )
@@ -62,7 +65,58 @@ func New(name string, src io.ReadSeeker) (*File, error) {
 	if _, err := src.Seek(h.data, io.SeekStart); err != nil {
 		return nil, err
 	}
-	return &File{File: raw.Part(name, src, h.format, h.frames), note: h.note}, nil
+	var decode raw.Decoder // floating-point samples the library reads as integers
+	if h.format.Kind != 'f' {
+		decode = (&integers{format: h.format}).decode
+	}
+	return &File{File: raw.Part(name, src, h.format, h.frames, decode), note: h.note}, nil
+}
+
+// integers decodes blocks of integer samples by the library. It gets a block alone, behind a header that says what was
+// found, for it trusts what a file says of itself.
+type integers struct {
+	format raw.Format
+	file   []byte
+	buffer audio.IntBuffer
+}
+
+func (d *integers) decode(dst []float64, block []byte) error {
+	f := d.format
+	le := binary.LittleEndian
+	align := f.Channels * f.Bits / 8
+	h := append(d.file[:0], "RIFF"...)
+	h = le.AppendUint32(h, uint32(len(block)+36))
+	h = append(h, "WAVEfmt "...)
+	h = le.AppendUint32(h, 16)
+	h = le.AppendUint16(h, tagPCM)
+	h = le.AppendUint16(h, uint16(f.Channels))
+	h = le.AppendUint32(h, uint32(f.Rate))
+	h = le.AppendUint32(h, uint32(f.Rate)*uint32(align))
+	h = le.AppendUint16(h, uint16(align))
+	h = le.AppendUint16(h, uint16(f.Bits))
+	h = append(h, "data"...)
+	h = le.AppendUint32(h, uint32(len(block)))
+	d.file = append(h, block...)
+	if cap(d.buffer.Data) < len(dst) {
+		d.buffer.Data = make([]int, len(dst))
+	}
+	d.buffer.Data = d.buffer.Data[:len(dst)]
+	n, err := wav.NewDecoder(bytes.NewReader(d.file)).PCMBuffer(&d.buffer)
+	if err != nil {
+		return err
+	}
+	if n != len(dst) {
+		return fmt.Errorf("%d of %d samples", n, len(dst))
+	}
+	middle := 0
+	if f.Kind == 'u' {
+		middle = 1 << (f.Bits - 1)
+	}
+	scale := math.Ldexp(1, 1-f.Bits)
+	for i, code := range d.buffer.Data {
+		dst[i] = float64(code-middle) * scale
+	}
+	return nil
 }
 
 // Note returns a word about what is missing from the file, or "".

@@ -3,8 +3,12 @@ package wav
 import (
 	"bufio"
 	"encoding/binary"
+	"errors"
 	"io"
 	"math"
+
+	"github.com/go-audio/audio"
+	"github.com/go-audio/wav"
 )
 
 // writer writes a file: its header, samples, and at the end the header again with the lengths. A file of 4 GiB or more
@@ -21,7 +25,6 @@ type writer struct {
 
 func (w *writer) start(file io.WriteSeeker, tag uint16, rate float64, channels, bits int) {
 	*w = writer{file: file, buffer: bufio.NewWriterSize(file, 1<<16), tag: tag, rate: uint32(math.Round(rate)), channels: channels, bits: bits}
-	w.buffer.Write(w.header()) // what fails here fails again at the next
 }
 
 // header returns the header of the frames written so far, whose length does not depend on them.
@@ -73,13 +76,6 @@ func (w *writer) header() []byte {
 	return size(append(h, "data"...), data)
 }
 
-// put writes the block, of a number of frames.
-func (w *writer) put(frames int) error {
-	w.frames += int64(frames)
-	_, err := w.buffer.Write(w.block)
-	return err
-}
-
 // Close writes the lengths into the header, and leaves the file, which it does not close, at its end.
 func (w *writer) Close() error {
 	if w.frames*int64(w.channels*w.bits/8)%2 != 0 {
@@ -98,8 +94,12 @@ func (w *writer) Close() error {
 	return err
 }
 
-// IntegerWriter writes integer codes.
-type IntegerWriter struct{ writer }
+// IntegerWriter writes integer codes, by the library.
+type IntegerWriter struct {
+	writer
+	encoder *wav.Encoder
+	codes   audio.IntBuffer
+}
 
 // NewIntegerWriter starts a file of integer codes of 16 or 24 bits at a rate in Hz, which the header holds rounded to
 // whole hertz. Close ends it; file itself is not closed.
@@ -109,6 +109,10 @@ func NewIntegerWriter(file io.WriteSeeker, rate float64, channels, bits int) *In
 	}
 	w := &IntegerWriter{}
 	w.start(file, tagPCM, rate, channels, bits)
+	// The library makes room for a minute of sound by rate and channels; at 1 Hz and one it does not.
+	w.encoder = wav.NewEncoder(&behindHeader{writer: &w.writer}, 1, bits, 1, tagPCM)
+	w.encoder.SampleRate, w.encoder.NumChans = int(w.rate), channels
+	w.codes = audio.IntBuffer{Format: &audio.Format{NumChannels: channels, SampleRate: int(w.rate)}, SourceBitDepth: bits}
 	return w
 }
 
@@ -117,19 +121,50 @@ func (w *IntegerWriter) Write(codes []int32) error {
 	if len(codes)%w.channels != 0 {
 		panic("wav: not a whole number of frames")
 	}
-	top := int32(1)<<(w.bits-1) - 1
-	w.block = w.block[:0]
+	top := 1<<(w.bits-1) - 1
+	w.codes.Data = w.codes.Data[:0]
 	for _, c := range codes {
-		c = min(max(c, -top-1), top)
-		w.block = append(w.block, byte(c), byte(c>>8))
-		if w.bits == 24 {
-			w.block = append(w.block, byte(c>>16))
-		}
+		w.codes.Data = append(w.codes.Data, min(max(int(c), -top-1), top))
 	}
-	return w.put(len(codes) / w.channels)
+	err := w.encoder.Write(&w.codes)
+	w.frames += int64(len(codes) / w.channels)
+	return err
 }
 
-// FloatWriter writes 32-bit floating-point samples of one channel.
+// Close writes the lengths into the header, and leaves the file, which it does not close, at its end.
+func (w *IntegerWriter) Close() error {
+	if w.encoder.WrittenBytes == 0 { // the library's header comes with the first samples
+		if err := w.Write(nil); err != nil {
+			return err
+		}
+	}
+	return w.writer.Close()
+}
+
+// behindHeader is what the library writes into. Its header, which has no room for the lengths of a file of 4 GiB, is left
+// out for that of the writer; and so is its Close, which would seek.
+type behindHeader struct {
+	*writer
+	skipped int // bytes of the library's header
+}
+
+// libraryHeader is the length of the library's header.
+const libraryHeader = 44
+
+func (b *behindHeader) Write(p []byte) (int, error) {
+	skip := min(libraryHeader-b.skipped, len(p))
+	if b.skipped += skip; skip > 0 && b.skipped == libraryHeader {
+		b.buffer.Write(b.header()) // what fails here fails again at the next
+	}
+	_, err := b.buffer.Write(p[skip:])
+	return len(p), err
+}
+
+// Seek is what only the library's Close asks for.
+func (b *behindHeader) Seek(int64, int) (int64, error) { return 0, errors.ErrUnsupported }
+
+// FloatWriter writes 32-bit floating-point samples of one channel. The library's encoder writes no fact chunk, which the
+// format asks for, and no more than a frame at a time.
 type FloatWriter struct{ writer }
 
 // NewFloatWriter starts a file at a rate in Hz, which the header holds rounded to whole hertz. Close ends it; file itself
@@ -137,6 +172,7 @@ type FloatWriter struct{ writer }
 func NewFloatWriter(file io.WriteSeeker, rate float64) *FloatWriter {
 	w := &FloatWriter{}
 	w.start(file, tagFloat, rate, 1, 32)
+	w.buffer.Write(w.header()) // what fails here fails again at the next
 	return w
 }
 
@@ -146,5 +182,7 @@ func (w *FloatWriter) Write(samples []float64) error {
 	for _, x := range samples {
 		w.block = binary.LittleEndian.AppendUint32(w.block, math.Float32bits(float32(x)))
 	}
-	return w.put(len(samples))
+	w.frames += int64(len(samples))
+	_, err := w.buffer.Write(w.block)
+	return err
 }
