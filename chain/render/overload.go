@@ -115,8 +115,12 @@ type watcher struct {
 }
 
 // touch tells that the limit held at a step that stands for several up to it, and by which ratio the linear chain would
-// have passed it.
+// have passed it; what comes before the tracks' first sample does not count.
 func (w *watcher) touch(step int64, ratio float64, several int64) {
+	if step < 0 {
+		return
+	}
+	several = min(several, step+1)
 	w.Steps += several
 	if w.scope != nil {
 		w.scope.note(w.owner, w.kind, step, ratio)
@@ -138,7 +142,7 @@ func (w *watcher) close() {
 	}
 	w.open = false
 	e := Event{Owner: w.owner, Kind: w.kind, From: float64(w.first) * w.dt, To: float64(w.last+1) * w.dt}
-	if w.ratio > 1 {
+	if w.ratio > 1 && !math.IsInf(w.ratio, 1) { // infinite where the chain rests on the limit
 		e.Over = 20 * math.Log10(w.ratio)
 	}
 	if w.Count == 0 {

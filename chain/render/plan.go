@@ -30,8 +30,9 @@ func (p Plan) baseRate() float64 { return p.Rate / float64(int64(1)<<p.Doublings
 const (
 	// accuracy is the largest error of the stepped response that a run accepts, in dB.
 	accuracy = 0.002
-	// leastRate is the lowest internal rate in Hz: there an overloaded chain of bipolar amplifiers is exact to −115 dB of
-	// swing at 1 kHz, −105 dB at 3 kHz and −99 dB at 9 kHz.
+	// leastRate is the lowest internal rate in Hz: there a chain of bipolar amplifiers that run into their rails is exact to
+	// −115 dB of swing at 1 kHz, −105 dB at 3 kHz and −99 dB at 9 kHz; one that slews through half of each period to −96 dB
+	// at 3 kHz and −75 dB at 9 kHz.
 	leastRate = 6e6
 	// mostRate is the highest internal rate in Hz that accuracy is looked for at: a sharp resonance's error is told instead.
 	mostRate = 200e6

@@ -89,7 +89,7 @@ func newWatchers(n *circuit.Network, at bilinear.Operating, indexOf map[int]int,
 // touched notes which limits hold at a step that stands for several. By how much the linear run passes them is told by
 // the nearer ones, as they are numbered in the block, of its instants at the base rate.
 func (w *watchers) touched(s *simulator, near int, step, several int64) {
-	w.union += several
+	w.union += max(0, min(several, step+1)) // from the tracks' first sample on
 	near = min(near, s.grid.base-1)
 	linear := func(q int) float64 {
 		x, _ := s.read(q)
