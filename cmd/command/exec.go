@@ -62,7 +62,7 @@ numbers: what clipped and when, what folded back, how much room is left.`,
 	root.SetOut(s.out)
 	root.SetErr(s.err)
 	root.SetFlagErrorFunc(func(_ *cobra.Command, err error) error { return usageError{err} })
-	root.AddCommand(newRun(s), newResponse(s), newRest(s), newNoise(s), newRipple(s), newParts(s), newRoom(s), newCorner(s), newSpread(s), newTracks(s), newNew(s))
+	root.AddCommand(newRun(s), newResponse(s), newRest(s), newNoise(s), newRipple(s), newParts(s), newRoom(s), newCorner(s), newSpread(s), newTracks(s), newNew(s), newGather(s))
 	return root
 }
 
@@ -98,11 +98,14 @@ func (s streams) status(err error) int {
 	var usage usageError
 	var refused refusal
 	var stopped interrupted
+	var said told
 	switch {
 	case err == nil:
 		return Done
 	case errors.Is(err, errBroken):
 		return Broken
+	case errors.As(err, &said):
+		return said.status
 	case errors.As(err, &faults):
 		fmt.Fprintln(s.err, faults)
 		return WrongInput

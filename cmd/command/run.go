@@ -1,11 +1,11 @@
 package command
 
 import (
+	"cmp"
 	"context"
 	_ "embed"
 	"errors"
 	"fmt"
-	"io"
 	"path/filepath"
 	"slices"
 	"strings"
@@ -26,6 +26,10 @@ var demoChain []byte
 type runFlags struct {
 	reading
 	set    []string
+	slice  string
+	share  slice
+	jobs   int      // at once
+	top    string   // folder of several tracks' folders; empty: there is one track
 	tracks []string // INPUT=FILE
 	out    string
 	json   bool
@@ -42,9 +46,14 @@ func newRun(s streams) *cobra.Command {
 		Short: "Run recordings through a chain and hear what the converter hears",
 		Long: `run takes each recording through the chain and writes a folder with what the converter hears (heard.wav), the
 layers that sum to it (wanted, fold-back, interference, overload, noise, rounding), report.html, report.json and parts.csv.
-Without arguments it runs the demo. Several tracks get a folder each within one, and overview.html beside them.
+Without arguments it runs the demo. Several tracks, or the tracks of a folder, get a folder each within one, with
+summary.csv, summary.json and overview.html beside them; a track with a fault does not stop the others. --slice runs a
+share of them, for midrail gather to join.
 
-Exit status: 0 done, 1 a limit of the chain file is broken, 2 the input is wrong, 3 the machine failed.
+A folder appears whole or not at all, and replaces one that midrail made before.
+
+Exit status: 0 done, 1 a limit of the chain file is broken, 2 the input is wrong, 3 the machine failed; of several tracks
+the worst.
 Caution: the layers can be loud; start with the volume low.`,
 		Example: `  midrail run
   midrail run front-end.toml song.wav
@@ -60,6 +69,8 @@ Caution: the layers can be loud; start with the volume low.`,
 	cmd.Flags().BoolVar(&f.json, "json", false, "print the result as JSON and nothing else")
 	cmd.Flags().Uint64Var(&f.seed, "seed", 1, "seed of all that is drawn by chance")
 	cmd.Flags().BoolVar(&f.noPage, "no-html", false, "write no report.html")
+	cmd.Flags().StringVar(&f.slice, "slice", "", "of several tracks, run one of `N/M` shares, for midrail gather to join")
+	cmd.Flags().IntVar(&f.jobs, "jobs", defaultJobs(), "of several tracks, how many at once")
 	cmd.Flags().BoolVar(&f.open, "open", false, "open the report in the browser")
 	cmd.Flags().BoolVar(&f.times, "times", false, "tell on standard error where the time went")
 	f.reading.add(cmd, s)
@@ -71,65 +82,47 @@ func run(ctx context.Context, s streams, f *runFlags, args []string) error {
 	if len(args) > 0 {
 		path = args[0]
 	}
-	n, err := s.open(path, f.set)
+	n, text, err := s.openText(path, f.set)
 	if err != nil {
 		return err
 	}
 	c := n.Chain
+	if f.share, err = parseSlice(f.slice); err != nil {
+		return err
+	}
+	if f.jobs < 1 {
+		return usageError{errors.New("--jobs is 1 or more")}
+	}
 	jobs, err := jobsOf(ctx, s, c, f, args)
 	if err != nil {
 		return err
 	}
-	if f.json && len(jobs) > 1 {
+	if f.json && f.top != "" {
 		return usageError{errors.New("--json takes one track")}
 	}
 	if f.open && f.noPage {
 		return usageError{errors.New("--open needs the report that --no-html leaves out")}
 	}
-	broken := false
-	var done []*finished
-	for _, j := range jobs {
-		result, err := execute(ctx, s, f, n, j)
-		if err != nil {
-			return err
-		}
-		done = append(done, result)
-		broken = broken || !result.holds()
-		if f.json {
-			err = report.WriteJSON(s.out, result.run)
-		} else {
-			err = s.tell(result)
-		}
-		if err != nil {
-			return err
-		}
+	if top := f.top; top != "" {
+		return s.batch(ctx, f, n, text, top, jobs)
 	}
-	if !f.noPage {
-		if err := present(done, f.open); err != nil {
-			return err
-		}
+	result, err := execute(ctx, s, f, n, jobs[0])
+	if err != nil {
+		return err
 	}
-	if broken {
+	if f.json {
+		err = report.WriteJSON(s.out, result.run)
+	} else {
+		err = s.tell(result)
+	}
+	if err == nil && f.open {
+		err = openPage(filepath.Join(result.folder, "report.html"))
+	}
+	if err != nil {
+		return err
+	}
+	if !result.holds() {
 		return errBroken
-	}
-	return nil
-}
-
-// present writes the overview of several tracks, and opens it, or the only report, where that is wanted.
-func present(done []*finished, open bool) error {
-	page := filepath.Join(done[0].folder, "report.html")
-	if len(done) > 1 {
-		var entries []report.Entry
-		for _, d := range done {
-			entries = append(entries, report.Entry{Run: d.run, Folder: filepath.Base(d.folder)})
-		}
-		page = filepath.Join(filepath.Dir(done[0].folder), "overview.html")
-		if err := writeFile(page, func(w io.Writer) error { return report.WriteOverview(w, entries) }); err != nil {
-			return err
-		}
-	}
-	if open {
-		return openPage(page)
 	}
 	return nil
 }
@@ -201,21 +194,19 @@ func jobsOf(ctx context.Context, s streams, c *chain.Chain, f *runFlags, args []
 	for _, r := range recordings {
 		jobs = append(jobs, jobOf(c, r))
 	}
-	switch {
-	case len(jobs) == 1 && f.out != "":
-		jobs[0].folder = f.out
-	case len(jobs) == 1:
-		jobs[0].folder = base + "-" + jobs[0].label
-	default:
-		top := f.out
-		if top == "" {
-			top = base
-		}
-		for i := range jobs {
-			jobs[i].folder = filepath.Join(top, jobs[i].label)
-		}
+	if len(jobs) == 1 && f.share.several == 0 {
+		jobs[0].folder = cmp.Or(f.out, base+"-"+jobs[0].label)
+		return jobs, nil
 	}
-	return jobs, nil
+	f.top = cmp.Or(f.out, base)
+	var names []string
+	for _, r := range recordings {
+		names = append(names, r.name)
+	}
+	for i, name := range folderNames(names) {
+		jobs[i].label, jobs[i].folder = name, filepath.Join(f.top, name)
+	}
+	return slices.DeleteFunc(jobs, func(j job) bool { return !f.share.takes(j.label) }), nil
 }
 
 func inputIndex(c *chain.Chain, name string) int {

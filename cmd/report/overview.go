@@ -5,40 +5,30 @@ import (
 	"io"
 )
 
-// Entry is one track of an overview.
-type Entry struct {
-	Run    *Run
-	Folder string // of its report, beside the overview
-}
-
 // overview is what the overview's template is filled from.
 type overview struct {
-	Head        template.HTML
-	Title, File string
-	Tool        Tool
-	Runs        []overviewRun
+	Head  template.HTML
+	Title string
+	Batch *Batch
+	Rows  []overviewRow
 }
 
-// overviewRun is one row of it.
-type overviewRun struct {
-	Run      *Run
-	Link     template.URL
-	Headline string
-	FoldBack Number
+// overviewRow is one row of it.
+type overviewRow struct {
+	Entry
+	Link template.URL // empty: there is no report
 }
 
-// WriteOverview writes one self-contained page that links the reports of several tracks, of which there is one at the
-// least. It returns the error of w.
-func WriteOverview(w io.Writer, entries []Entry) error {
-	o := overview{Title: title(entries[0].Run), File: entries[0].Run.Chain.File, Tool: entries[0].Run.Tool}
-	for _, e := range entries {
-		row := overviewRun{Run: e.Run, Link: href(e.Folder + "/report.html"), Headline: judge(e.Run).Headline}
-		for _, l := range e.Run.Layers {
-			if l.Name == FoldBack {
-				row.FoldBack = l.RMSDBFS
-			}
+// WriteOverview writes one self-contained page that links the reports of a batch; where tells the folder of an entry's
+// report from the page's place. It returns the error of w.
+func WriteOverview(w io.Writer, b *Batch, where func(e *Entry) string) error {
+	o := overview{Title: title(&Run{Chain: b.Chain}), Batch: b}
+	for i := range b.Tracks {
+		row := overviewRow{Entry: b.Tracks[i]}
+		if row.Status != Fault {
+			row.Link = href(where(&b.Tracks[i]) + "/report.html")
 		}
-		o.Runs = append(o.Runs, row)
+		o.Rows = append(o.Rows, row)
 	}
 	return fill(w, "overview.html", func(head template.HTML) any { o.Head = head; return o })
 }

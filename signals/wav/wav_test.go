@@ -98,6 +98,65 @@ func TestWrittenFilesOver4GiB(t *testing.T) {
 	}
 }
 
+// A file's bytes by the format: Multimedia Programming Interface and Data Specifications 1.0 (1991), chapter 3, for the
+// chunks and their pad byte; EBU Tech 3306 for the room of a ds64 chunk.
+func TestWrittenBytes(t *testing.T) {
+	const room = "JUNK\x1c\x00\x00\x00" + "\x00\x00\x00\x00\x00\x00\x00\x00\x00\x00\x00\x00\x00\x00\x00\x00\x00\x00\x00\x00\x00\x00\x00\x00\x00\x00\x00\x00"
+	for name, c := range map[string]struct {
+		channels, bits int
+		codes          []int32
+		want           string
+	}{
+		"no frames": {1, 16, nil,
+			"RIFF\x48\x00\x00\x00WAVE" + room + "fmt \x10\x00\x00\x00\x01\x00\x01\x00\x40\x1f\x00\x00\x80\x3e\x00\x00\x02\x00\x10\x00data\x00\x00\x00\x00"},
+		"16 bits, held to their range": {2, 16, []int32{1, -2, 40000, -40000},
+			"RIFF\x50\x00\x00\x00WAVE" + room + "fmt \x10\x00\x00\x00\x01\x00\x02\x00\x40\x1f\x00\x00\x00\x7d\x00\x00\x04\x00\x10\x00data\x08\x00\x00\x00\x01\x00\xfe\xff\xff\x7f\x00\x80"},
+		"24 bits, odd": {1, 24, []int32{-2},
+			"RIFF\x4c\x00\x00\x00WAVE" + room + "fmt \x10\x00\x00\x00\x01\x00\x01\x00\x40\x1f\x00\x00\xc0\x5d\x00\x00\x03\x00\x18\x00data\x03\x00\x00\x00\xfe\xff\xff\x00"},
+	} {
+		path := filepath.Join(t.TempDir(), "x.wav")
+		f, err := os.Create(path)
+		if err != nil {
+			t.Fatal(err)
+		}
+		w := NewIntegerWriter(f, 8000, c.channels, c.bits)
+		if c.codes != nil {
+			err = w.Write(c.codes)
+		}
+		if err := errors.Join(err, w.Close(), f.Close()); err != nil {
+			t.Fatal(err)
+		}
+		if got, err := os.ReadFile(path); err != nil || string(got) != c.want {
+			t.Errorf("%s: %q, %v, want %q", name, got, err, c.want)
+		}
+	}
+}
+
+// A file that becomes shorter while it is read is no file that ends.
+func TestBecomesShorter(t *testing.T) {
+	for _, x := range []flavour{{tag: tagPCM, bits: 8, size: -1}, {tag: tagPCM, bits: 16, size: -1}, {tag: tagPCM, bits: 24, size: -1}, {tag: tagPCM, bits: 32, size: -1}, {tag: tagFloat, bits: 32, size: -1}} {
+		const frames = 10_000
+		file := x.file(48000, 2, make([]float64, 2*frames))
+		for _, lost := range []int{1, 1000, frames * 2 * x.bits / 8} {
+			path := filepath.Join(t.TempDir(), "x.wav")
+			if err := os.WriteFile(path, file, 0o600); err != nil {
+				t.Fatal(err)
+			}
+			w, err := Open(path)
+			if err != nil {
+				t.Fatal(err)
+			}
+			if err := os.Truncate(path, int64(len(file)-lost)); err != nil {
+				t.Fatal(err)
+			}
+			if n, err := w.ReadFrames(make([]float64, 2*frames)); n == frames || !errors.Is(err, io.ErrUnexpectedEOF) || errors.Is(err, io.EOF) {
+				t.Errorf("%d bits, %d bytes lost: %d frames, %v", x.bits, lost, n, err)
+			}
+			w.Close()
+		}
+	}
+}
+
 // What was written before a program was killed is read, with a word.
 func TestFileThatWasNeverClosed(t *testing.T) {
 	path := filepath.Join(t.TempDir(), "x.wav")
@@ -149,6 +208,28 @@ func BenchmarkRead(b *testing.B) {
 				}
 				if n, err := w.ReadFrames(x); n != rate || err != nil {
 					b.Fatal(n, err)
+				}
+			}
+			b.ReportMetric(float64(b.N)/b.Elapsed().Seconds(), "xrealtime")
+		})
+	}
+}
+
+// nowhere keeps nothing.
+type nowhere struct{}
+
+func (nowhere) Write(p []byte) (int, error)         { return len(p), nil }
+func (nowhere) Seek(at int64, _ int) (int64, error) { return at, nil }
+
+func BenchmarkWrite(b *testing.B) {
+	const rate = 48000
+	for name, bits := range map[string]int{"16 bits": 16, "24 bits": 24} {
+		b.Run(name, func(b *testing.B) {
+			w := NewIntegerWriter(nowhere{}, rate, 1, bits)
+			codes := make([]int32, rate)
+			for b.Loop() {
+				if err := w.Write(codes); err != nil {
+					b.Fatal(err)
 				}
 			}
 			b.ReportMetric(float64(b.N)/b.Elapsed().Seconds(), "xrealtime")
