@@ -77,6 +77,9 @@ func execute(ctx context.Context, s streams, f *runFlags, n *circuit.Network, j 
 	if err != nil {
 		return nil, err
 	}
+	if err := out.needs(outputBytes(n.Chain, tracks.seconds(), !f.noPage)); err != nil {
+		return nil, errors.Join(err, out.discard())
+	}
 	clock := stopwatch{on: f.times, last: time.Now()}
 	budget := noise.At(n)
 	clock.lap("adding up the noise")
@@ -108,6 +111,19 @@ func execute(ctx context.Context, s streams, f *runFlags, n *circuit.Network, j 
 	clock.lap("writing the report")
 	clock.tell(s.err, result.Seconds)
 	return &finished{run, j.folder}, nil
+}
+
+// outputBytes is about how much a run writes: heard, the layers, the reports.
+func outputBytes(c *chain.Chain, seconds float64, page bool) int64 {
+	frame := 2 + 4*render.LayerCount
+	if c.Converter.Bits > 16 {
+		frame++
+	}
+	reports := 1e6
+	if page {
+		reports = 7e6
+	}
+	return int64(seconds*c.Converter.Rate)*int64(frame) + int64(reports)
 }
 
 func writeFile(path string, write func(io.Writer) error) error {

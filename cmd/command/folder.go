@@ -64,11 +64,14 @@ func mayReplace(path string) error {
 // file returns the path of a file in the folder while it is being written.
 func (f *folder) file(name string) string { return filepath.Join(f.working, name) }
 
-// finish moves the folder to its place. An earlier one is moved aside first and removed last, so that its place
-// holds one of the two whole.
+// finish moves the folder to its place. With an earlier one it changes places, so that there is always one of the two,
+// whole; where the system cannot do that, the earlier one is moved aside first and removed last.
 func (f *folder) finish() error {
 	if err := mayReplace(f.path); err != nil {
 		return errors.Join(err, f.discard())
+	}
+	if exchange(f.working, f.path) == nil {
+		return f.discard()
 	}
 	old := f.working + ".old"
 	err := os.Rename(f.path, old)
@@ -79,6 +82,23 @@ func (f *folder) finish() error {
 		return errors.Join(err, os.Rename(old, f.path), f.discard())
 	}
 	return os.RemoveAll(old)
+}
+
+// needs refuses to begin where so many bytes do not fit.
+func (f *folder) needs(bytes int64) error {
+	free, known := freeSpace(f.working)
+	if !known || bytes <= free {
+		return nil
+	}
+	return refusal{fmt.Errorf("%s: the sound and the report take about %s, %s are free there; make room, or name another place with --out", f.path, size(bytes), size(free))}
+}
+
+// size tells a number of bytes.
+func size(bytes int64) string {
+	if bytes < 1e9 {
+		return fmt.Sprintf("%.1f MB", float64(bytes)/1e6)
+	}
+	return fmt.Sprintf("%.1f GB", float64(bytes)/1e9)
 }
 
 // discard removes what was written.
