@@ -145,7 +145,7 @@ func (f *finder) fit(owner string) string {
 		if a.Name != owner {
 			continue
 		}
-		part, value, ok := room.Fit(f.n, f.r, k)
+		part, value, _, ok := room.Fit(f.n, f.r, k)
 		if !ok {
 			return ""
 		}
@@ -273,15 +273,15 @@ func Limits(n *circuit.Network, r *render.Result, res *Residue, settling float64
 	}
 	least("room", l.Room, nearest)
 	if d := l.Droop; d != nil {
-		most("droop", &d.Max, droop(n, d.At))
+		most("droop", &d.Max, Droop(n, d.At))
 	}
 	most("settling", l.Settling, settling)
 	return list
 }
 
-// droop returns the largest loss at f of any input against its mid-band gain in dB. Mid-band is where the gain is
+// Droop returns the largest loss at f of any input against its mid-band gain in dB. Mid-band is where the gain is
 // largest between 20 Hz and f.
-func droop(n *circuit.Network, f float64) float64 {
+func Droop(n *circuit.Network, f float64) float64 {
 	worst := math.Inf(-1)
 	for i := range n.Inputs {
 		in := circuit.SoundInput(i)

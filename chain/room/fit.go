@@ -25,18 +25,18 @@ var gainParts = map[string]struct {
 const tries = 72
 
 // Fit returns the part that sets the gain in front of or around the k-th amplifier, and the preferred value nearest
-// to its present one with which the excursions that a run asked for would stay within the amplifier's limits. It
-// reports false where no such part is found.
-func Fit(n *circuit.Network, r *render.Result, k int) (chain.Part, float64, bool) {
+// to its present one with which the excursions that a run asked for would stay within the amplifier's limits, and the room
+// in dB that is left then. It reports false where no such part is found.
+func Fit(n *circuit.Network, r *render.Result, k int) (part chain.Part, value, left float64, ok bool) {
 	room := r.Amplifiers[k].Room()
 	part, less, ok := gainPart(n.Chain, n.Amplifiers[k].Stage)
 	if !ok {
-		return chain.Part{}, 0, false
+		return chain.Part{}, 0, 0, false
 	}
 	series := part.Preferred()
 	out := n.Amplifiers[k].Out
 	before := loudest(n, out)
-	value := part.Value
+	value = part.Value
 	for range tries {
 		if less {
 			value = series.Down(value)
@@ -45,13 +45,13 @@ func Fit(n *circuit.Network, r *render.Result, k int) (chain.Part, float64, bool
 		}
 		with, ok := n.With(part.Name, value)
 		if !ok {
-			return chain.Part{}, 0, false
+			return chain.Part{}, 0, 0, false
 		}
-		if circuit.Gain(complex(loudest(with, out)/before, 0)) <= room {
-			return part, value, true
+		if louder := circuit.Gain(complex(loudest(with, out)/before, 0)); louder <= room {
+			return part, value, room - louder, true
 		}
 	}
-	return chain.Part{}, 0, false
+	return chain.Part{}, 0, 0, false
 }
 
 // gainPart finds the part that sets the gain of the i-th stage, or of the nearest one before it that has such a part.

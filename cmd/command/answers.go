@@ -14,7 +14,7 @@ import (
 )
 
 // answersOf is what response, rest, noise and ripple print of a chain, for the report: response once for each input.
-func answersOf(n *circuit.Network, settled *rest.Rest, b *noise.Budget) ([]report.Answer, error) {
+func answersOf(n *circuit.Network, settled *rest.Rest, b *noise.Budget, best noise.Change) ([]report.Answer, error) {
 	at, err := n.Rest()
 	if err != nil {
 		return nil, err
@@ -44,7 +44,7 @@ func answersOf(n *circuit.Network, settled *rest.Rest, b *noise.Budget) ([]repor
 	if err := add("Rest and power-up", func(w io.Writer) error { return printRest(w, n, settled) }); err != nil {
 		return nil, err
 	}
-	if err := add("Noise", noiseJSON(n, b).print); err != nil {
+	if err := add("Noise", noiseJSON(n, b, best).print); err != nil {
 		return nil, err
 	}
 	frequencies, err := parseFrequencies(rippleFrequencies)

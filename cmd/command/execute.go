@@ -89,7 +89,7 @@ func execute(ctx context.Context, s streams, f *runFlags, n *circuit.Network, j 
 		return nil, errors.Join(err, out.discard())
 	}
 	clock.laps(result.Times)
-	run, err := describe(n, tracks, result, res, budget, known)
+	run, err := describe(ctx, n, j, tracks, result, res, budget, known)
 	if err == nil && !f.noPage {
 		err = writePage(n, j, out, run, result, res, budget)
 	}
@@ -422,9 +422,11 @@ func later[T any](work func() (T, error)) func() (T, error) {
 
 // known is what a report tells of a chain whatever its track.
 type known struct {
-	rest    *rest.Rest
-	margins []response.Margin
-	answers []report.Answer
+	rest     *rest.Rest
+	margins  []response.Margin
+	answers  []report.Answer
+	best     noise.Change
+	settling *report.Change
 }
 
 func knownOf(n *circuit.Network, budget *noise.Budget) (*known, error) {
@@ -432,15 +434,17 @@ func knownOf(n *circuit.Network, budget *noise.Budget) (*known, error) {
 	if err != nil {
 		return nil, err
 	}
-	answers, err := answersOf(n, atRest, budget)
+	best := noise.Best(n)
+	answers, err := answersOf(n, atRest, budget, best)
 	if err != nil {
 		return nil, err
 	}
-	return &known{atRest, response.Margins(n), answers}, nil
+	settling, err := settlingChange(n, atRest)
+	return &known{atRest, response.Margins(n), answers, best, settling}, err
 }
 
 // describe puts a run's results into the form of reports.
-func describe(n *circuit.Network, tracks *openedTracks, r *render.Result, res *residue.Residue, budget *noise.Budget, wait func() (*known, error)) (*report.Run, error) {
+func describe(ctx context.Context, n *circuit.Network, j job, tracks *openedTracks, r *render.Result, res *residue.Residue, budget *noise.Budget, wait func() (*known, error)) (*report.Run, error) {
 	c := n.Chain
 	of := report.Of
 	first := tracks.list[0]
@@ -483,6 +487,9 @@ func describe(n *circuit.Network, tracks *openedTracks, r *render.Result, res *r
 		return nil, err
 	}
 	atRest, margins := known.rest, known.margins
+	if run.Changes, err = changesOf(ctx, n, j, r, res, known); err != nil {
+		return nil, err
+	}
 	run.Rest, run.Noise, run.Parts, run.Answers = restOf(c, atRest), noiseOf(n, budget), partsOf(c), known.answers
 	run.Margins, run.SupplyPaths = marginsOf(margins), supplyOf(n, r.At)
 	for _, l := range residue.Limits(n, r, res, atRest.Settling.OnePercent) {

@@ -28,7 +28,7 @@ one change helps most, by trying.`,
 				return err
 			}
 			b := noise.At(n)
-			r := noiseJSON(n, b)
+			r := noiseJSON(n, b, noise.Best(n))
 			if svg != "" {
 				if err := replaceFile(svg, func(w io.Writer) error { return report.PlotSVG(w, noisePlot(b), 80) }); err != nil {
 					return err
@@ -81,7 +81,7 @@ type noiseChange struct {
 	Gain  report.Number `json:"less_db"`
 }
 
-func noiseJSON(n *circuit.Network, b *noise.Budget) noiseResult {
+func noiseJSON(n *circuit.Network, b *noise.Budget, best noise.Change) noiseResult {
 	of, f := report.Of, b.Figures(n)
 	r := noiseResult{
 		Total: noiseTotal{of(f.Volts), of(f.DBFS), of(f.A), of(f.LSB), of(f.UsefulBits)},
@@ -93,7 +93,6 @@ func noiseJSON(n *circuit.Network, b *noise.Budget) noiseResult {
 	for _, e := range f.Inputs {
 		r.Equivalent = append(r.Equivalent, equivalent{e.Input, of(e.Value), e.Unit})
 	}
-	best := noise.Best(n)
 	r.Best = noiseChange{best.Words, of(best.Gain)}
 	return r
 }

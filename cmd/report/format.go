@@ -250,6 +250,26 @@ func limitWord(l Limit) string   { return formOf(l.Name).bound }
 func limitFigure(l Limit) string { return formOf(l.Name).say(l.Limit) }
 func limitBound(l Limit) string  { return limitWord(l) + " " + limitFigure(l) }
 
+// ofChange returns what of a change's unit follows its figures.
+func ofChange(c Change) string {
+	switch c.Unit {
+	case "s", "dBFS":
+		return ""
+	}
+	return strings.TrimPrefix(clean(c.Unit), "dB")
+}
+
+// changed returns a figure of a change with its unit, of which [ofChange] may follow.
+func changed(n Number, c Change) string {
+	switch c.Unit {
+	case "s":
+		return seconds(n)
+	case "dBFS":
+		return dbfs(n)
+	}
+	return decibels(n)
+}
+
 // verdict is the answer in words.
 type verdict struct {
 	Good     bool

@@ -102,7 +102,7 @@ func fill(w io.Writer, name string, data func(head template.HTML) any) error {
 		"hertz": hertz, "seconds": seconds, "clock": clock, "percent": percent, "scaled": scaled, "count": count, "lsb": lsb,
 		"times": times, "plural": plural, "limitName": limitName, "limitValue": limitValue, "limitWord": limitWord, "limitFigure": limitFigure,
 		"lengthOf": lengthOf, "partValue": partValue, "plusMinus": plusMinus, "slug": slug,
-		"fig": fig, "whole": whole, "between": between, "href": href,
+		"fig": fig, "changed": changed, "ofChange": ofChange, "whole": whole, "between": between, "href": href,
 	}).ParseFS(parts, "page/*.html")
 	if err != nil {
 		return err

@@ -86,6 +86,11 @@ func example() *Run {
 			{"fold_back_below_wanted", n(40), n(36.8), false},
 			{"droop", n(1), n(0.72), true},
 		},
+		Changes: []Change{
+			{About: AboutOverload, Set: "amp.r_f=33k", Words: "amp.r_f (R2) = 33k in place of 47k", Was: Of(-2.5), Becomes: Of(0.57), Unit: "dB of room"},
+			{About: AboutNoise, Words: "a converter of <two> more bits", Was: Of(-61.3), Becomes: Of(-70.2), Unit: "dBFS"},
+			{About: AboutSettling, Set: "half.bypass=4u7", Words: "half.bypass = 4u7 in place of 10u", Was: Of(0.9), Becomes: Of(0.45), Unit: "s"},
+		},
 		Findings: []Finding{
 			{Stop, "capsule amp", "asks for 6.2 dB more than its output can swing; r_f = 56k fits"},
 			{Caution, FoldBack, "a corner of 2.7 kHz would leave 41 dB below wanted"},
@@ -236,7 +241,7 @@ func TestJSONNull(t *testing.T) {
 	if err := json.Unmarshal(text, &tree); err != nil {
 		t.Fatal(err)
 	}
-	for _, list := range []string{"stages", "layers", "events", "limits", "findings", "assumptions"} {
+	for _, list := range []string{"stages", "layers", "events", "limits", "changes", "findings", "assumptions"} {
 		if _, ok := tree[list].([]any); !ok {
 			t.Errorf("%s is %v, want a list", list, tree[list])
 		}
@@ -279,7 +284,7 @@ func TestNumber(t *testing.T) {
 // The keys are those of the published form of report.json; a key that changes breaks its readers.
 func TestJSONKeys(t *testing.T) {
 	keys := map[string]string{
-		"":                       "tool chain track internal overload stages converter layers events waveforms noise rest margins supply_paths parts listen limits findings assumptions answers",
+		"":                       "tool chain track internal overload stages converter layers events waveforms noise rest margins supply_paths parts listen limits changes findings assumptions answers",
 		"waveforms":              "stage kind at_s over_db",
 		"answers":                "title lines",
 		"noise":                  "total sources equivalent_input",
@@ -310,6 +315,7 @@ func TestJSONKeys(t *testing.T) {
 		"layers.thirds":          "hz dbfs",
 		"events":                 "stage kind from_s to_s over_db",
 		"limits":                 "name limit value holds",
+		"changes":                "about set words was becomes unit",
 		"findings":               "severity about text",
 	}
 	var tree any

@@ -26,11 +26,31 @@ type Run struct {
 	Parts        []Part        `json:"parts"` // in the order of the chain file
 	Listen       *Listen       `json:"listen,omitempty"`
 	Limits       []Limit       `json:"limits"`
+	Changes      []Change      `json:"changes"`                // for each number that is not as it should be, the one that helps most
 	Findings     []Finding     `json:"findings"`               // the weightiest first
 	Calibrations []Calibration `json:"calibrations,omitempty"` // of the inputs whose full scale was found in a recording
 	Assumptions  []string      `json:"assumptions"`
 	Answers      []Answer      `json:"answers"`
 }
+
+// Change is a change of one part that helps a number of the verdict.
+type Change struct {
+	About   string `json:"about"`         // which number: AboutOverload and so on
+	Set     string `json:"set,omitempty"` // as run takes it with --set; empty: no one value does it
+	Words   string `json:"words"`
+	Was     Number `json:"was"`
+	Becomes Number `json:"becomes"` // predicted
+	Unit    string `json:"unit"`    // of the two
+}
+
+// The numbers that changes are about.
+const (
+	AboutOverload = "overload"
+	AboutFoldBack = "fold-back"
+	AboutNoise    = "noise"
+	AboutSettling = "settling"
+	AboutDroop    = "droop"
+)
 
 // Answer is what a command that needs no recording prints of the chain; its figures in full precision are that command's
 // JSON.
@@ -406,6 +426,7 @@ func WriteJSON(w io.Writer, run *Run) error {
 	r.Rest.Nodes = filled(r.Rest.Nodes)
 	r.Parts = filled(r.Parts)
 	r.Limits = filled(r.Limits)
+	r.Changes = filled(r.Changes)
 	r.Findings = filled(r.Findings)
 	r.Assumptions = filled(r.Assumptions)
 	for i := range r.Layers {

@@ -27,9 +27,9 @@ const (
 	green  = "\x1b[32m"
 )
 
-// Summary writes the run as one terminal screen, in the order of the page: the verdict with the limits and as many of
-// the findings as there is room for (at least one), then stages and layers. It returns the error of w, and panics
-// where the width is below 40 and not 0.
+// Summary writes the run as one terminal screen, in the order of the page: the verdict with the limits, as many of the
+// changes that help and of the findings as there is room for (at least one finding), then stages and layers. It returns
+// the error of w, and panics where the width is below 40 and not 0.
 func Summary(w io.Writer, run *Run, o Options) error {
 	if o.Width == 0 {
 		o.Width = 80
@@ -52,6 +52,7 @@ func Summary(w io.Writer, run *Run, o Options) error {
 	rest := append([]string{""}, o.stages(run)...)
 	rest = append(append(rest, ""), o.layers(run)...)
 	lines = append(lines, limits...)
+	lines = append(lines, o.changes(run, screen-len(lines)-len(rest)-leastFindings)...)
 	lines = append(lines, o.findings(run, screen-len(lines)-len(rest))...)
 	lines = append(lines, rest...)
 	_, err := io.WriteString(w, strings.Join(lines, "\n")+"\n")
@@ -168,6 +169,19 @@ func (o Options) limits(run *Run) []string {
 		body = append(body, table.Row{limitName(l), limitValue(l), limitBound(l), state})
 	}
 	return o.rows(nil, body, 2)
+}
+
+// leastFindings is how many lines are kept for the findings.
+const leastFindings = 3
+
+// changes returns a line for each of as many changes as there is room for.
+func (o Options) changes(run *Run, room int) []string {
+	var lines []string
+	for _, c := range run.Changes[:max(0, min(len(run.Changes), room))] {
+		line := fmt.Sprintf("helps %s: %s: %s", clean(c.About), clean(c.Words), changed(c.Becomes, c)+ofChange(c))
+		lines = append(lines, text.Snip(line, o.Width, "…"))
+	}
+	return lines
 }
 
 // findings returns the findings that fit in the given number of lines; at least one of them.
