@@ -12,6 +12,7 @@ import (
 	"io"
 	"net/url"
 	"sort"
+	"strconv"
 	"strings"
 )
 
@@ -30,8 +31,10 @@ type page struct {
 	Figures  figures
 	Players  []player
 	Marks    []soundMark
-	Loudest  []int   // of Events: those that the page lists
-	Thirds   *thirds // nil where no layer has them
+	Ticks    []string   // where on the players' time axis all overloads are, as "12.3%"
+	Begins   []axisMark // of the passages on that axis, and the end of the last
+	Loudest  []int      // of Events: those that the page lists
+	Thirds   *thirds    // nil where no layer has them
 	Purchase []bought
 	CutShort bool // whether the players hold passages only
 }
@@ -48,6 +51,13 @@ type soundMark struct {
 	Index int // of Run.Events
 	Event
 	At float64 // s, in the players
+	X  string  // on their time axis, as "12.3%"
+}
+
+// axisMark is a time of the track on the players' axis.
+type axisMark struct {
+	X, Anchor string
+	Time      Number // s
 }
 
 // thirds are the third-octave levels of all layers as one table.
@@ -204,11 +214,34 @@ func (p *page) listen(pictures *Pictures) {
 	p.CutShort = held < p.Track.Seconds.value-1e-3
 	for _, i := range p.Loudest {
 		if at, there := l.place(p.Events[i].FromS); there && len(p.Marks) < mostMarks {
-			p.Marks = append(p.Marks, soundMark{i, p.Events[i], at})
+			p.Marks = append(p.Marks, soundMark{i, p.Events[i], at, share(at, held)})
+		}
+	}
+	for _, e := range p.Events {
+		// Ticks closer than a thousandth of the axis are one.
+		if at, there := l.place(e.FromS); there {
+			if x := share(at, held); len(p.Ticks) == 0 || p.Ticks[len(p.Ticks)-1] != x {
+				p.Ticks = append(p.Ticks, x)
+			}
+		}
+	}
+	at := 0.
+	for i, passage := range l.Passages {
+		anchor := "middle"
+		if i == 0 {
+			anchor = "start"
+		}
+		p.Begins = append(p.Begins, axisMark{share(at, held), anchor, passage.FromS})
+		at += passage.ToS.value - passage.FromS.value
+		if i == len(l.Passages)-1 {
+			p.Begins = append(p.Begins, axisMark{share(at, held), "end", passage.ToS})
 		}
 	}
 	sort.Slice(p.Marks, func(i, j int) bool { return p.Marks[i].At < p.Marks[j].At })
 }
+
+// share returns a part of a whole as SVG takes it.
+func share(part, whole float64) string { return strconv.FormatFloat(100*part/whole, 'f', 1, 64) + "%" }
 
 // mostMarks is how many overloads the players have marks for.
 const mostMarks = 12

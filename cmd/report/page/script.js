@@ -47,6 +47,21 @@ for (const link of all("[data-seek]")) {
 	});
 }
 
+// The time axis: where the players are, and to go elsewhere.
+const timeline = document.querySelector("svg.time");
+function follow() {
+	if (!timeline || !current || !(current.duration > 0)) return;
+	const head = timeline.querySelector(".head");
+	for (const end of ["x1", "x2"]) head.setAttribute(end, 100 * current.currentTime / current.duration + "%");
+}
+for (const sound of sounds) for (const what of ["timeupdate", "seeked", "loadedmetadata"]) sound.addEventListener(what, follow);
+timeline?.addEventListener("click", event => {
+	if (event.target.closest("a") || !current || !(current.duration > 0)) return;
+	const box = timeline.getBoundingClientRect();
+	const at = Math.min(Math.max((event.clientX - box.left) / box.width, 0), 1) * current.duration;
+	for (const sound of sounds) sound.currentTime = at;
+});
+
 function swap() {
 	const [track, heard] = [called("track"), called("heard")];
 	if (!track || !heard) return;
