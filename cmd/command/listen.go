@@ -20,6 +20,8 @@ const (
 	soundBytes = 3_300_000
 	// clearRate is the rate in Hz that the track is halved down to, so long as it stays at or above.
 	clearRate = 22050
+	// playedRate is the least rate in Hz that browsers play; slower sounds are interpolated.
+	playedRate = 3000
 	// mostPassages is how many passages of a long track a report holds, where they do not touch.
 	mostPassages = 4
 	// listenLevel is the A-weighted level in dBFS that sounds are brought to, at the most.
@@ -32,10 +34,14 @@ const (
 	fade = 5e-3
 )
 
-// shownRate returns the rate at which a sound of the given rate is shown: its own or that halved some times.
+// shownRate returns the rate at which a sound of the given rate is shown: its own or that halved or, far below what
+// browsers play, doubled some times.
 func shownRate(rate float64) float64 {
 	for rate >= 2*clearRate {
 		rate /= 2
+	}
+	for rate < playedRate {
+		rate *= 2
 	}
 	return rate
 }
@@ -161,7 +167,13 @@ func cutTrack(open func() (signals.Track, error), passages [][2]float64) ([]floa
 	if err := errors.Join(err, t.Close()); err != nil {
 		return nil, 0, err
 	}
-	for shown := shownRate(rate); rate > shown; rate /= 2 {
+	shown := shownRate(rate)
+	if shown > rate {
+		slow := signals.Samples(x)
+		x, err = signals.ReadAll(resample.New(&slow, rate, shown, resample.PassBand, 0, 0, 0))
+		return x, shown, err
+	}
+	for ; rate > shown; rate /= 2 {
 		x = resample.Halve(x)
 	}
 	return x, rate, nil

@@ -10,6 +10,7 @@ import (
 	"midrail/cmd/report"
 	"midrail/signals"
 	"midrail/signals/level"
+	"midrail/signals/tone"
 )
 
 // The passages are in order, apart, within the track and no longer together than asked for; the worst overload is in them.
@@ -95,6 +96,21 @@ func TestLoudness(t *testing.T) {
 		}
 		if gains[3] > 0 {
 			t.Errorf("silence is raised by %v dB", gains[3])
+		}
+	}
+}
+
+// A sound slower than browsers play is interpolated, and is the same sound.
+func TestSlowSoundsAreInterpolated(t *testing.T) {
+	const f, rate = 100, 1000
+	got, at, err := cutTrack(func() (signals.Track, error) { return tone.Sine(rate, 2, f, -6), nil }, [][2]float64{{0, 2}})
+	if err != nil || at != 4*rate || len(got) != 8*rate {
+		t.Fatalf("%d samples at %g Hz, %v", len(got), at, err)
+	}
+	for i := 1000; i < 7000; i++ {
+		want := math.Pow(10, -6./20) * math.Sin(2*math.Pi*f*float64(i)/at)
+		if d := math.Abs(got[i] - want); !(d <= 1e-5) {
+			t.Fatalf("sample %d is %g, want %g", i, got[i], want)
 		}
 	}
 }
