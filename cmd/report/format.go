@@ -365,7 +365,7 @@ func worstOf(run *Run) string {
 			break
 		}
 	}
-	if _, there := w.OverDB.Value(); there {
+	if over, _ := w.OverDB.Value(); over > 0 { // 0: by how much is not known
 		s += decibels(w.OverDB) + " over, "
 	}
 	return s + "at " + clock(w.AtS)
