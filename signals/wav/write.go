@@ -131,16 +131,6 @@ func (w *IntegerWriter) Write(codes []int32) error {
 	return err
 }
 
-// Close writes the lengths into the header, and leaves the file, which it does not close, at its end.
-func (w *IntegerWriter) Close() error {
-	if w.encoder.WrittenBytes == 0 { // the library's header comes with the first samples
-		if err := w.Write(nil); err != nil {
-			return err
-		}
-	}
-	return w.writer.Close()
-}
-
 // behindHeader is what the library writes into. Its header, which has no room for the lengths of a file of 4 GiB, is left
 // out for that of the writer; and so is its Close, which would seek.
 type behindHeader struct {
