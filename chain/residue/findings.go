@@ -145,6 +145,9 @@ func (f *finder) fit(owner string) string {
 		if a.Name != owner {
 			continue
 		}
+		if e := f.r.At.Sources[k]; e >= a.High || e <= a.Low {
+			return "" // less gain does not free what rests on its limit
+		}
 		part, value, _, ok := room.Fit(f.n, f.r, k)
 		if !ok {
 			return ""

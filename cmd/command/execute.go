@@ -477,10 +477,10 @@ func describe(ctx context.Context, n *circuit.Network, j job, tracks *openedTrac
 		run.Layers = append(run.Layers, layerOf(render.Layer(i).String(), reading, res.BelowWanted(render.Layer(i))))
 	}
 	for _, e := range r.Events {
-		run.Events = append(run.Events, report.Event{Stage: e.Owner, Kind: string(e.Kind), FromS: of(e.From), ToS: of(e.To), OverDB: of(e.Over)})
+		run.Events = append(run.Events, report.Event{Stage: e.Owner, Kind: string(e.Kind), FromS: of(e.From), ToS: of(e.To), OverDB: overOf(e.Over)})
 	}
 	for _, w := range r.Waveforms {
-		run.Waveforms = append(run.Waveforms, report.Waveform{Stage: w.Owner, Kind: string(w.Kind), AtS: of(w.At), OverDB: of(w.Over)})
+		run.Waveforms = append(run.Waveforms, report.Waveform{Stage: w.Owner, Kind: string(w.Kind), AtS: of(w.At), OverDB: overOf(w.Over)})
 	}
 	known, err := wait()
 	if err != nil {
@@ -499,6 +499,14 @@ func describe(ctx context.Context, n *circuit.Network, j job, tracks *openedTrac
 		run.Findings = append(run.Findings, report.Finding{Severity: string(f.Severity), About: f.About, Text: f.Text})
 	}
 	return run, nil
+}
+
+// overOf returns by how much a limit was passed, where that is known.
+func overOf(db float64) report.Number {
+	if db == 0 {
+		return report.Number{}
+	}
+	return report.Of(db)
 }
 
 // overloadOf gathers the overloads of some owners, or of all for nil. What is only watched is no overload.
@@ -522,7 +530,7 @@ func overloadOf(r *render.Result, owners []string) report.Overload {
 		}
 		if o.Worst == nil || x.Worst.Over > worst.Over {
 			worst = x.Worst
-			o.Worst = &report.Worst{AtS: report.Of(worst.From), Seconds: report.Of(worst.To - worst.From), OverDB: report.Of(worst.Over)}
+			o.Worst = &report.Worst{AtS: report.Of(worst.From), Seconds: report.Of(worst.To - worst.From), OverDB: overOf(worst.Over)}
 		}
 	}
 	seconds := r.Overloaded

@@ -210,7 +210,11 @@ func scopes(run *Run, i int, s *Scope) []drawn {
 		if !(f.x.hi > f.x.lo) || len(f.curves) == 0 {
 			continue
 		}
-		caption := "The output of " + clean(stage.Name) + " around " + clock(w.AtS) + ", where " + clean(w.Stage) + " is " + decibels(w.OverDB) + " over (" + clean(w.Kind) +
+		by := "beyond its limit"
+		if w.OverDB.There() {
+			by = decibels(w.OverDB) + " over"
+		}
+		caption := "The output of " + clean(stage.Name) + " around " + clock(w.AtS) + ", where " + clean(w.Stage) + " is " + by + " (" + clean(w.Kind) +
 			"). Dashed: asked for; solid: real; shaded: beyond its limits."
 		list = append(list, drawn{caption, f.draw()})
 	}

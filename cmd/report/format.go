@@ -365,7 +365,7 @@ func worstOf(run *Run) string {
 			break
 		}
 	}
-	if over, _ := w.OverDB.Value(); over > 0 { // 0: by how much is not known
+	if w.OverDB.There() {
 		s += decibels(w.OverDB) + " over, "
 	}
 	return s + "at " + clock(w.AtS)

@@ -178,7 +178,10 @@ const leastFindings = 3
 func (o Options) changes(run *Run, room int) []string {
 	var lines []string
 	for _, c := range run.Changes[:max(0, min(len(run.Changes), room))] {
-		line := fmt.Sprintf("helps %s: %s: %s", clean(c.About), clean(c.Words), changed(c.Becomes, c)+ofChange(c))
+		line := fmt.Sprintf("helps %s: %s", clean(c.About), clean(c.Words))
+		if c.Becomes.There() {
+			line += ": " + changed(c.Becomes, c) + ofChange(c)
+		}
 		lines = append(lines, text.Snip(line, o.Width, "…"))
 	}
 	return lines
