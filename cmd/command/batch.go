@@ -17,7 +17,6 @@ import (
 	"strings"
 	"sync"
 
-	"midrail/chain"
 	"midrail/chain/circuit"
 	"midrail/cmd/report"
 )
@@ -64,8 +63,9 @@ func (s slice) file() string {
 	return fmt.Sprintf("slice-%d-of-%d", s.number, s.several)
 }
 
-// folderNames names a folder for each path: by the file's name; where several have that, with the names of the folders that
-// it is in, as far up as tells them apart.
+// folderNames names a folder for each path, whatever the case of their letters: by the file's name; where several have
+// that, with the names of the folders that it is in, as far up as tells them apart; and where that does not, with its ending
+// and a number.
 func folderNames(paths []string) []string {
 	names := make([]string, len(paths))
 	for up := 0; ; up++ {
@@ -74,11 +74,11 @@ func folderNames(paths []string) []string {
 			if up == 0 {
 				names[i] = baseName(path)
 			}
-			count[names[i]]++
+			count[strings.ToLower(names[i])]++
 		}
 		clash, longer := false, false
 		for i, path := range paths {
-			if count[names[i]] < 2 {
+			if count[strings.ToLower(names[i])] < 2 {
 				continue
 			}
 			clash = true
@@ -91,21 +91,31 @@ func folderNames(paths []string) []string {
 		if !clash {
 			return names
 		}
-		if !longer { // the same file twice, or x.wav beside x.flac
+		if !longer { // x.wav beside x.flac, or beside what another was renamed to
+			taken := map[string]bool{}
 			for i, path := range paths {
-				if count[names[i]] > 1 {
+				if count[strings.ToLower(names[i])] > 1 {
 					names[i] += "-" + strings.TrimPrefix(filepath.Ext(path), ".")
 				}
+				name := names[i]
+				for number := 2; taken[strings.ToLower(name)]; number++ {
+					name = fmt.Sprintf("%s-%d", names[i], number)
+				}
+				names[i] = name
+				taken[strings.ToLower(name)] = true
 			}
 			return names
 		}
 	}
 }
 
-// batchKey tells a chain, with what is changed for a run, from any other.
-func batchKey(c *chain.Chain, text []byte, f *runFlags) string {
+// batchKey tells a batch from any other: by its chain, what is changed for the run, how recordings are read, and the
+// folders of all of its tracks, whatever the share.
+func batchKey(text []byte, f *runFlags) string {
 	h := sha256.New()
-	fmt.Fprintf(h, "%d %s\n%q\n%d\n", len(text), text, f.set, f.seed)
+	r := &f.reading
+	fmt.Fprintf(h, "%d %s\n%q %d\n", len(text), text, f.set, f.seed)
+	fmt.Fprintf(h, "%q %q %q %g %d %d %t\n%q\n", r.raw, r.counts, r.volts, r.rate, r.bits, r.column, r.repair, f.folders)
 	return hex.EncodeToString(h.Sum(nil)[:16])
 }
 
@@ -137,7 +147,7 @@ func (s streams) batch(ctx context.Context, f *runFlags, n *circuit.Network, tex
 	b := &report.Batch{
 		Tool:  report.Tool{Name: "midrail", Version: version()},
 		Chain: report.Chain{File: n.Chain.File, Title: n.Chain.Title},
-		Of:    batchKey(n.Chain, text, f), Slice: f.share.String(),
+		Of:    batchKey(text, f), Slice: f.share.String(),
 	}
 	entries, statuses := make([]report.Entry, len(jobs)), make([]int, len(jobs))
 	next := make(chan int)

@@ -20,7 +20,7 @@ func newGather(s streams) *cobra.Command {
 		Short: "Join the slices of a batch into one summary",
 		Long: `gather joins what midrail run --slice 1/8 … --slice 8/8 left in one folder or in several: it writes summary.csv,
 summary.json and overview.html, the same as one run of all the tracks writes, into the first folder or that of --out.
-It refuses slices of different chains, a slice twice, and a missing one.`,
+It refuses slices of different chains or tracks, a slice twice, and a missing one. Its exit status is that of the one run.`,
 		Example: "  midrail run front-end.toml corpus --out results --slice 3/8   # on each of eight machines\n  midrail gather results",
 		Args: func(_ *cobra.Command, args []string) error {
 			if len(args) == 0 {
@@ -65,7 +65,7 @@ func gather(s streams, out string, folders []string) error {
 			case whole == nil:
 				whole, first, seen = &report.Batch{Tool: b.Tool, Chain: b.Chain, Of: b.Of}, file, make([]string, share.several)
 			case b.Of != whole.Of || b.Tool != whole.Tool || b.Chain != whole.Chain:
-				return wrong("%s: it is of another chain, other --set values or another midrail than %s", file, first)
+				return wrong("%s: it is of another chain, other tracks, other options or another midrail than %s", file, first)
 			case share.several != len(seen):
 				return wrong("%s: it is one of %d slices, %s one of %d", file, share.several, first, len(seen))
 			}
@@ -101,13 +101,20 @@ func gather(s streams, out string, folders []string) error {
 	if err != nil {
 		return err
 	}
-	faults := 0
+	faults, status := 0, Done
 	for _, e := range whole.Tracks {
-		if e.Status == report.Fault {
+		switch e.Status {
+		case report.Fault:
 			faults++
+			status = WrongInput
+		case report.BrokenLimit:
+			status = max(status, Broken)
 		}
 	}
 	_, err = fmt.Fprintf(s.out, "gathered %d tracks of %d slices into %s, %d with a fault\n", len(whole.Tracks), len(seen), out, faults)
+	if err == nil && status != Done {
+		err = told{status}
+	}
 	return err
 }
 

@@ -25,18 +25,19 @@ var demoChain []byte
 // runFlags are what the command line of run says.
 type runFlags struct {
 	reading
-	set    []string
-	slice  string
-	share  slice
-	jobs   int      // at once
-	top    string   // folder of several tracks' folders; empty: there is one track
-	tracks []string // INPUT=FILE
-	out    string
-	json   bool
-	seed   uint64
-	times  bool
-	noPage bool
-	open   bool
+	set     []string
+	slice   string
+	share   slice
+	jobs    int      // at once
+	top     string   // folder of several tracks' folders; empty: there is one track
+	folders []string // of all of several tracks, whatever the share
+	tracks  []string // INPUT=FILE
+	out     string
+	json    bool
+	seed    uint64
+	times   bool
+	noPage  bool
+	open    bool
 }
 
 func newRun(s streams) *cobra.Command {
@@ -203,9 +204,18 @@ func jobsOf(ctx context.Context, s streams, c *chain.Chain, f *runFlags, args []
 	for _, r := range recordings {
 		names = append(names, r.name)
 	}
-	for i, name := range folderNames(names) {
+	sorted := slices.Clone(names)
+	slices.Sort(sorted)
+	for i := 1; i < len(sorted); i++ {
+		if sorted[i] == sorted[i-1] {
+			return nil, usageError{fmt.Errorf("%s: given twice", sorted[i])}
+		}
+	}
+	f.folders = folderNames(names)
+	for i, name := range f.folders {
 		jobs[i].label, jobs[i].folder = name, filepath.Join(f.top, name)
 	}
+	slices.Sort(f.folders)
 	return slices.DeleteFunc(jobs, func(j job) bool { return !f.share.takes(j.label) }), nil
 }
 
